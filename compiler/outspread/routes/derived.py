@@ -1,0 +1,60 @@
+"""What a route hands on: the law of an output, the mathematics that led to it, and what it cost."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+from outspread.laws.law import Array, Law
+
+
+@dataclass(frozen=True)
+class Statement:
+    """A sentence (plain text; $...$ holds inline LaTeX) followed by an optional display formula (LaTeX).
+
+    `role`: region | inverse | jacobian | cdf | density | closed_form | note, so that the report can place it.
+    """
+
+    text: str
+    latex: str = ""
+    role: str = "note"
+
+
+@dataclass(frozen=True)
+class SymbolicDensity:
+    """A density written as a formula in y, shown only after it agreed with the law at 200 points."""
+
+    latex: str
+    function: Callable[[Array], Array]
+    name: str = ""  # e.g. "Rice distribution"
+    source: str = ""  # published source
+
+
+@dataclass(frozen=True)
+class DerivedOutput:
+    """The law of one output with its written-out derivation.
+
+    `numeric` is the law by the numeric route where `law` is a closed form (else None): evidence compares them.
+    """
+
+    output: str
+    route: str
+    law: Law
+    mathematics: tuple[Statement, ...] = ()
+    symbolic: SymbolicDensity | None = None
+    numeric: Law | None = None
+    evaluations: int = 0
+    assumptions: tuple[str, ...] = ()
+    notes: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class JointLaw:
+    """The joint law of n outputs of n inputs (inverse and Jacobian): density at points of shape (n, k)."""
+
+    outputs: tuple[str, ...]
+    pdf: Callable[[Array], Array]
+    mathematics: tuple[Statement, ...] = ()
+    relative_error: float = 1e-12
+    branches: int = 1
+    region: Callable[[Array], Array] | None = None
