@@ -1,0 +1,165 @@
+"""Values with error bounds read off any law, given or derived; what is asked and why is decided elsewhere.
+
+A derived law states its errors itself (`estimate`, `estimate_quantile`, `moment_figures`); for a law in
+closed form they follow from its `relative_error`.
+"""
+
+from __future__ import annotations
+
+import math
+from typing import Literal, Protocol, runtime_checkable
+
+import numpy as np
+import numpy.typing as npt
+
+from outspread.findings.results import Absent, AtomFigure, Figure, Finding
+from outspread.laws.law import Array, Estimates, Law
+
+Kind = Literal["pdf", "cdf", "ccdf"]
+
+#: a point computed in double precision is not known better than a few units in its last place
+POINT_ROUNDING = 4 * float(np.finfo(float).eps)
+
+
+@runtime_checkable
+class StatesErrors(Protocol):
+    """A law that bounds the errors of its own values."""
+
+    def estimate(self, kind: Kind, y: npt.ArrayLike) -> Estimates: ...
+
+    def estimate_quantile(self, p: npt.ArrayLike, upper: bool = False) -> Estimates: ...
+
+    def moment_figures(self) -> tuple[Finding, Finding, Finding, Finding]: ...
+
+
+def estimate(law: Law, kind: Kind, y: npt.ArrayLike) -> Estimates:
+    """pdf, cdf or ccdf at `y` with bounds on the absolute errors."""
+    if isinstance(law, StatesErrors):
+        return law.estimate(kind, y)
+    with np.errstate(all="ignore"):
+        value = np.asarray({"pdf": law.pdf, "cdf": law.cdf, "ccdf": law.ccdf}[kind](y), float)
+        return Estimates(value, np.abs(value) * law.relative_error)
+
+
+def estimate_quantile(law: Law, p: npt.ArrayLike, upper: bool = False) -> Estimates:
+    """The quantile at lower probability `p` (upper=True: at upper-tail probability `p`) with its error.
+
+    Without errors stated by the law itself, the quantiles at the probabilities moved by the relative
+    error of the cdf to either side enclose the true one, because the cdf is monotone.
+    """
+    if isinstance(law, StatesErrors):
+        return law.estimate_quantile(p, upper=upper)
+    p = np.asarray(p, float)
+    inverse = law.iccdf if upper else law.icdf
+    with np.errstate(all="ignore"):
+        value = np.asarray(inverse(p), float)
+        slack = law.relative_error * p
+        ends = [np.asarray(inverse(np.clip(p + sign * slack, 0.0, 1.0)), float) for sign in (-1, 1)]
+        away = np.maximum(np.abs(ends[0] - value), np.abs(ends[1] - value))
+        error = np.where(np.isfinite(value), away + POINT_ROUNDING * np.abs(value), np.inf)
+    if law.continuous_mass == 0.0:  # the points of a discrete law are exact
+        error = np.where(away == 0.0, 0.0, error)
+    return Estimates(value, error)
+
+
+def moment_figures(law: Law) -> tuple[Finding, Finding, Finding, Finding]:
+    """Mean, standard deviation, skewness and kurtosis, each with its error or the reason why it is absent."""
+    if isinstance(law, StatesErrors):
+        return law.moment_figures()
+    with np.errstate(all="ignore"):
+        mean, deviation = law.mean(), law.standard_deviation()
+        skewness, kurtosis = law.skewness(), law.kurtosis()
+    relative = max(law.relative_error, 4 * POINT_ROUNDING)
+    spread = deviation if math.isfinite(deviation) else 0.0
+    return (
+        _moment("mean", mean, relative * (abs(mean) + spread)),
+        _moment("standard deviation", deviation, relative * deviation),
+        # standardised moments subtract powers of the mean: rounding is relative to their own scale, 1
+        _moment("skewness", skewness, 10 * relative * (1 + abs(skewness))),
+        _moment("kurtosis", kurtosis, 10 * relative * (1 + abs(kurtosis))),
+    )
+
+
+def _moment(name: str, value: float, error: float) -> Finding:
+    if math.isnan(value):
+        return Absent(f"the {name} does not exist: the integral that defines it does not converge")
+    if math.isinf(value):
+        sign = "" if value > 0 else "minus "
+        return Absent(f"the {name} diverges to {sign}infinity")
+    return Figure(value, error)
+
+
+def figure(estimates: Estimates) -> Figure:
+    """The one value in `estimates` as a Figure."""
+    return Figure(float(np.asarray(estimates.value)), float(np.asarray(estimates.error)))
+
+
+def quantile(law: Law, p: float, upper: bool = False) -> Finding:
+    """Quantile at `p`; Absent where it is an infinite end of the support."""
+    result = figure(estimate_quantile(law, p, upper))
+    if not math.isfinite(result.value):
+        return Absent("the quantile lies beyond every finite value")
+    if not math.isfinite(result.error):
+        return Absent("the error of the quantile could not be bounded")
+    return result
+
+
+def density(law: Law, y: float) -> Finding:
+    """Density at `y`; Absent where the law has none or where it is unbounded."""
+    if law.continuous_mass == 0.0:
+        return Absent("the law is discrete and has no density")
+    if bool(np.any(law.atoms().values == y)):
+        return Absent("the point carries probability itself (an atom), which no density describes")
+    result = figure(estimate(law, "pdf", y))
+    if not (math.isfinite(result.value) and math.isfinite(result.error)):
+        return Absent("the density is unbounded here")
+    return result
+
+
+def probability(law: Law, kind: Literal["cdf", "ccdf"], y: float) -> Figure:
+    """cdf or ccdf at `y`."""
+    return figure(estimate(law, kind, y))
+
+
+def heaviest_atoms(law: Law, most: int) -> tuple[tuple[AtomFigure, ...], int, Figure]:
+    """The heaviest `most` atoms in ascending order of their points, the number of all, and the mass of all."""
+    atoms = law.atoms()
+    count = int(atoms.values.size)
+    if count == 0:
+        return (), 0, Figure(0.0, 0.0)
+    order = np.sort(np.argsort(-atoms.masses, kind="stable")[:most])
+    rows = tuple(
+        AtomFigure(float(atoms.values[i]), Figure(float(atoms.masses[i]), float(atoms.errors[i])))
+        for i in order
+    )
+    if law.continuous_mass == 0.0:
+        return rows, count, Figure(1.0, 0.0)
+    total = Figure(math.fsum(atoms.masses.tolist()), math.fsum(atoms.errors.tolist()))
+    return rows, count, total
+
+
+def largest_cdf_error(law: Law) -> float:
+    """A bound on |stated - true cdf| anywhere, from the law's own bounds at many of its quantiles.
+
+    Between two neighbouring points the cdf is monotone and its error is interpolated with it, so the
+    largest of the stated bounds on a dense grid is taken.
+    """
+    if not isinstance(law, StatesErrors):
+        return law.relative_error  # relative to the smaller tail, which is at most 1
+    points = spread_points(law, 201)
+    if points.size == 0:
+        return float(law.relative_error)
+    lower = np.asarray(law.estimate("cdf", points).error, float)
+    upper = np.asarray(law.estimate("ccdf", points).error, float)
+    return float(np.max(np.minimum(lower, upper)))
+
+
+def spread_points(law: Law, count: int) -> Array:
+    """Up to `count` finite quantiles, ascending and distinct, denser in both tails down to 1e-6."""
+    inner = np.linspace(0.0, 1.0, count)[1:-1]
+    lower = np.concatenate([np.geomspace(1e-6, inner[0], 9)[:-1], inner[inner <= 0.5]])
+    upper = np.concatenate([np.geomspace(1e-6, 1 - inner[-1], 9)[:-1], np.sort(1 - inner[inner > 0.5])])
+    with np.errstate(all="ignore"):
+        points = np.concatenate([np.asarray(law.icdf(lower), float), np.asarray(law.iccdf(upper), float)])
+    distinct: Array = np.unique(points[np.isfinite(points)])
+    return distinct
