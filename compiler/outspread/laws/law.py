@@ -7,12 +7,17 @@ results of routes. Arrays in, arrays of the same shape out; scalars give 0-d res
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
+from collections.abc import Mapping
 from dataclasses import dataclass
+from types import MappingProxyType
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
 Array = npt.NDArray[np.float64]
+
+NO_PARAMETERS: Mapping[str, Any] = MappingProxyType({})
 
 
 @dataclass(frozen=True)
@@ -51,6 +56,14 @@ class Law(ABC):
     #: bound on the relative error of cdf, ccdf and pdf wherever they exceed 1e-290
     relative_error: float = 1e-13
 
+    #: what the law is called in text ("Normal distribution"); "" where it has no name
+    name: str = ""
+    #: key of the family in the registry and its canonical parameters; "" and empty for any other law
+    family: str = ""
+    parameters: Mapping[str, Any] = NO_PARAMETERS
+    #: E|X|^k is finite for every k below this and for none from it on
+    moment_order: float = float("inf")
+
     @abstractmethod
     def support(self) -> tuple[float, float]:
         """Smallest closed interval that holds all the probability (may be infinite)."""
@@ -79,12 +92,16 @@ class Law(ABC):
         return 1.0
 
     def breaks(self) -> tuple[float, ...]:
-        """Interior points (ends of the support apart) where the density is not smooth: kinks, jumps, poles."""
+        """Interior points (ends of the support apart) where the density has a kink, a jump or a pole."""
         return ()
 
     def singular_ends(self) -> tuple[bool, bool]:
         """Whether the density is unbounded at the lower and at the upper end of the support."""
         return (False, False)
+
+    def moment_exists(self, order: float) -> bool:
+        """Whether the absolute moment E|X|^order is finite."""
+        return order <= 0 or order < self.moment_order
 
     def between(self, lower: npt.ArrayLike, upper: npt.ArrayLike) -> Array:
         """P(lower < X <= upper), accurate relative to itself except for cancellation within one tail;
@@ -93,7 +110,8 @@ class Law(ABC):
         below, above = self.cdf(lower), self.ccdf(upper)
         left = self.cdf(upper) - below
         right = self.ccdf(lower) - above
-        return np.where(upper > lower, np.maximum(np.where(below < 0.5, np.where(above < 0.5, 1 - below - above, left), right), 0.0), 0.0)
+        both = np.where(above < 0.5, 1 - below - above, left)
+        return np.where(upper > lower, np.maximum(np.where(below < 0.5, both, right), 0.0), 0.0)
 
     # Moments: nan = does not exist, inf = diverges.
     @abstractmethod
