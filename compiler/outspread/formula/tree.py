@@ -24,6 +24,8 @@ OPERATORS: dict[str, tuple[int, int | None]] = {
     "sin": (1, 1), "cos": (1, 1), "tan": (1, 1), "asin": (1, 1), "acos": (1, 1), "atan": (1, 1),
     "atan2": (2, 2), "sinh": (1, 1), "cosh": (1, 1), "tanh": (1, 1), "erf": (1, 1), "gamma": (1, 1),
     "floor": (1, 1), "ceil": (1, 1), "decibel": (1, 1), "from_decibel": (1, 1),
+    # polygamma(n, x), n a whole number: not typed in formulas, it comes from differentiating gamma
+    "polygamma": (2, 2),
 }  # fmt: skip
 
 COMPARISONS = frozenset({"less", "less_equal", "greater", "greater_equal", "equal", "not_equal"})
