@@ -189,7 +189,7 @@ def test_only_the_command_knows_the_terminal() -> None:
 
 
 def tracked() -> list[str]:
-    listing = subprocess.run(["git", "ls-files"], cwd=ROOT, capture_output=True, text=True, check=True)
+    listing = subprocess.run(["git", "-c", "safe.directory=*", "ls-files"], cwd=ROOT, capture_output=True, text=True, check=True)
     return [name for name in listing.stdout.splitlines() if (ROOT / name).is_file()]
 
 
