@@ -104,7 +104,7 @@ def _function(operator: str) -> Function:
 
 
 class _Code:
-    """The compiled operations: constants computed once, the rest in order, each slot freed after its last use."""
+    """The compiled operations: constants computed once, slots freed after their last use."""
 
     def __init__(self, node: Node, arguments: Sequence[str]):
         operations = linearise(node)

@@ -6,58 +6,29 @@ It never evaluates text as a program and knows nothing of units or of which name
 
 from __future__ import annotations
 
-import difflib
 import math
-import re
 from collections.abc import Collection
 from typing import NamedTuple, NoReturn
 
 from outspread.errors import FormulaError
 from outspread.formula.constants import NoValue, constant_value
+from outspread.formula.tokens import (
+    FUNCTIONS,
+    OTHER_SPELLINGS,
+    RESERVED,
+    WORDS,
+    Token,
+    near_miss,
+    shape,
+    tokens,
+)
 from outspread.formula.tree import OPERATORS, Apply, Name, Node, Number, walk
+
+__all__ = ["FUNCTIONS", "RESERVED", "check_names", "near_miss", "parse", "parse_event"]
 
 MAXIMUM_LENGTH = 20_000
 MAXIMUM_NESTING = 100
 MAXIMUM_NODES = 20_000
-
-#: Functions by the name that is typed in a formula.
-FUNCTIONS: tuple[str, ...] = (
-    "sqrt", "exp", "log", "log10", "abs", "sign", "min", "max", "hypot", "sin", "cos", "tan", "asin",
-    "acos", "atan", "atan2", "sinh", "cosh", "tanh", "erf", "gamma", "floor", "ceil", "decibel",
-    "from_decibel", "if",
-)  # fmt: skip
-WORDS = frozenset({"and", "or", "not"})
-#: Names that an input, constant, step or output may not have.
-RESERVED = frozenset(FUNCTIONS) | WORDS | {"pi"}
-
-_OTHER_SPELLINGS = {
-    "ln": "log(x)", "log_10": "log10(x)", "lg": "log10(x)", "log2": "log(x)/log(2)", "log1p": "log(1 + x)",
-    "expm1": "exp(x) - 1", "pow": "a^b", "power": "a^b", "arcsin": "asin(x)", "arccos": "acos(x)",
-    "arctan": "atan(x)", "arctan2": "atan2(y, x)", "arctg": "atan(x)", "tg": "tan(x)", "sqr": "x^2",
-    "square": "x^2", "cbrt": "x^(1/3)", "db": "decibel(x)", "dB": "decibel(x)", "undb": "from_decibel(x)",
-    "sgn": "sign(x)", "fabs": "abs(x)", "maximum": "max(a, b)", "minimum": "min(a, b)",
-    "where": "if(condition, a, b)", "iif": "if(condition, a, b)", "ceiling": "ceil(x)", "int": "floor(x)",
-    "sum": "a + b", "erfc": "1 - erf(x)", "norm": "hypot(a, b)", "mod": "x - a*floor(x/a)",
-    "round": "floor(x + 0.5)", "cot": "1/tan(x)", "sec": "1/cos(x)", "csc": "1/sin(x)",
-}  # fmt: skip
-
-_TOKEN = re.compile(
-    r"""(?P<number>(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)
-      | (?P<name>[A-Za-z_][A-Za-z_0-9]*)
-      | (?P<symbol>\*\*|<=|>=|==|!=|[-+*/^()<>,])
-    """,
-    re.VERBOSE,
-)
-
-_FOREIGN = {
-    "=": "compare with ==", "&": "write and", "|": "write or, or abs(x) for an absolute value",
-    "!": "write not", "[": "write (", "]": "write )", "{": "write (", "}": "write )",
-    "\u2212": "write -", "\u2013": "write -", "\u00d7": "write *", "\u00b7": "write *", "\u22c5": "write *",
-    "\u00f7": "write /", "\u2264": "write <=", "\u2265": "write >=", "\u2260": "write !=",
-    "\u00b2": "write ^2", "\u00b3": "write ^3", "\u221a": "write sqrt(x)", "\u03c0": "write pi",
-    "%": "write /100", ";": "separate arguments with a comma", "'": "use letters, digits and _ in names",
-    '"': "use letters, digits and _ in names", "\u00b0": "write pi/180, or give the input the unit deg",
-}  # fmt: skip
 
 _COMPARISON = {
     "<": "less",
@@ -74,13 +45,6 @@ _STRENGTH = {
     "or": _OR, "and": _AND, **dict.fromkeys(_COMPARISON, _COMPARE),
     "+": _SUM, "-": _SUM, "*": _PRODUCT, "/": _PRODUCT, "^": _POWER,
 }  # fmt: skip
-
-
-class _Token(NamedTuple):
-    kind: str  # number | name | symbol | end
-    text: str
-    start: int
-    end: int
 
 
 class _Part(NamedTuple):
@@ -135,16 +99,6 @@ def _unknown_name(name: str, known: Collection[str]) -> str:
     return f"{name} is not defined; write one of {shown}"
 
 
-def near_miss(word: str, known: Collection[str]) -> str | None:
-    """The known word closest to `word`, if one is close; a difference in case only counts as closest."""
-    listed = sorted(known)
-    for candidate in listed:
-        if candidate.lower() == word.lower():
-            return candidate
-    close = difflib.get_close_matches(word, listed, n=1, cutoff=0.6)
-    return close[0] if close else None
-
-
 def _read(text: str) -> _Part:
     if len(text) > MAXIMUM_LENGTH:
         raise FormulaError(
@@ -157,33 +111,12 @@ def _read(text: str) -> _Part:
     return _Reader(text).read()
 
 
-def _tokens(text: str) -> list[_Token]:
-    found: list[_Token] = []
-    position = 0
-    while position < len(text):
-        if text[position].isspace():
-            position += 1
-            continue
-        match = _TOKEN.match(text, position)
-        if match is None:
-            character = text[position]
-            advice = _FOREIGN.get(character, "use letters, digits, _ and the signs + - * / ^ ( ) < > =")
-            raise FormulaError(
-                f"{character!r} has no meaning in a formula; {advice}", text, position, position + 1
-            )
-        kind = str(match.lastgroup)
-        found.append(_Token(kind, match.group(), position, match.end()))
-        position = match.end()
-    found.append(_Token("end", "", len(text), len(text)))
-    return found
-
-
 class _Reader:
     """Precedence climbing over the tokens of one formula."""
 
     def __init__(self, text: str):
         self.text = text
-        self.tokens = _tokens(text)
+        self.tokens = tokens(text)
         self.position = 0
         self.nesting = 0  # open parentheses
         self.calls = 0  # levels of this reader's own recursion
@@ -194,7 +127,7 @@ class _Reader:
     def fail(self, message: str, start: int, end: int) -> NoReturn:
         raise FormulaError(message, self.text, start, end)
 
-    def too_deep(self, token: _Token) -> NoReturn:
+    def too_deep(self, token: Token) -> NoReturn:
         self.fail(
             f"the formula is nested deeper than {MAXIMUM_NESTING} levels; split it into named steps",
             token.start,
@@ -202,7 +135,7 @@ class _Reader:
         )
 
     @property
-    def token(self) -> _Token:
+    def token(self) -> Token:
         return self.tokens[self.position]
 
     def operator(self) -> str:
@@ -212,12 +145,12 @@ class _Reader:
             return "^" if token.text == "**" else token.text if token.text in _STRENGTH else ""
         return token.text if token.kind == "name" and token.text in ("and", "or") else ""
 
-    def advance(self) -> _Token:
+    def advance(self) -> Token:
         token = self.token
         self.position += 1
         return token
 
-    def leaf(self, node: Node, token: _Token) -> _Part:
+    def leaf(self, node: Node, token: Token) -> _Part:
         self.counted(token.start, token.end)
         return _Part(node, token.start, token.end, False, 1)
 
@@ -273,7 +206,7 @@ class _Reader:
             self.unexpected(token)
         return part
 
-    def unexpected(self, token: _Token) -> NoReturn:
+    def unexpected(self, token: Token) -> NoReturn:
         if token.text == ")":
             self.fail("this ) closes nothing; remove it, or open a ( before", token.start, token.end)
         if token.text == ",":
@@ -296,9 +229,9 @@ class _Reader:
             )
         self.fail(f"{token.text} does not fit here", token.start, token.end)
 
-    def not_a_function(self, token: _Token) -> NoReturn:
+    def not_a_function(self, token: Token) -> NoReturn:
         name = token.text
-        other = _OTHER_SPELLINGS.get(name) or _OTHER_SPELLINGS.get(name.lower())
+        other = OTHER_SPELLINGS.get(name) or OTHER_SPELLINGS.get(name.lower())
         near = near_miss(name, FUNCTIONS)
         if other:
             advice = f"write {other}"
@@ -313,7 +246,7 @@ class _Reader:
         self.calls += 1
         if self.calls > 2 * MAXIMUM_NESTING:
             self.too_deep(self.token)
-        part = self.operand(strength)
+        part = self.operand()
         while True:
             operator = self.operator()
             binding = _STRENGTH.get(operator, -1)
@@ -417,32 +350,34 @@ class _Reader:
             self.condition_wanted(part, f"beside {operator}")
         return self.flat(operator, parts)
 
-    def operand(self, strength: int) -> _Part:
+    def operand(self) -> _Part:
         token = self.advance()
         if token.kind == "number":
             return self.number(token)
         if token.text == "(":
             return self.parenthesised(token)
         if token.text in ("-", "+"):
-            part = self.expression(max(_UNARY, min(strength, _UNARY)))
+            part = self.expression(_UNARY)
             self.number_wanted(part, f"behind a {token.text} sign")
             if token.text == "+":
                 return part._replace(start=token.start)
             return self.make("negate", [part], token.start, part.end)
         if token.kind == "name":
             return self.word(token)
+        return self.missing(token)
+
+    def missing(self, token: Token) -> NoReturn:
         if token.kind == "end":
-            self.ended(token)
-        before = f" behind {self.tokens[self.position - 2].text}" if self.position > 1 else ""
-        self.fail(f"a number or a name is missing{before}; found {token.text}", token.start, token.end)
+            before = self.tokens[self.position - 2]
+            self.fail(
+                f"the formula ends behind {before.text}; write a number or a name there",
+                before.start,
+                before.end,
+            )
+        behind = f" behind {self.tokens[self.position - 2].text}" if self.position > 1 else ""
+        self.fail(f"a number or a name is missing{behind}; found {token.text}", token.start, token.end)
 
-    def ended(self, token: _Token) -> NoReturn:
-        before = self.tokens[self.position - 2]
-        self.fail(
-            f"the formula ends behind {before.text}; write a number or a name there", before.start, before.end
-        )
-
-    def number(self, token: _Token) -> _Part:
+    def number(self, token: Token) -> _Part:
         value = float(token.text)
         if math.isinf(value):
             self.fail(
@@ -463,26 +398,31 @@ class _Reader:
         self.kept.append(node)
         return self.leaf(node, token)
 
-    def parenthesised(self, opening: _Token) -> _Part:
+    def parenthesised(self, opening: Token) -> _Part:
         self.nesting += 1
         if self.nesting > MAXIMUM_NESTING:
             self.too_deep(opening)
         if self.token.text == ")":
-            self.fail("the parentheses are empty; write a number or a name in them", opening.start, self.token.end)
+            self.fail(
+                "the parentheses are empty; write a number or a name in them", opening.start, self.token.end
+            )
         part = self.expression(0)
         closing = self.close(opening)
         self.nesting -= 1
         return part._replace(start=opening.start, end=closing.end)
 
-    def close(self, opening: _Token) -> _Token:
+    def close(self, opening: Token) -> Token:
         token = self.token
-        if token.text == ")":
-            return self.advance()
+        if token.text != ")":
+            self.unclosed(opening, token)
+        return self.advance()
+
+    def unclosed(self, opening: Token, token: Token) -> NoReturn:
         if token.kind == "end":
             self.fail("this ( is never closed; write the ) that belongs to it", opening.start, opening.end)
         self.unexpected(token)
 
-    def word(self, token: _Token) -> _Part:
+    def word(self, token: Token) -> _Part:
         name = token.text
         called = self.token.text == "("
         if name == "not":
@@ -502,13 +442,13 @@ class _Reader:
             return self.call(token)
         if name in FUNCTIONS:
             self.fail(
-                f"{name} is a function, and its arguments are missing; write {name}({_shape(name)})",
+                f"{name} is a function, and its arguments are missing; write {name}({shape(name)})",
                 token.start,
                 token.end,
             )
         return self.leaf(Name(name, (token.start, token.end)), token)
 
-    def call(self, token: _Token) -> _Part:
+    def call(self, token: Token) -> _Part:
         opening = self.advance()
         self.nesting += 1
         if self.nesting > MAXIMUM_NESTING:
@@ -524,19 +464,19 @@ class _Reader:
         self.check_arity(token, parts, closing)
         return self.applied(token, parts, closing)
 
-    def check_arity(self, token: _Token, parts: list[_Part], closing: _Token) -> None:
+    def check_arity(self, token: Token, parts: list[_Part], closing: Token) -> None:
         least, most = OPERATORS[token.text]
         if len(parts) < least or (most is not None and len(parts) > most):
             wanted = f"{least}" if least == most else f"at least {least}"
             plural = "" if wanted.endswith(" 1") or wanted == "1" else "s"
             self.fail(
                 f"{token.text} takes {wanted} argument{plural} and has {len(parts)}; "
-                f"write {token.text}({_shape(token.text)})",
+                f"write {token.text}({shape(token.text)})",
                 token.start,
                 closing.end,
             )
 
-    def applied(self, token: _Token, parts: list[_Part], closing: _Token) -> _Part:
+    def applied(self, token: Token, parts: list[_Part], closing: Token) -> _Part:
         name = token.text
         if name != "if":
             for part in parts:
@@ -549,9 +489,3 @@ class _Reader:
         if parts[1].condition:
             self.number_wanted(parts[1], "as a branch of if")
         return self.make("if", parts, token.start, closing.end)
-
-
-def _shape(name: str) -> str:
-    return {"if": "condition, a, b", "atan2": "y, x", "min": "a, b", "max": "a, b", "hypot": "a, b"}.get(
-        name, "x"
-    )
