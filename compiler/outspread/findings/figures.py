@@ -1,7 +1,6 @@
 """Values with error bounds read off any law, given or derived; what is asked and why is decided elsewhere.
 
-A derived law states its errors itself (`estimate`, `estimate_quantile`, `moment_figures`); for a law in
-closed form they follow from its `relative_error`.
+A derived law states its errors itself; for a law in closed form they follow from its `relative_error`.
 """
 
 from __future__ import annotations
@@ -10,61 +9,22 @@ import math
 from typing import Literal, Protocol, runtime_checkable
 
 import numpy as np
-import numpy.typing as npt
 
+from outspread.evidence.stating import POINT_ROUNDING, StatesErrors, stated, stated_quantile
 from outspread.findings.results import Absent, AtomFigure, Figure, Finding
 from outspread.laws.law import Array, Estimates, Law
 
-Kind = Literal["pdf", "cdf", "ccdf"]
-
-#: a point computed in double precision is not known better than a few units in its last place
-POINT_ROUNDING = 4 * float(np.finfo(float).eps)
-
 
 @runtime_checkable
-class StatesErrors(Protocol):
-    """A law that bounds the errors of its own values."""
-
-    def estimate(self, kind: Kind, y: npt.ArrayLike) -> Estimates: ...
-
-    def estimate_quantile(self, p: npt.ArrayLike, upper: bool = False) -> Estimates: ...
+class StatesMoments(Protocol):
+    """A law that bounds the errors of its own moments."""
 
     def moment_figures(self) -> tuple[Finding, Finding, Finding, Finding]: ...
 
 
-def estimate(law: Law, kind: Kind, y: npt.ArrayLike) -> Estimates:
-    """pdf, cdf or ccdf at `y` with bounds on the absolute errors."""
-    if isinstance(law, StatesErrors):
-        return law.estimate(kind, y)
-    with np.errstate(all="ignore"):
-        value = np.asarray({"pdf": law.pdf, "cdf": law.cdf, "ccdf": law.ccdf}[kind](y), float)
-        return Estimates(value, np.abs(value) * law.relative_error)
-
-
-def estimate_quantile(law: Law, p: npt.ArrayLike, upper: bool = False) -> Estimates:
-    """The quantile at lower probability `p` (upper=True: at upper-tail probability `p`) with its error.
-
-    Without errors stated by the law itself, the quantiles at the probabilities moved by the relative
-    error of the cdf to either side enclose the true one, because the cdf is monotone.
-    """
-    if isinstance(law, StatesErrors):
-        return law.estimate_quantile(p, upper=upper)
-    p = np.asarray(p, float)
-    inverse = law.iccdf if upper else law.icdf
-    with np.errstate(all="ignore"):
-        value = np.asarray(inverse(p), float)
-        slack = law.relative_error * p
-        ends = [np.asarray(inverse(np.clip(p + sign * slack, 0.0, 1.0)), float) for sign in (-1, 1)]
-        away = np.maximum(np.abs(ends[0] - value), np.abs(ends[1] - value))
-        error = np.where(np.isfinite(value), away + POINT_ROUNDING * np.abs(value), np.inf)
-    if law.continuous_mass == 0.0:  # the points of a discrete law are exact
-        error = np.where(away == 0.0, 0.0, error)
-    return Estimates(value, error)
-
-
 def moment_figures(law: Law) -> tuple[Finding, Finding, Finding, Finding]:
     """Mean, standard deviation, skewness and kurtosis, each with its error or the reason why it is absent."""
-    if isinstance(law, StatesErrors):
+    if isinstance(law, StatesMoments):
         return law.moment_figures()
     with np.errstate(all="ignore"):
         mean, deviation = law.mean(), law.standard_deviation()
@@ -96,7 +56,7 @@ def figure(estimates: Estimates) -> Figure:
 
 def quantile(law: Law, p: float, upper: bool = False) -> Finding:
     """Quantile at `p`; Absent where it is an infinite end of the support."""
-    result = figure(estimate_quantile(law, p, upper))
+    result = figure(stated_quantile(law, p, upper))
     if not math.isfinite(result.value):
         return Absent("the quantile lies beyond every finite value")
     if not math.isfinite(result.error):
@@ -110,7 +70,7 @@ def density(law: Law, y: float) -> Finding:
         return Absent("the law is discrete and has no density")
     if bool(np.any(law.atoms().values == y)):
         return Absent("the point carries probability itself (an atom), which no density describes")
-    result = figure(estimate(law, "pdf", y))
+    result = figure(stated(law, "pdf", y))
     if not (math.isfinite(result.value) and math.isfinite(result.error)):
         return Absent("the density is unbounded here")
     return result
@@ -118,11 +78,11 @@ def density(law: Law, y: float) -> Finding:
 
 def probability(law: Law, kind: Literal["cdf", "ccdf"], y: float) -> Figure:
     """cdf or ccdf at `y`."""
-    return figure(estimate(law, kind, y))
+    return figure(stated(law, kind, y))
 
 
 def heaviest_atoms(law: Law, most: int) -> tuple[tuple[AtomFigure, ...], int, Figure]:
-    """The heaviest `most` atoms in ascending order of their points, the number of all, and the mass of all."""
+    """The heaviest `most` atoms by their points, the number of all atoms, and the mass of all."""
     atoms = law.atoms()
     count = int(atoms.values.size)
     if count == 0:

@@ -11,7 +11,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from outspread.findings.figures import estimate, quantile
+from outspread.evidence.stating import stated
+from outspread.findings.figures import quantile
 from outspread.findings.results import Absent, Coverage, Figure, Finding
 from outspread.laws.law import Array, Law
 
@@ -56,7 +57,9 @@ def _shortest_discrete(law: Law, probability: float) -> Ends:
     held = below[last + 1] - below[first]
     if bool(np.any(np.abs(held - probability) <= slack)):
         tight = np.abs(held - probability) <= slack
-        if slack > 1e-9 and bool(np.any(values[last[tight]] - values[first[tight]] <= np.min(values[last] - values[first]))):
+        if slack > 1e-9 and bool(
+            np.any(values[last[tight]] - values[first[tight]] <= np.min(values[last] - values[first]))
+        ):
             return _absent("the probability is met or missed within the error of the stated masses")
     length = values[last] - values[first]
     best = float(np.min(length))
@@ -121,7 +124,7 @@ def _shortest_general(law: Law, probability: float) -> Ends:
                 " are equally short within their errors"
             )
     if float(low[-1] - low[0]) > 1e-4 * best and _flat(law, ends, near):
-        return _absent("it is not unique: the density is constant there, so that many intervals are equally short")
+        return _absent("it is not unique: the density is constant there, so many intervals are equally short")
     return _polished(law, ends, spare, best_at)
 
 
@@ -213,7 +216,7 @@ def _slope(law: Law, ends: _Quantiles, a: float) -> tuple[float, float]:
     The sign of this difference is minus that of the derivative of the length with respect to a.
     """
     at = np.array(a)
-    rows = estimate(law, "pdf", np.array([float(ends.lower(at)), float(ends.upper(at))]))
+    rows = stated(law, "pdf", np.array([float(ends.lower(at)), float(ends.upper(at))]))
     value, error = np.asarray(rows.value, float), np.asarray(rows.error, float)
     return float(value[1] - value[0]), float(error.sum())
 
@@ -267,4 +270,3 @@ def interval(law: Law, probability: float, kind: str) -> Coverage:
     if kind == "shortest":
         return shortest(law, probability)
     raise ValueError(f'the kinds of interval are "symmetric" and "shortest", not "{kind}"')
-

@@ -10,7 +10,8 @@ import math
 
 import numpy as np
 
-from outspread.findings.figures import POINT_ROUNDING, estimate, spread_points
+from outspread.evidence.stating import POINT_ROUNDING, stated
+from outspread.findings.figures import spread_points
 from outspread.findings.results import Absent, Figure, Finding
 from outspread.laws.law import Array, Law
 
@@ -31,7 +32,7 @@ def mode(law: Law) -> Finding:
     knots = _knots(law)
     for mark in law.breaks():
         steps = (np.nextafter(mark, -math.inf), mark, np.nextafter(mark, math.inf))
-        if not bool(np.all(np.isfinite(estimate(law, "pdf", np.array(steps)).value))):
+        if not bool(np.all(np.isfinite(stated(law, "pdf", np.array(steps)).value))):
             return Absent(f"the density is unbounded at {mark:.6g}")
     return _largest(law, knots)
 
@@ -43,7 +44,9 @@ def _heaviest(law: Law) -> Finding:
     rivals = np.flatnonzero(atoms.masses + atoms.errors + slack >= atoms.masses[best] - atoms.errors[best])
     if rivals.size > 1:
         shown = ", ".join(f"{value:.6g}" for value in atoms.values[rivals][:4])
-        return Absent(f"it is not unique: {shown}{' and more' if rivals.size > 4 else ''} are equally probable")
+        return Absent(
+            f"it is not unique: {shown}{' and more' if rivals.size > 4 else ''} are equally probable"
+        )
     return Figure(float(atoms.values[best]), 0.0)
 
 
@@ -65,7 +68,7 @@ def _sided(law: Law, knots: Array) -> tuple[Array, Array]:
     middles = 0.5 * (knots[1:] + knots[:-1])
     points = np.unique(np.concatenate([knots, middles, beside[(beside >= low) & (beside <= high)]]))
     with np.errstate(all="ignore"):
-        return points, np.asarray(estimate(law, "pdf", points).value, float)
+        return points, np.asarray(stated(law, "pdf", points).value, float)
 
 
 def _largest(law: Law, knots: Array) -> Finding:
@@ -85,7 +88,7 @@ def _largest(law: Law, knots: Array) -> Finding:
     first, last = rivals[0], rivals[-1]
     width = float(knots[-1] - knots[0])
     if last[0] - first[0] > first[2] + last[2] + 1e-9 * width:
-        middle = float(estimate(law, "pdf", 0.5 * (first[0] + last[0])).value)
+        middle = float(stated(law, "pdf", 0.5 * (first[0] + last[0])).value)
         if middle >= best * (1 - 1e-9):
             return Absent(f"it is not unique: the density is constant from {first[0]:.6g} to {last[0]:.6g}")
         return Absent(f"it is not unique: the density has equal peaks at {first[0]:.6g} and {last[0]:.6g}")
@@ -103,8 +106,13 @@ def _peak(law: Law, points: Array, index: int, knots: Array) -> tuple[float, flo
     if marks.size:
         nearest = float(marks[int(np.argmin(np.abs(marks - at)))])
         if abs(nearest - at) <= 4e-13 * max(abs(at), width):
-            rows = estimate(law, "pdf", at)
-            return nearest, float(rows.value), POINT_ROUNDING * abs(nearest) + 2e-15 * width, float(rows.error)
+            rows = stated(law, "pdf", at)
+            return (
+                nearest,
+                float(rows.value),
+                POINT_ROUNDING * abs(nearest) + 2e-15 * width,
+                float(rows.error),
+            )
     left = float(points[max(index - WINDOW, 0)])
     right = float(points[min(index + WINDOW, points.size - 1)])
     inside = marks[(marks > left) & (marks < right)]
@@ -123,7 +131,7 @@ def _smooth_peak(law: Law, left: float, right: float) -> tuple[float, float, flo
     for _ in range(12):
         centre, half = 0.5 * (left + right), 0.5 * (right - left)
         nodes = np.cos(np.pi * (np.arange(DEGREE + 1) + 0.5) / (DEGREE + 1))
-        rows = estimate(law, "pdf", centre + half * nodes)
+        rows = stated(law, "pdf", centre + half * nodes)
         values = np.asarray(rows.value, float)
         series = chebyshev.chebfit(nodes, values, DEGREE)
         tail = float(np.sum(np.abs(series[-4:]))) + float(np.max(rows.error)) + 4e-16 * float(np.max(values))
