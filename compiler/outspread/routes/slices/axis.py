@@ -1,0 +1,87 @@
+"""One continuous input as an axis of integration: a grid graded by probability, and the coordinate t.
+
+Where the density is bounded, t is the input itself. Where it is unbounded at an end, t is a probability
+counted from the nearer end (negative for the upper half), so that the singularity is gone and both ends
+keep full resolution: P(X in A) = integral over t of 1{x(t) in A} dt.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from outspread.laws.law import Array, Law
+from outspread.routes.slices.inner import normal_score
+from outspread.routes.slices.solve import Frame
+
+_TAILS = (1e-300, 1e-200, 1e-120, 1e-70, 1e-40, 1e-22, 1e-12, 1e-7, 1e-4, 0.01, 0.12)
+_COARSE_TAILS = (1e-300, 1e-120, 1e-40, 1e-12, 1e-4, 0.05)
+
+
+class Axis:
+    """`frame` is what solvers see of the input; `breaks` are further points where a panel must end."""
+
+    def __init__(self, name: str, law: Law, breaks: tuple[float, ...] = ()):
+        self.name, self.law = name, law
+        self.mass = law.continuous_mass
+        low, high = law.support()
+        self.support = (low, high)
+        tails = np.array(_TAILS)
+        with np.errstate(all="ignore"):
+            lower, upper, middle = law.icdf(tails), law.iccdf(tails), law.icdf(0.5)
+        self.start = low if np.isfinite(low) else float(lower[0])
+        self.end = high if np.isfinite(high) else float(upper[0])
+        points = np.concatenate([[self.start], lower, [float(middle)], upper[::-1], [self.end], law.breaks(), breaks])
+        points = points[np.isfinite(points) & (points >= self.start) & (points <= self.end)]
+        self.grid: Array = np.unique(points)
+        self.frame = Frame(name, self.grid)
+        self.singular = law.singular_ends() if self.mass == 1.0 else (False, False)
+        self.by_probability = any(self.singular)
+        spread = float(law.icdf(0.84)) - float(law.icdf(0.16))
+        self.scale = spread / 2 if spread > 0 else max(abs(float(middle)), 1.0)
+
+    def coarse(self) -> Array:
+        """A sparser grid: the ends, the middle, the breaks and a few tail points."""
+        tails = np.array(_COARSE_TAILS)
+        with np.errstate(all="ignore"):
+            points = np.concatenate([self.law.icdf(tails), self.law.iccdf(tails), self.law.icdf([0.5])])
+        points = np.concatenate([points, [self.start, self.end], self.law.breaks()])
+        points = points[np.isfinite(points) & (points >= self.start) & (points <= self.end)]
+        return np.unique(points)
+
+    def to_t(self, x: Array) -> Array:
+        """The coordinate of points; NaN stays NaN."""
+        if not self.by_probability:
+            return x
+        below, above = self.law.cdf(x), self.law.ccdf(x)
+        t = np.where(below <= 0.5, below, -above)
+        return np.where(np.isnan(x), np.nan, t)
+
+    def to_x(self, t: Array) -> Array:
+        if not self.by_probability:
+            return t
+        lower = np.maximum(t, 0.0)
+        upper = np.maximum(-t, 0.0)
+        return np.where(t >= 0, self.law.icdf(np.minimum(lower, 0.5)), self.law.iccdf(np.minimum(upper, 0.5)))
+
+    def weight(self, x: Array) -> Array:
+        """dP/dt at x."""
+        return np.ones_like(x) if self.by_probability else self.law.pdf(x)
+
+    def fixed_points(self) -> Array:
+        """Panel ends in t that hold for every problem."""
+        if not self.by_probability:
+            return self.grid
+        inner = self.grid[1:-1]
+        return np.unique(np.concatenate([self.to_t(inner), [-0.5, 0.0, 0.5]]))
+
+    def length(self, x: Array) -> Array:
+        """A local length: the scale of the law, shrinking to 0 towards an end where the density is unbounded."""
+        length = np.full_like(x, self.scale)
+        for end, singular in zip(self.support, self.singular, strict=True):
+            if singular:
+                distance = np.abs(x - end)
+                length = np.minimum(length, distance)
+        return length
+
+    def scores(self, x: Array) -> Array:
+        return normal_score(self.law, x)

@@ -1,0 +1,292 @@
+"""Probabilities of events, and how fast they grow with a parameter, in one or two continuous inputs.
+
+One continuous input: the set on which the event holds, measured by the input's law (`LineMeasure`).
+Two: that set for each value of the other input, integrated over it (`PlaneMeasure`); the density is the
+derivative under the integral sign. Discrete inputs are gone through value by value.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from outspread.formula.calculus import derivative
+from outspread.formula.evaluate import compile_numpy
+from outspread.formula.tree import Node, names
+from outspread.laws.law import Array, Estimates
+from outspread.numerics.quadrature import integrate, panels_between
+from outspread.numerics.sets import Sets
+from outspread.routes.slices import cases
+from outspread.routes.slices.axis import Axis
+from outspread.routes.slices.inner import (
+    ConditionalInner,
+    IndependentInner,
+    Inner,
+    boundary,
+    probability,
+)
+from outspread.routes.slices.problem import Combinations, Problem, combinations
+from outspread.routes.slices.solve import PARAMETER, Solver
+
+Index = npt.NDArray[np.int64]
+ROUNDING = 2.3e-16 * 4  # units in the last place lost on the way through a formula, relative to its terms
+_BLOCK = 400_000
+
+
+@dataclass
+class Effort:
+    """Counts evaluations; a plain number that routes report."""
+
+    evaluations: int = 0
+
+
+class LineMeasure:
+    """Events in one continuous input (and any discrete ones)."""
+
+    def __init__(self, problem: Problem):
+        (self.name,) = problem.continuous
+        self.problem = problem
+        self.combos = combinations(problem)
+        self.axis = Axis(self.name, problem.laws[self.name])
+        self.inner = IndependentInner(problem.laws[self.name])
+        self.effort = Effort()
+        self._solvers: dict[Node, Solver] = {}
+        self._relative = problem.laws[self.name].relative_error + 4e-15
+
+    def exact(self, event: Node) -> bool:
+        return self._solver(event).exact
+
+    def _solver(self, event: Node) -> Solver:
+        if event not in self._solvers:
+            self._solvers[event] = Solver(event, self.axis.frame)
+        return self._solvers[event]
+
+    def by_combination(self, event: Node, y: Array) -> Estimates:
+        """P(event and combination j) / weight j for each y and combination: shape (len(y), combinations)."""
+        shape = (y.size, self.combos.count)
+        sets_, environment = self._sets(event, y)
+        value = probability(sets_, self.inner)
+        edge = boundary(sets_)
+        shift = ROUNDING * (np.abs(environment[PARAMETER])[edge.problem] * edge.rate + np.abs(edge.x))
+        with np.errstate(all="ignore"):
+            slip = self.inner.pdf(edge.x, None) * shift
+            slip = np.where(np.isfinite(slip), slip, np.sqrt(ROUNDING))
+        lost = np.bincount(edge.problem, slip, value.size)
+        error = self._relative * value + lost
+        return Estimates(value.reshape(shape), error.reshape(shape))
+
+    def _sets(self, event: Node, y: Array) -> tuple[Sets, Mapping[str, Array]]:
+        environment = _environment(y, self.combos)
+        count = y.size * self.combos.count
+        self.effort.evaluations += count
+        return self._solver(event)(environment, count), environment
+
+    def event(self, event: Node, y: Array) -> Estimates:
+        """P(event) for each value y of the parameter: shape (len(y),)."""
+        return _over_blocks(self._event, event, y, max(1, _BLOCK // self.combos.count))
+
+    def _event(self, event: Node, y: Array) -> Estimates:
+        parts = self.by_combination(event, y)
+        return Estimates(parts.value @ self.combos.weights, parts.error @ self.combos.weights)
+
+    def rate(self, event: Node, y: Array) -> Estimates:
+        """d/dy P(event): the density of the formula where the event is {formula <= y}."""
+        return _over_blocks(self._rate, event, y, max(1, _BLOCK // self.combos.count))
+
+    def _rate(self, event: Node, y: Array) -> Estimates:
+        value = self._density(event, y)
+        # How rounding moves the density: its change under a change of y in the last places.
+        step = 8 * ROUNDING / 4 * np.maximum(np.abs(y), 1e-300)
+        with np.errstate(all="ignore"):
+            change = np.maximum(
+                np.abs(self._density(event, y + step) - value), np.abs(self._density(event, y - step) - value)
+            )
+        change = np.where(np.isfinite(change), change, 0.0)
+        return Estimates(value, (self._relative + 2e-15) * value + change)
+
+    def _density(self, event: Node, y: Array) -> Array:
+        sets_, _ = self._sets(event, y)
+        edge = boundary(sets_)
+        with np.errstate(all="ignore"):
+            density = self.inner.pdf(edge.x, None) * edge.rate
+        weights = self.combos.weights[edge.problem % self.combos.count]
+        return np.bincount(edge.problem // self.combos.count, density * weights, y.size)
+
+
+class PlaneMeasure:
+    """Events in two continuous inputs (and any discrete ones); `outer` is integrated over numerically."""
+
+    def __init__(self, problem: Problem, outer: str, inner: str, relative: float = 1e-12):
+        self.problem = problem
+        self.combos = combinations(problem)
+        self.relative = relative
+        self.effort = Effort()
+        laws = problem.laws
+        correlation = 0.0 if problem.scores is None else problem.scores.between(outer, inner)
+        self.correlation = correlation
+        self.axes = {name: Axis(name, laws[name], self._breaks(name)) for name in (outer, inner)}
+        self.outer, self.inner = outer, inner
+        self.laws: dict[str, Inner] = {}
+        for name in (outer, inner):
+            spread = np.sqrt((1 - correlation) * (1 + correlation))
+            self.laws[name] = (
+                ConditionalInner(laws[name], float(spread)) if correlation else IndependentInner(laws[name])
+            )
+        self._coarse = {name: self.axes[name].coarse() for name in (outer, inner)}
+        self._solvers: dict[tuple[Node, str], Solver] = {}
+        self._slopes = {name: _compiled(derivative(problem.expression, name)) for name in (outer, inner)}
+        self._relative_error = laws[outer].relative_error + laws[inner].relative_error + 1e-14
+
+    def exact(self, event: Node) -> bool:
+        return self._solver(event, self.inner).exact
+
+    def _breaks(self, name: str) -> tuple[float, ...]:
+        """Where the formula is not smooth in one input alone, whatever the other."""
+        from outspread.formula.calculus import nonsmooth
+
+        axis = Axis(name, self.problem.laws[name])
+        found: list[float] = []
+        for node in nonsmooth(self.problem.expression, name):
+            if set(names(node)) == {name}:
+                where = Solver(cases.comparison("less_equal", node, cases.ZERO), axis.frame)({}, 1)
+                full = where.lower < where.upper
+                found += [float(v) for v in np.concatenate([where.lower[full], where.upper[full]])]
+        return tuple(value for value in found if np.isfinite(value))
+
+    def _solver(self, event: Node, name: str) -> Solver:
+        if (event, name) not in self._solvers:
+            self._solvers[event, name] = Solver(event, self.axes[name].frame)
+        return self._solvers[event, name]
+
+    def by_combination(self, event: Node, y: Array) -> Estimates:
+        """P(event | combination j): shape (len(y), combinations)."""
+        count = y.size * self.combos.count
+        environment = _environment(y, self.combos)
+        axis, inner, name = self.axes[self.outer], self.laws[self.inner], self.inner
+        solver = self._solver(event, name)
+        lower, upper, owner = self._panels(event, environment, count, self.outer, self.inner)
+        slope = self._slopes[self.outer]
+
+        def integrand(t: Array, who: Index) -> Array:
+            x = axis.to_x(t)
+            local = {key: value[who] for key, value in environment.items()}
+            local[self.outer] = x
+            where = solver(local, x.size)
+            given = self.correlation * axis.scores(x) if self.correlation else None
+            weight = axis.weight(x)
+            edge = boundary(where)
+            # backward error: every term of the formula off by some units in its last place
+            local_edge = {key: value[edge.problem] for key, value in local.items()}
+            local_edge[name] = edge.x
+            with np.errstate(all="ignore"):
+                term = np.abs(slope(local_edge, edge.x.size) * local_edge[self.outer])
+                shift = ROUNDING * (
+                    (np.abs(local_edge[PARAMETER]) + np.where(np.isfinite(term), term, 0.0)) * edge.rate
+                    + np.abs(edge.x)
+                )
+                slip = inner.pdf(edge.x, None if given is None else given[edge.problem]) * shift
+            lost = np.bincount(edge.problem, np.where(np.isfinite(slip), slip, 0.0), x.size)
+            return np.stack([probability(where, inner, given) * weight, lost * weight])
+
+        result = integrate(
+            integrand, lower, upper, owner, count, components=2, relative=self.relative, control=1
+        )
+        self.effort.evaluations += result.evaluations
+        error = result.error[0] + np.abs(result.value[1]) + self._relative_error * result.value[0]
+        shape = (y.size, self.combos.count)
+        return Estimates(result.value[0].reshape(shape), error.reshape(shape))
+
+    def event(self, event: Node, y: Array) -> Estimates:
+        return _over_blocks(self._event, event, y, max(1, 2_000 // self.combos.count))
+
+    def _event(self, event: Node, y: Array) -> Estimates:
+        parts = self.by_combination(event, y)
+        return Estimates(parts.value @ self.combos.weights, parts.error @ self.combos.weights)
+
+    def rate(self, event: Node, y: Array) -> Estimates:
+        """d/dy P(event), as two integrals along the level curve: over one input where the curve is steep in
+        the other, and the other way round, joined by a smooth partition of unity. Neither has the poles at
+        turning points and ends that a single integral has."""
+        return _over_blocks(self._rate, event, y, max(1, 1_000 // self.combos.count))
+
+    def _rate(self, event: Node, y: Array) -> Estimates:
+        one = self._chart(event, y, self.outer, self.inner)
+        two = self._chart(event, y, self.inner, self.outer)
+        value, error = one.value + two.value, one.error + two.error
+        weights = self.combos.weights
+        shape = (y.size, self.combos.count)
+        return Estimates(value.reshape(shape) @ weights, (error + self._relative_error * value).reshape(shape) @ weights)
+
+    def _chart(self, event: Node, y: Array, outer: str, inner: str) -> Estimates:
+        count = y.size * self.combos.count
+        environment = _environment(y, self.combos)
+        axis, other, law = self.axes[outer], self.axes[inner], self.laws[inner]
+        solver = self._solver(event, inner)
+        slope = self._slopes[outer]
+        lower, upper, owner = self._panels(event, environment, count, outer, inner)
+
+        def integrand(t: Array, who: Index) -> Array:
+            x = axis.to_x(t)
+            local = {key: value[who] for key, value in environment.items()}
+            local[outer] = x
+            edge = boundary(solver(local, x.size))
+            local = {key: value[edge.problem] for key, value in local.items()}
+            local[inner] = edge.x
+            given = self.correlation * axis.scores(local[outer]) if self.correlation else None
+            with np.errstate(all="ignore"):
+                across = slope(local, edge.x.size) * axis.length(local[outer]) * edge.rate
+                share = (across / other.length(edge.x)) ** 2
+                density = law.pdf(edge.x, given) * edge.rate / (1 + share)
+            density = np.where(np.isfinite(density), density, 0.0)
+            return np.bincount(edge.problem, density, x.size) * axis.weight(x)
+
+        result = integrate(integrand, lower, upper, owner, count, relative=self.relative, absolute=1e-300)
+        self.effort.evaluations += result.evaluations
+        return Estimates(result.value[0], result.error[0])
+
+    def _panels(
+        self, event: Node, environment: Mapping[str, Array], count: int, outer: str, inner: str
+    ) -> tuple[Array, Array, Index]:
+        """Panels of the outer coordinate: its own graded grid, and where the level curve crosses that of
+        the inner one, so that no narrow feature of either law falls between nodes."""
+        axis, values = self.axes[outer], self._coarse[inner]
+        repeated = {key: np.repeat(value, values.size) for key, value in environment.items()}
+        repeated[inner] = np.tile(values, count)
+        where = self._solver(event, outer)(repeated, count * values.size)
+        ends = np.concatenate([where.lower, where.upper])
+        ends = np.where(np.isfinite(ends) & (ends > axis.start) & (ends < axis.end), ends, np.nan)
+        crossings = axis.to_t(ends).reshape(ends.shape[0], count, values.size)
+        crossings = np.moveaxis(crossings, 0, 1).reshape(count, -1)
+        fixed = np.broadcast_to(axis.fixed_points(), (count, axis.fixed_points().size))
+        return panels_between(np.concatenate([fixed, crossings], axis=1))
+
+
+def _environment(y: Array, combos: Combinations) -> dict[str, Array]:
+    environment = {name: np.tile(value, y.size) for name, value in combos.values.items()}
+    environment[PARAMETER] = np.repeat(y, combos.count)
+    return environment
+
+
+def _compiled(node: Node):  # type: ignore[no-untyped-def]
+    arguments = names(node)
+    function = compile_numpy(node, arguments)
+
+    def evaluate(environment: Mapping[str, Array], count: int) -> Array:
+        return np.broadcast_to(np.asarray(function(*(environment[n] for n in arguments)), float), (count,))
+
+    return evaluate
+
+
+def _over_blocks(method, event: Node, y: Array, block: int) -> Estimates:  # type: ignore[no-untyped-def]
+    """Apply a method to blocks of y, to bound the memory."""
+    if y.size <= block:
+        result: Estimates = method(event, y)
+        return result
+    parts = [method(event, y[start : start + block]) for start in range(0, y.size, block)]
+    return Estimates(np.concatenate([p.value for p in parts]), np.concatenate([p.error for p in parts]))
+
+
+__all__ = ["ROUNDING", "Effort", "LineMeasure", "PlaneMeasure"]

@@ -1,0 +1,212 @@
+"""Compiles an event into a program that solves it for one variable, for many problems at once.
+
+Given arrays of values for all other names (one entry a problem), the program returns the `Sets` on which the
+event holds. A comparison is solved exactly where the variable occurs once (operation by operation, see
+`pullback`) or as a quadratic; otherwise its roots are isolated by interval subdivision (`isolate`).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from outspread.formula.calculus import derivative
+from outspread.formula.evaluate import compile_numpy
+from outspread.formula.interval import Interval, enclose
+from outspread.formula.tree import Apply, Name, Node, Number, names, occurrences, subtract
+from outspread.numerics import sets
+from outspread.numerics.sets import Array, Sets
+from outspread.routes.slices import cases, pullback
+from outspread.routes.slices.isolate import Isolator
+from outspread.routes.slices.polynomial import quadratic_program
+
+PARAMETER = "outspread:y"  # the value y in {g <= y}; cannot clash with an input's name
+
+
+@dataclass(frozen=True)
+class Frame:
+    """The range of the variable that matters, with interior points that grade it by probability."""
+
+    name: str
+    grid: Array  # ascending, from the lower to the upper end of what is looked at
+
+
+Environment = Mapping[str, Array]
+Program = Callable[[Environment, int], Sets]
+
+
+class Solver:
+    """Solves one event for one variable. `exact` tells whether every comparison was solved by formula."""
+
+    def __init__(self, event: Node, frame: Frame):
+        self.frame = frame
+        self.exact = True
+        self.unresolved: float = 0.0
+        self._program = self._compile(cases.split(event, frame.name))
+
+    def __call__(self, environment: Environment, count: int) -> Sets:
+        """The sets on which the event holds; environment arrays have shape (count,)."""
+        with np.errstate(all="ignore"):
+            return self._program(environment, count)
+
+    def _compile(self, event: Node) -> Program:
+        assert isinstance(event, Apply)
+        if event == cases.TRUE:
+            return lambda environment, count: sets.everything(count)
+        if event == cases.FALSE:
+            return lambda environment, count: sets.nothing(count)
+        if event.operator in ("and", "or"):
+            return self._connective(event)
+        if self.frame.name not in names(event):
+            condition = _function(event)
+
+            def decided(environment: Environment, count: int) -> Sets:
+                holds = np.broadcast_to(condition(environment, count).astype(bool), (count,))
+                return sets.where(holds, sets.everything(count))
+
+            return decided
+        return self._comparison(event)
+
+    def _connective(self, event: Apply) -> Program:
+        programs = [self._compile(part) for part in event.arguments]
+        join = sets.intersect if event.operator == "and" else sets.union
+
+        def joined(environment: Environment, count: int) -> Sets:
+            result = programs[0](environment, count)
+            for program in programs[1:]:
+                result = join(result, program(environment, count))
+            return result
+
+        return joined
+
+    def _comparison(self, event: Apply) -> Program:
+        left, right = event.arguments
+        operator = event.operator
+        name = self.frame.name
+        if operator == "equal":
+            return lambda environment, count: sets.nothing(count)
+        if name in names(right) and name not in names(left):
+            left, right, operator = right, left, cases.FLIPPED[operator]
+        if occurrences(event, name) == 1 and (peeled := self._peel(left)):
+            return _target(operator, right, peeled)
+        if name in names(right):
+            left, right = subtract(left, right), Number(0.0)
+        quadratic = quadratic_program(left, right, operator, name, PARAMETER, _function)
+        if quadratic is not None:
+            return quadratic
+        self.exact = False
+        isolator = Isolator(left, right, operator, self.frame.name, self.frame.grid, PARAMETER)
+        return isolator.solve
+
+    def _peel(self, node: Node) -> Callable[[Sets, Environment], Sets] | None:
+        """The inverse image of a target under the whole formula, or None where an operation has none."""
+        if isinstance(node, Name):
+            return lambda target, environment: target
+        assert isinstance(node, Apply)
+        name = self.frame.name
+        where = next(i for i, argument in enumerate(node.arguments) if name in names(argument))
+        inner = self._peel(node.arguments[where])
+        step = self._step(node, where)
+        if inner is None or step is None:
+            return None
+        return lambda target, environment: inner(sets.compact(step(target, environment)), environment)
+
+    def _step(self, node: Apply, where: int) -> Callable[[Sets, Environment], Sets] | None:
+        operator = node.operator
+        rest = [argument for i, argument in enumerate(node.arguments) if i != where]
+        if operator in pullback.MONOTONE:
+            inverse, slope, rising, low, high = pullback.MONOTONE[operator]
+            return lambda target, _: pullback.monotone(target, inverse, slope, rising, low, high)
+        if not rest and operator in pullback.UNARY:
+            unary = pullback.UNARY[operator]
+            return lambda target, _: unary(target)
+        if operator in pullback.PERIODIC:
+            return self._periodic(node)
+        if operator == "power":
+            return _power(where, rest[0])
+        combined, binary = _BINARY.get((operator, where if operator in _ORDERED else 0), (None, None))
+        if combined is None or binary is None:
+            return None
+        other = _function(combined(rest))
+        return lambda target, environment: binary(target, other(environment, target.count))
+
+    def _periodic(self, node: Apply) -> Callable[[Sets, Environment], Sets]:
+        argument = node.arguments[0]
+        pull = pullback.PERIODIC[node.operator]
+        name, low, high = self.frame.name, float(self.frame.grid[0]), float(self.frame.grid[-1])
+
+        def periodic(target: Sets, environment: Environment) -> Sets:
+            box = {key: Interval(value, value) for key, value in environment.items()}
+            box[name] = Interval(np.full(target.count, low), np.full(target.count, high))
+            span = enclose(argument, box)
+            lower, upper = (np.broadcast_to(end, (target.count,)) for end in (span.lower, span.upper))
+            return pull(target, lower, upper)
+
+        return periodic
+
+
+Function = Callable[[Environment, int], npt.NDArray[np.float64]]
+
+
+def _function(node: Node) -> Function:
+    """A formula as a function of the environment."""
+    arguments = names(node)
+    compiled = compile_numpy(node, arguments)
+
+    def evaluate(environment: Environment, count: int) -> npt.NDArray[np.float64]:
+        with np.errstate(all="ignore"):
+            value = compiled(*(environment[name] for name in arguments))
+        return np.broadcast_to(np.asarray(value), (count,))
+
+    return evaluate
+
+
+def _target(operator: str, right: Node, peeled: Callable[[Sets, Environment], Sets]) -> Program:
+    bound = _function(right)
+    moving = PARAMETER in names(right)
+    rate = _function(derivative(right, PARAMETER)) if moving else None
+    below = operator in ("less", "less_equal")
+
+    def solve(environment: Environment, count: int) -> Sets:
+        limit = bound(environment, count)
+        if operator == "less":
+            limit = np.nextafter(limit, -np.inf)
+        elif operator == "greater":
+            limit = np.nextafter(limit, np.inf)
+        speed = np.zeros((1, count)) if rate is None else rate(environment, count)[None, :]
+        infinite, zero = np.full((1, count), np.inf), np.zeros((1, count))
+        end = limit[None, :]
+        target = Sets(-infinite, end, zero, speed) if below else Sets(end, infinite, speed, zero)
+        return peeled(sets.where(~np.isnan(limit), target), environment)
+
+    return solve
+
+
+def _power(where: int, other: Node) -> Callable[[Sets, Environment], Sets]:
+    if where == 0 and isinstance(other, Number) and other.value == int(other.value) and abs(other.value) < 1e6:
+        exponent = int(other.value)
+        return lambda target, _: pullback.integer_power(target, exponent)
+    operand = _function(other)
+    pull = pullback.power_of if where == 0 else pullback.exponent_of
+    return lambda target, environment: pull(target, operand(environment, target.count))
+
+
+def _joined(operator: str) -> Callable[[list[Node]], Node]:
+    return lambda rest: rest[0] if len(rest) == 1 else Apply(operator, tuple(rest))
+
+
+_ORDERED = frozenset({"divide", "atan2"})
+_BINARY: dict[tuple[str, int], tuple[Callable[[list[Node]], Node], Callable[[Sets, Array], Sets]]] = {
+    ("add", 0): (_joined("add"), pullback.shift),
+    ("multiply", 0): (_joined("multiply"), pullback.scale),
+    ("divide", 0): (_joined("divide"), pullback.divide_by),
+    ("divide", 1): (_joined("divide"), pullback.divide_into),
+    ("min", 0): (_joined("min"), pullback.minimum),
+    ("max", 0): (_joined("max"), pullback.maximum),
+    ("hypot", 0): (lambda rest: Apply("hypot", tuple(rest)), pullback.hypotenuse),
+    ("atan2", 0): (_joined("atan2"), pullback.angle_of_rise),
+    ("atan2", 1): (_joined("atan2"), pullback.angle_of_run),
+}
