@@ -12,18 +12,19 @@ from collections.abc import Mapping
 from graphlib import CycleError, TopologicalSorter
 from pathlib import Path as FilePath
 
-from outspread.errors import Fault, FormulaError, ModelError, Place
+from outspread.errors import Fault, ModelError, Place
 from outspread.formula.parser import FUNCTIONS, RESERVED
-from outspread.formula.tree import Name, names
+from outspread.formula.tree import names
 from outspread.reading.context import Context
 from outspread.reading.dependence import build_dependence, joint_inputs
 from outspread.reading.distributions import build_distribution, parents, truncated
-from outspread.reading.document import LARGEST_FILE, Document, Path, read_plain, read_yaml
+from outspread.reading.document import Document, Path, read_plain
 from outspread.reading.goals import build_accuracy, build_readings, build_requirements
 from outspread.reading.model import Constant, Distribution, Input, Model, Output
 from outspread.reading.shape import check_shape
 from outspread.reading.transformation import build_transformation, report_cycle
 from outspread.reading.words import quoted
+from outspread.reading.yaml_reader import LARGEST_FILE, read_yaml
 
 #: words that make a model one on which people's safety may hang, unless it says `safety: false`
 _SAFETY = re.compile(
@@ -58,7 +59,10 @@ def _bytes(file: str) -> bytes:
     except IsADirectoryError:
         message = "this is a folder; give the path of a model file in it"
     except (OSError, ValueError) as error:
-        message = f"the file cannot be read ({getattr(error, 'strerror', None) or error}); check its name and its permissions"
+        message = (
+            f"the file cannot be read ({getattr(error, 'strerror', None) or error}); check its "
+            "name and its permissions"
+        )
     raise ModelError([Fault(Place(file), message)])
 
 
@@ -133,16 +137,15 @@ def _check_names(context: Context) -> None:
 
 
 def _unit(context: Context, path: Path, name: str) -> str:
-    """The unit at `path`, made known as that of `name`; left unknown, with the fault noted, where there is none such."""
-    from outspread.formula.units import resolve_units
+    """The unit at `path`, made known as that of `name`; its fault noted where there is no such unit."""
+    from outspread.formula.units import unit_is_known
 
     unit = context.text(path)
-    try:
-        resolve_units(Name(name), {name: unit}, None, name)
-    except FormulaError as error:
-        context.fault(path, error.message)
-    else:
+    wrong = unit_is_known(unit)
+    if wrong is None:
         context.units[name] = unit
+    else:
+        context.fault(path, wrong)
     return unit
 
 
@@ -194,13 +197,17 @@ def _distribution(context: Context, name: str, unit: str, joint: bool) -> Distri
     if joint:
         for key in ("distribution", "truncate"):
             if key in written:
-                message = f"a joint entry of `dependence` describes the input {quoted(name)} already; remove its {quoted(key)}"
+                message = (
+                    f"a joint entry of `dependence` describes the input {quoted(name)} already; "
+                    f"remove its {quoted(key)}"
+                )
                 context.key_fault((*path, key), message)
         return None
     if "distribution" not in written:
         context.key_fault(
             path,
-            f"the input {quoted(name)} lacks a `distribution`; add one, such as `normal: {{mean: 5, sd: 0.1}}`",
+            f"the input {quoted(name)} lacks a `distribution`; add one, such as `normal: "
+            f"{{mean: 5, sd: 0.1}}`",
         )
         return None
     if name not in context.units:

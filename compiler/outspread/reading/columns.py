@@ -26,7 +26,7 @@ def read_columns(
     source = _source(context, path, name)
     if source is None:
         return None
-    place_of = str((context.folder / name)) if context.folder.parts else name
+    place_of = str(context.folder / name) if context.folder.parts else name
     try:
         text = source.decode("utf-8-sig")
     except UnicodeDecodeError as error:

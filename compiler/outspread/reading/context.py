@@ -101,7 +101,7 @@ class Context:
         units: Mapping[str, str] | None = None,
         numbers: bool = False,
     ) -> tuple[Node, str] | None:
-        """The tree with its units resolved and its unit; None, with the fault noted, where they do not fit."""
+        """The tree with its units resolved, and its unit; None, the fault noted, where they do not fit."""
         from outspread.formula.units import resolve_units
 
         try:

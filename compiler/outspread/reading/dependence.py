@@ -21,7 +21,7 @@ Matrix = tuple[tuple[float, ...], ...]
 
 
 def build_dependence(context: Context, conditional: Mapping[str, tuple[str, ...]]) -> tuple[Dependence, ...]:
-    """The entries under `dependence`. `conditional`: inputs whose distribution depends on others, and on which."""
+    """The entries under `dependence`. `conditional`: for each input those that shape its distribution."""
     found: list[Dependence] = []
     named: dict[str, int] = {}
     for index in range(len(context.get(("dependence",)) or ())):
@@ -36,7 +36,7 @@ def build_dependence(context: Context, conditional: Mapping[str, tuple[str, ...]
 
 
 def joint_inputs(context: Context) -> frozenset[str]:
-    """The inputs that a joint density or joint sample describes, and that have no distribution of their own."""
+    """The inputs that a joint density or sample describes, and that have no distribution of their own."""
     return frozenset(
         name
         for entry in context.get(("dependence",)) or ()
@@ -57,11 +57,17 @@ def _inputs(
         elif name in inputs:
             context.fault(place, f"the input {quoted(name)} is named twice in one entry; name it once")
         elif name in named:
-            message = f"the input {quoted(name)} is named by entry {named[name] + 1} of `dependence` already; join the two entries"
+            message = (
+                f"the input {quoted(name)} is named by entry {named[name] + 1} of `dependence` "
+                "already; join the two entries"
+            )
             context.fault(place, message)
         elif conditional.get(name):
             parents = listed(conditional[name], "and")
-            message = f"the input {quoted(name)} depends on {parents} through its distribution; remove one of the two dependences"
+            message = (
+                f"the input {quoted(name)} depends on {parents} through its distribution; remove "
+                "one of the two dependences"
+            )
             context.fault(place, message)
         inputs.append(name)
     named.update((name, int(path[-1])) for name in inputs if name not in named)
@@ -123,7 +129,7 @@ def _copula(context: Context, path: Path, inputs: tuple[str, ...]) -> Dependence
     if "degrees_of_freedom" in written:
         degrees = float(written["degrees_of_freedom"])
         if not degrees > 0:
-            message = f"`degrees_of_freedom` is {number(degrees)}, and a number above 0 is wanted"
+            message = f"`degrees_of_freedom` is {number(degrees)}; write a number above 0"
             context.fault((*inner, "degrees_of_freedom"), message)
             return None
         parameters["degrees_of_freedom"] = degrees
@@ -139,7 +145,10 @@ def _matrix(context: Context, path: Path, written: Any, count: int, family: str)
     name = quoted(path[-1])
     if not isinstance(written, list):
         if count > 2 and family in ELLIPTICAL:
-            message = f"{name} is one number for {count} inputs; write a full matrix of {count} rows in the order of `inputs`"
+            message = (
+                f"{name} is one number for {count} inputs; write a full matrix of {count} rows in "
+                "the order of `inputs`"
+            )
             context.fault(path, message)
             return None
         value = float(written)
@@ -149,7 +158,7 @@ def _matrix(context: Context, path: Path, written: Any, count: int, family: str)
         found = f"{len(written)} rows of {' or '.join(map(str, widths))} numbers"
         context.fault(
             path,
-            f"{name} has {found}, and {count} rows of {count} numbers are wanted, in the order of `inputs`",
+            f"{name} has {found}; write {count} rows of {count} numbers, in the order of `inputs`",
         )
         return None
     matrix = tuple(tuple(float(entry) for entry in row) for row in written)
@@ -158,7 +167,7 @@ def _matrix(context: Context, path: Path, written: Any, count: int, family: str)
         if matrix[i][i] != 1:
             context.fault(
                 (*path, i, i),
-                f"the diagonal of {name} has {number(matrix[i][i])} in row {i + 1}, and 1 is wanted",
+                f"the diagonal of {name} has {number(matrix[i][i])} in row {i + 1}; write 1",
             )
         for j in range(i):
             if matrix[i][j] != matrix[j][i]:
@@ -183,7 +192,7 @@ def _in_range(context: Context, path: Path, matrix: Matrix, family: str, measure
             good = False
             place = (*path, i, j) if (*path, i, j) in context.document.spots else path
             pair = f" in row {i + 1}, column {j + 1}" if place != path else ""
-            context.fault(place, f"{quoted(path[-1])} is {number(value)}{pair}, and {right[1]} is wanted")
+            context.fault(place, f"{quoted(path[-1])} is {number(value)}{pair}; write {right[1]}")
             if place == path:
                 return False
     return good

@@ -67,8 +67,9 @@ def _check(context: Context, path: Path, distribution: Distribution) -> bool:
         else:
             FAMILIES[distribution.family].canonical(distribution.parameters)
     except LawError as error:
-        blamed = (*path, error.parameter) if error.parameter else path
-        if error.parameter and blamed in context.document.spots:
+        parameter = "formula" if error.parameter == "density" else error.parameter
+        blamed = (*path, parameter) if parameter else path
+        if parameter and blamed in context.document.spots:
             context.fault(blamed, error.message)
         else:
             context.key_fault(path, error.message)
@@ -122,18 +123,20 @@ def _quantiles(context: Context, path: Path, written: Mapping[str, Any]) -> dict
     return found
 
 
-def unit_of_parameter(unit: str, kind: str) -> str | None:
-    """The unit in which a parameter of a distribution stands, for an input in `unit`."""
-    if kind == PLAIN:
+def unit_of_parameter(unit: str, kind: str) -> str:
+    """The unit in which a parameter of a distribution stands, for an input in `unit`.
+
+    Differences of temperatures in degC are in K, differences of levels in dB.
+    """
+    if kind == PLAIN or unit in {"", "1"}:
         return ""
-    if not unit or unit == "1":
-        return ""
-    if kind == RECIPROCAL:
-        return f"1/({unit})"
-    if kind == SQUARE:
-        return f"({unit})^2"
-    assert kind in {POSITION, DIFFERENCE}
-    return unit
+    if kind == POSITION:
+        return unit
+    from outspread.formula.unit import difference, parse_unit
+
+    known = parse_unit(unit)
+    size = str(difference(known)) if known.kind == "offset" else "dB" if known.kind == "level" else unit
+    return {DIFFERENCE: size, RECIPROCAL: f"1/({size})", SQUARE: f"({size})^2"}[kind]
 
 
 # --- truncation ------------------------------------------------------------------------------------------
@@ -150,7 +153,7 @@ def truncated(context: Context, path: Path, distribution: Distribution, unit: st
     lower, upper = limits.get("lower"), limits.get("upper")
     if lower is not None and upper is not None and not lower < upper:
         message = (
-            f"`upper` is {number(upper)} and `lower` is {number(lower)}, and `upper` above `lower` is wanted"
+            f"`upper` is {number(upper)} and `lower` is {number(lower)}; write `upper` above `lower`"
         )
         context.fault((*path, "upper"), message)
         return None
@@ -198,10 +201,10 @@ def _mixture(context: Context, path: Path, unit: str, own: str) -> Distribution 
     for index, weight in enumerate(weights):
         if not weight > 0:
             context.fault(
-                (*path, "weights", index), f"the weight is {number(weight)}, and a number above 0 is wanted"
+                (*path, "weights", index), f"the weight is {number(weight)}; write a number above 0"
             )
     if len(context.faults) == before and abs(math.fsum(weights) - 1) > 1e-9:
-        message = f"the weights add up to {number(math.fsum(weights))}, and 1 is wanted"
+        message = f"the weights add up to {number(math.fsum(weights))}; make it 1"
         context.key_fault((*path, "weights"), message)
     parts = [
         build_distribution(context, (*path, "distributions", index), unit, own) for index in range(count)
@@ -256,4 +259,21 @@ def _columns(context: Context, path: Path) -> dict[str, tuple[float, ...]] | Non
     found = read_columns(context, (*path, "file"), {context.text(asked): asked for asked in headers.values()})
     if found is None:
         return None
-    return {name: found[context.text(asked)] for name, asked in headers.items()}
+    columns = {name: found[context.text(asked)] for name, asked in headers.items()}
+    return _classes(context, path, columns) if "count" in columns else columns
+
+
+def _classes(
+    context: Context, path: Path, columns: Mapping[str, tuple[float, ...]]
+) -> dict[str, tuple[float, ...]] | None:
+    """Edges and counts of a histogram whose classes stand in rows, each beginning where the last ended."""
+    lower, upper = columns["lower"], columns["upper"]
+    for row in range(1, len(lower)):
+        if lower[row] != upper[row - 1]:
+            message = (
+                f"row {row + 1} of the classes begins at {number(lower[row])}, and row {row} ends at "
+                f"{number(upper[row - 1])}; each class begins where the one before it ends"
+            )
+            context.fault((*path, "file"), message)
+            return None
+    return {"edges": (*lower, upper[-1]), "counts": columns["count"]}

@@ -21,7 +21,10 @@ def build_requirements(context: Context, outputs: tuple[str, ...]) -> tuple[Requ
         path: Path = ("requirements", index)
         name = context.text((*path, "name"))
         if name in names:
-            message = f"the requirement {quoted(name)} occurs twice, first as entry {names[name] + 1}; give each its own name"
+            message = (
+                f"the requirement {quoted(name)} occurs twice, first as entry {names[name] + 1}; "
+                "give each its own name"
+            )
             context.fault((*path, "name"), message)
         names.setdefault(name, index)
         entry = (
@@ -38,7 +41,10 @@ def _bounds(context: Context, path: Path) -> tuple[float | None, float | None] |
     """at_least and at_most under `path`; None with the fault noted where they contradict each other."""
     lower, upper = context.get((*path, "at_least")), context.get((*path, "at_most"))
     if lower is not None and upper is not None and lower > upper:
-        message = f"`at_least` is {number(lower)} and `at_most` is {number(upper)}: nothing meets both; exchange them"
+        message = (
+            f"`at_least` is {number(lower)} and `at_most` is {number(upper)}: nothing meets both; "
+            "exchange them"
+        )
         context.fault((*path, "at_most"), message)
         return None
     return None if lower is None else float(lower), None if upper is None else float(upper)
@@ -140,7 +146,7 @@ def _time_limit(context: Context) -> float | None:
     if not 0 < seconds < 1e9:
         context.fault(
             path,
-            f"`time_limit` is {quoted(context.text(path))}, and a time such as `60 s`, `5 min` or `1 h` is wanted",
+            f"`time_limit` is {quoted(context.text(path))}; write a time such as `60 s`, `5 min` or `1 h`",
         )
         return None
     return seconds

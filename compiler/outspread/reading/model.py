@@ -136,7 +136,7 @@ class Model:
     title: str
     purpose: str
     record: Mapping[str, str]
-    safety: bool  # the model says (or its units/words show) that people may be hurt: cautions are shown in full
+    safety: bool  # the model says (or its words show) that people may be hurt: cautions are shown in full
     constants: tuple[Constant, ...]
     inputs: tuple[Input, ...]
     dependence: tuple[Dependence, ...]

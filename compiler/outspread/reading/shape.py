@@ -36,10 +36,15 @@ def check_shape(document: Document) -> None:
     from jsonschema import Draft202012Validator
 
     faults: list[Fault] = []
+    last: Any = None
     for error in Draft202012Validator(schema()).iter_errors(document.value):
         faults.extend(_faults(document, error))
+        last = error
     if faults:
         raise ModelError(faults)
+    if last is not None:  # each rule that stays silent relies on another one's fault; never accept in silence
+        path = tuple(last.absolute_path)
+        raise ModelError([Fault(document.key(path), f"{_called(path)} does not fit; write {_right(last)}")])
 
 
 def _check_version(document: Document, value: Mapping[str, object]) -> None:
@@ -47,9 +52,15 @@ def _check_version(document: Document, value: Mapping[str, object]) -> None:
     version = value.get("outspread")
     if version is None or (version == FORMAT and not isinstance(version, bool)):
         return
-    message = f"the format is {shown(version)}, and this version of outspread reads format {FORMAT}; write `outspread: {FORMAT}`"
+    message = (
+        f"the format is {shown(version)}, and this version of outspread reads format {FORMAT}; "
+        f"write `outspread: {FORMAT}`"
+    )
     if isinstance(version, int | float) and not isinstance(version, bool) and version > FORMAT:
-        message = f"the model has format {version}, and this version of outspread reads format {FORMAT}; update outspread"
+        message = (
+            f"the model has format {version}, and this version of outspread reads format {FORMAT}; "
+            "update outspread"
+        )
     raise ModelError([Fault(document.at(("outspread",)), message)])
 
 
@@ -84,15 +95,14 @@ Said = Iterator[tuple[Place, str]]
 
 def _wrong_kind(document: Document, path: Path, error: Any) -> Said:
     value, right = error.instance, _right(error)
-    advice = ""
-    if isinstance(value, str) and "number" in _types(error) and _looks_like_number(value):
-        advice = f"; write {value.strip().replace(',', '.')} without quotes and with a decimal point"
-    elif isinstance(value, bool) and "string" in _types(error):
-        advice = "; quote it if it is meant as text"
-    elif value is None and path:
-        yield document.key(path), f"{_called(path)} is empty, and {right} is wanted"
+    if value is None and path:
+        yield document.key(path), f"{_called(path)} is empty; write {right}"
         return
-    yield document.at(path), f"{_called(path)} is {shown(value)}, and {right} is wanted{advice}"
+    if isinstance(value, str) and "number" in _types(error) and _looks_like_number(value):
+        right = f"{value.strip().replace(',', '.')} without quotes and with a decimal point"
+    elif isinstance(value, bool) and "string" in _types(error):
+        right += ", or quote it if it is meant as text"
+    yield document.at(path), f"{_called(path)} is {shown(value)}; write {right}"
 
 
 def _types(error: Any) -> list[str]:
@@ -109,7 +119,7 @@ def _looks_like_number(text: str) -> bool:
 
 
 def _out_of_range(document: Document, path: Path, error: Any) -> Said:
-    yield document.at(path), f"{_called(path)} is {shown(error.instance)}, and {_right(error)} is wanted"
+    yield document.at(path), f"{_called(path)} is {shown(error.instance)}; write {_right(error)}"
 
 
 def _unknown_key(document: Document, path: Path, error: Any) -> Said:
@@ -118,7 +128,7 @@ def _unknown_key(document: Document, path: Path, error: Any) -> Said:
         if key in known:
             continue
         place = document.key((*path, key))
-        if path and path[-1] == "distribution" or (len(path) > 1 and path[-2] == "distributions"):
+        if (path and path[-1] == "distribution") or (len(path) > 1 and path[-2] == "distributions"):
             match = near(key, known)
             advice = (
                 f"did you mean {quoted(match)}?" if match else "`outspread families` lists those that exist"
@@ -140,15 +150,13 @@ def _missing_key(document: Document, path: Path, error: Any) -> Said:
         if key in error.instance:
             continue
         known = error.schema.get("properties", {})
-        # A misspelt key is reported as unknown already; reporting the right one as missing says it twice.
+        # A misspelt key is reported as unknown already: reporting it as missing too says it twice.
         if any(near(other, [key]) for other in error.instance if other not in known):
             continue
-        # jsonschema reports `required` once for each missing key; take the one this error is about.
-        if error.message.startswith(repr(key)):
-            if not path and key == "outspread":
-                yield document.at(path), "the key `outspread` is missing; a model begins with `outspread: 1`"
-            else:
-                yield document.key(path), f"{_called(path)} lacks the key {quoted(key)}; add it"
+        if not path and key == "outspread":
+            yield document.at(path), "the key `outspread` is missing; a model begins with `outspread: 1`"
+        else:
+            yield document.key(path), f"{_called(path)} lacks the key {quoted(key)}; add it"
 
 
 def _key_sets(document: Document, path: Path, error: Any) -> Said:
@@ -161,34 +169,37 @@ def _key_sets(document: Document, path: Path, error: Any) -> Said:
     shared = [key for key in wanted[0] if all(key in keys for keys in wanted)]
     alternatives = dict.fromkeys(key for keys in wanted for key in keys if key not in shared)
     have = [key for key in given if key in alternatives]
-    if have and any(key not in given for key in shared):
+    required = error.schema.get("required", [])
+    if have and any(key not in given and key in required for key in shared):
         return  # reported as a missing key
-    choices = "; or ".join(listed([key for key in keys if key not in shared], "and") for keys in wanted)
-    found = f"{listed(have, 'and')} {'is' if len(have) == 1 else 'are'} given" if have else "none is given"
-    number = (
-        "exactly one" if all("properties" in branch for branch in error.validator_value) else "at least one"
-    )
-    yield document.key(path), f"{_called(path)} needs {number} of: {choices}; {found}"
+    groups = [[key for key in keys if key not in shared] for keys in wanted]
+    if all(len(keys) == 1 for keys in groups):
+        closed = all("properties" in branch for branch in error.validator_value)
+        choices = f"{'exactly one of ' if closed else ''}{listed([keys[0] for keys in groups])}"
+    else:
+        choices = f"either {', or '.join(listed(keys, 'and') for keys in groups)}"
+    found = listed(have, "and") or "none of them"
+    yield document.key(path), f"{_called(path)} needs {choices}; given: {found}"
 
 
 def _empty(document: Document, path: Path, error: Any) -> Said:
-    yield document.key(path), f"{_called(path)} is {shown(error.instance)}, and {_right(error)} is wanted"
+    yield document.key(path), f"{_called(path)} is {shown(error.instance)}; write {_right(error)}"
 
 
 def _too_short(document: Document, path: Path, error: Any) -> Said:
     if error.instance:
         yield (
             document.at(path),
-            f"{_called(path)} has {len(error.instance)} entry, and {_right(error)} is wanted",
+            f"{_called(path)} has {len(error.instance)} entry; write {_right(error)}",
         )
     else:
-        yield document.key(path), f"{_called(path)} is an empty list, and {_right(error)} is wanted"
+        yield document.key(path), f"{_called(path)} is an empty list; write {_right(error)}"
 
 
 def _too_many(document: Document, path: Path, error: Any) -> Said:
     keys = list(error.instance)
     if all(key in error.schema["properties"] for key in keys):
-        message = f"{_called(path)} has {listed(keys, 'and')}, and one of them is wanted; remove the others"
+        message = f"{_called(path)} has {listed(keys, 'and')}; keep one of them"
         yield document.key((*path, keys[1])), message
 
 
@@ -197,7 +208,8 @@ def _bad_name(document: Document, path: Path, error: Any) -> Said:
     place = document.key((*path, name))
     yield (
         place,
-        f"{quoted(name)} is no name; a name begins with a letter and has only letters A-Z, digits and `_`, at most 60",
+        f"{quoted(name)} is no name; a name begins with a letter and has only letters A-Z, digits "
+        "and `_`, at most 60",
     )
 
 

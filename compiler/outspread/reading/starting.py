@@ -1,4 +1,4 @@
-"""The commented model that `outspread new NAME` writes to start from; where it goes is `command`'s concern."""
+"""The commented model that `outspread new NAME` writes to start from; where it goes is left to `command`."""
 
 from __future__ import annotations
 

@@ -63,7 +63,8 @@ def _output(context: Context, formula: _Formula, expression: Node) -> Output:
     if not names(expression):
         context.fault(
             formula.path,
-            f"the output {quoted(formula.name)} contains no input, so that it has no distribution; use at least one input",
+            f"the output {quoted(formula.name)} contains no input, so that it has no distribution; "
+            "use at least one input",
         )
     return Output(
         name=formula.name,
@@ -100,7 +101,8 @@ def _expressions(context: Context, formulas: Mapping[str, _Formula]) -> dict[str
             most = f"{MAXIMUM_NODES:,} parts" if size > MAXIMUM_NODES else f"{DEEPEST_EXPRESSION} levels"
             context.fault(
                 formula.path,
-                f"with its steps put in, {quoted(name)} has {what}, and at most {most} are possible; use fewer steps within steps",
+                f"with its steps put in, {quoted(name)} has {what}, and at most {most} are "
+                "possible; use fewer steps within steps",
             )
             continue
         measures[name] = size, depth
@@ -131,7 +133,10 @@ def report_cycle(context: Context, cycle: list[str], paths: Mapping[str, Path]) 
     if len(members) == 1:
         message = f"{quoted(first)} is defined by itself; define it without its own name"
     else:
-        message = f"{' uses '.join(quoted(name) for name in [*members, first])}: a cycle; define one of them without the others"
+        message = (
+            f"{' uses '.join(quoted(name) for name in [*members, first])}: a cycle; define one of "
+            "them without the others"
+        )
     context.fault(paths[first], message)
 
 
