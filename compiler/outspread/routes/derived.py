@@ -58,3 +58,4 @@ class JointLaw:
     relative_error: float = 1e-12
     branches: int = 1
     region: Callable[[Array], Array] | None = None
+    pdf_error: Callable[[Array], Array] | None = None  # bound on |pdf - true density| at points of shape (n, k)

@@ -1,0 +1,227 @@
+"""One smooth piece of a map with its derivatives, and the judgement of a candidate solution in it.
+
+Candidates come as interval boxes that enclose the exact solution, from `symbolic` or `numeric`; a box that
+is too wide to decide on, or to give the determinant to 12 digits, is asked for again with 60 digits.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from outspread.formula.calculus import derivative
+from outspread.formula.interval import Interval, enclose
+from outspread.formula.interval_arithmetic import add, multiply, negate
+from outspread.formula.tree import Node
+from outspread.laws.law import Array, Law
+from outspread.routes.jacobian.pieces import Piece
+from outspread.routes.jacobian.precise import DIGITS, Precise, evaluate_precisely
+
+Mask = npt.NDArray[np.bool_]
+
+#: a candidate is recomputed with 60 digits where its enclosure is wider than this, relative to itself
+NARROW = 64 * 2.0**-52
+#: the same for the determinant
+NARROW_DETERMINANT = 1024 * 2.0**-52
+ROUNDING = 2.0**-53
+#: how far an enclosure of the outputs may miss the point before the candidate counts as spurious
+NEAR = 1e-9
+#: the same with 60 digits
+PRECISELY_NEAR = 1e-40
+
+
+@dataclass(frozen=True)
+class Candidates:
+    """Possible solutions at some of the points: `columns` says at which of them, `box` one interval an input.
+
+    `undecided` marks those whose own conditions the enclosures leave open. `precise(i)` gives candidate i
+    by input name with 60 digits, or None where it is no solution.
+    """
+
+    columns: npt.NDArray[np.int64]
+    box: Mapping[str, Interval]
+    parameters: Mapping[str, Array]
+    undecided: Mask
+    precise: Callable[[int], Mapping[str, Precise] | None]
+
+
+@dataclass(frozen=True)
+class Solutions:
+    """Solutions at the points `columns`: inputs of shape (n, m) and |det J| of shape (m,), with bounds on
+    the absolute errors of both."""
+
+    columns: npt.NDArray[np.int64]
+    inputs: Array
+    inputs_error: Array
+    determinant: Array
+    determinant_error: Array
+
+
+class SmoothMap:
+    """A piece of the map from `inputs` to `outputs` with its matrix of derivatives."""
+
+    def __init__(self, piece: Piece, outputs: Sequence[str], laws: Mapping[str, Law]):
+        self.piece = piece
+        self.inputs = tuple(laws)
+        self.outputs = tuple(outputs)
+        self.jacobian = tuple(
+            tuple(derivative(output, name) for name in self.inputs) for output in piece.outputs
+        )
+        self.limits = {name: law.support() for name, law in laws.items()}
+        self.edges = {
+            name: tuple(edge for edge in (*law.support(), *law.breaks()) if np.isfinite(edge))
+            for name, law in laws.items()
+        }
+
+    def settle(self, candidates: Candidates, points: Array) -> Solutions:
+        """The candidates that are solutions at their points (outputs of shape (n, k))."""
+        at = points[:, candidates.columns]
+        box = {**candidates.box, **{name: Interval.of(value) for name, value in candidates.parameters.items()}}
+        possible, certain = self._judged(box, at)
+        chosen = np.flatnonzero(possible)
+        narrowed = {name: Interval(part.lower[chosen], part.upper[chosen]) for name, part in box.items()}
+        determinant = absolute(self.determinant(narrowed))
+        middle = np.stack([_middle(narrowed[name]) for name in self.inputs])
+        size = _middle(determinant)
+        away = np.stack([_half_width(narrowed[name]) for name in self.inputs])
+        size_away = _half_width(determinant)
+        doubtful = ~certain[chosen] | candidates.undecided[chosen] | self._wide(narrowed) | ~_narrow(determinant, NARROW_DETERMINANT)
+        keep = np.ones(len(chosen), dtype=bool)
+        for place in np.flatnonzero(doubtful):
+            settled = self._settled_precisely(candidates, int(chosen[place]), at[:, chosen[place]])
+            if settled is None:
+                keep[place] = False
+            else:
+                middle[:, place], size[place] = settled
+                away[:, place], size_away[place] = ROUNDING * np.abs(settled[0]), ROUNDING * settled[1]
+        return Solutions(
+            candidates.columns[chosen][keep], middle[:, keep], away[:, keep], size[keep], size_away[keep]
+        )
+
+    def _judged(self, box: Mapping[str, Interval], at: Array) -> tuple[Mask, Mask]:
+        """(possible, certain): whether each candidate may be, and surely is, a solution inside the support."""
+        some = box[self.inputs[0]]
+        possible = ~some.empty
+        certain = possible.copy()
+        for name in self.inputs:
+            part, (lower, upper) = box[name], self.limits[name]
+            with np.errstate(invalid="ignore"):
+                possible &= (part.upper >= lower) & (part.lower <= upper)
+                certain &= np.isfinite(part.lower) & np.isfinite(part.upper)
+                for edge in self.edges[name]:
+                    certain &= (part.upper <= edge) | (part.lower >= edge)
+        for condition in self.piece.conditions:
+            held = enclose(condition, box)
+            with np.errstate(invalid="ignore"):
+                possible &= held.upper == 1.0
+                certain &= held.lower == 1.0
+        for output, value in zip(self.piece.outputs, at, strict=True):
+            forward = enclose(output, box)
+            with np.errstate(invalid="ignore", over="ignore"):
+                scale = NEAR * (np.abs(value) + np.abs(_middle(forward)) + (forward.upper - forward.lower))
+                possible &= (forward.lower <= value + scale) & (forward.upper >= value - scale)
+                width = forward.upper - forward.lower
+                certain &= forward.contains(value) & (width <= NEAR * np.abs(value))
+        return possible, certain & possible
+
+    def _wide(self, box: Mapping[str, Interval]) -> Mask:
+        wide = [~_narrow(box[name]) for name in self.inputs]
+        return np.asarray(np.logical_or.reduce(wide))
+
+    def determinant(self, box: Mapping[str, Interval]) -> Interval:
+        """Enclosure of det J over the boxes, by expansion along rows with shared minors."""
+        entries = [[enclose(entry, box) for entry in row] for row in self.jacobian]
+        minors: dict[tuple[int, ...], Interval] = {}
+
+        def minor(row: int, columns: tuple[int, ...]) -> Interval:
+            if columns not in minors:
+                if len(columns) == 1:
+                    minors[columns] = entries[row][columns[0]]
+                else:
+                    terms = []
+                    for place, column in enumerate(columns):
+                        rest = columns[:place] + columns[place + 1 :]
+                        term = multiply(entries[row][column], minor(row + 1, rest))
+                        terms.append(negate(term) if place % 2 else term)
+                    minors[columns] = add(*terms)
+            return minors[columns]
+
+        with np.errstate(all="ignore"):
+            return minor(0, tuple(range(len(self.inputs))))
+
+    def _settled_precisely(self, candidates: Candidates, index: int, at: Array) -> tuple[Array, float] | None:
+        """The candidate's inputs and |det J| to double precision, or None where it is no solution."""
+        import mpmath
+
+        with mpmath.workdps(DIGITS):
+            found = candidates.precise(index)
+            if found is None:
+                return None
+            values = {**found, **{name: mpmath.mpf(float(p[index])) for name, p in candidates.parameters.items()}}
+            if not self._holds_precisely(values, at):
+                return None
+            entries = evaluate_precisely([entry for row in self.jacobian for entry in row], values)
+            if any(entry is None for entry in entries):
+                return None
+            order = len(self.inputs)
+            rows = [entries[i * order : (i + 1) * order] for i in range(order)]
+            size = mpmath.fabs(mpmath.det(mpmath.matrix(rows)))
+            if size < _determinant_scale(rows) * mpmath.mpf(PRECISELY_NEAR):
+                size = mpmath.mpf(0)
+            return np.array([float(values[name]) for name in self.inputs]), float(size)
+
+    def _holds_precisely(self, values: Mapping[str, Precise], at: Array) -> bool:
+        import mpmath
+
+        slack = mpmath.mpf(PRECISELY_NEAR)
+        for name in self.inputs:
+            lower, upper = self.limits[name]
+            value = values[name]
+            if value < lower and value < mpmath.mpf(lower) - slack * (1 + abs(lower)):
+                return False
+            if value > upper and value > mpmath.mpf(upper) + slack * (1 + abs(upper)):
+                return False
+        held = evaluate_precisely(self.piece.conditions, values)
+        if not all(held):
+            return False
+        for forward, value in zip(evaluate_precisely(self.piece.outputs, values), at, strict=True):
+            if forward is None or abs(forward - value) > 1e-25 * abs(value) + slack * (1 + abs(forward)):
+                return False
+        return True
+
+
+def _determinant_scale(rows: Sequence[Sequence[Precise]]) -> Precise:
+    """Hadamard's bound: the product of the lengths of the rows."""
+    import mpmath
+
+    scale = mpmath.mpf(1)
+    for row in rows:
+        scale *= mpmath.sqrt(mpmath.fsum(entry * entry for entry in row))
+    return scale
+
+
+def _middle(part: Interval) -> Array:
+    with np.errstate(invalid="ignore", over="ignore"):
+        return np.asarray(0.5 * part.lower + 0.5 * part.upper)
+
+
+def _half_width(part: Interval) -> Array:
+    with np.errstate(invalid="ignore", over="ignore"):
+        return np.asarray(0.5 * (part.upper - part.lower) + ROUNDING * np.abs(_middle(part)))
+
+
+def _narrow(part: Interval, limit: float = NARROW) -> Mask:
+    with np.errstate(invalid="ignore", over="ignore"):
+        width = part.upper - part.lower
+        return np.asarray(width <= limit * np.minimum(np.abs(part.lower), np.abs(part.upper)))
+
+
+def absolute(part: Interval) -> Interval:
+    """|part|, elementwise."""
+    with np.errstate(invalid="ignore"):
+        larger = np.maximum(np.abs(part.lower), np.abs(part.upper))
+        smaller = np.minimum(np.abs(part.lower), np.abs(part.upper))
+        return Interval(np.where(part.lower * part.upper <= 0.0, 0.0, smaller), larger)
