@@ -23,7 +23,8 @@ _RELATIONS = {
 _FUNCTIONS = {
     "log": r"\ln", "log10": r"\log_{10}", "sign": r"\mathrm{sgn}", "min": r"\min", "max": r"\max",
     "sin": r"\sin", "cos": r"\cos", "tan": r"\tan", "asin": r"\arcsin", "acos": r"\arccos",
-    "atan": r"\arctan", "atan2": r"\mathrm{atan2}", "sinh": r"\sinh", "cosh": r"\cosh", "tanh": r"\tanh", "erf": r"\mathrm{erf}",
+    "atan": r"\arctan", "atan2": r"\mathrm{atan2}",
+    "sinh": r"\sinh", "cosh": r"\cosh", "tanh": r"\tanh", "erf": r"\mathrm{erf}",
     "gamma": r"\Gamma", "exp": r"\exp",
 }  # fmt: skip
 
@@ -260,7 +261,8 @@ _WIDE = {
     r"\ne": 2.0,
 }
 _WORDS = frozenset({
-    "ln", "log", "min", "max", "sin", "cos", "tan", "arcsin", "arccos", "arctan", "sinh", "cosh", "tanh", "exp",
+    "ln", "log", "min", "max", "sin", "cos", "tan", "arcsin", "arccos", "arctan", "sinh", "cosh",
+    "tanh", "exp",
 })  # fmt: skip
 
 

@@ -8,10 +8,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Collection
-from typing import NamedTuple, NoReturn
+from typing import NoReturn
 
 from outspread.errors import FormulaError
-from outspread.formula.constants import NoValue, constant_value
+from outspread.formula.builder import MAXIMUM_LENGTH, MAXIMUM_NESTING, Builder, Part
 from outspread.formula.tokens import (
     FUNCTIONS,
     OTHER_SPELLINGS,
@@ -22,13 +22,9 @@ from outspread.formula.tokens import (
     shape,
     tokens,
 )
-from outspread.formula.tree import OPERATORS, Apply, Name, Node, Number, walk
+from outspread.formula.tree import OPERATORS, Name, Node, walk
 
 __all__ = ["FUNCTIONS", "RESERVED", "check_names", "near_miss", "parse", "parse_event"]
-
-MAXIMUM_LENGTH = 20_000
-MAXIMUM_NESTING = 100
-MAXIMUM_NODES = 20_000
 
 _COMPARISON = {
     "<": "less",
@@ -45,16 +41,6 @@ _STRENGTH = {
     "or": _OR, "and": _AND, **dict.fromkeys(_COMPARISON, _COMPARE),
     "+": _SUM, "-": _SUM, "*": _PRODUCT, "/": _PRODUCT, "^": _POWER,
 }  # fmt: skip
-
-
-class _Part(NamedTuple):
-    """A node with the text it takes up (parentheses included), its kind and its depth."""
-
-    node: Node
-    start: int
-    end: int
-    condition: bool
-    depth: int
 
 
 def parse(text: str) -> Node:
@@ -99,7 +85,7 @@ def _unknown_name(name: str, known: Collection[str]) -> str:
     return f"{name} is not defined; write one of {shown}"
 
 
-def _read(text: str) -> _Part:
+def _read(text: str) -> Part:
     if len(text) > MAXIMUM_LENGTH:
         raise FormulaError(
             f"the formula has {len(text):,} characters, and the limit is {MAXIMUM_LENGTH:,}; "
@@ -111,28 +97,15 @@ def _read(text: str) -> _Part:
     return _Reader(text).read()
 
 
-class _Reader:
+class _Reader(Builder):
     """Precedence climbing over the tokens of one formula."""
 
     def __init__(self, text: str):
-        self.text = text
+        super().__init__(text)
         self.tokens = tokens(text)
         self.position = 0
         self.nesting = 0  # open parentheses
         self.calls = 0  # levels of this reader's own recursion
-        self.count = 0
-
-    # -- errors and bookkeeping ------------------------------------------------------------------
-
-    def fail(self, message: str, start: int, end: int) -> NoReturn:
-        raise FormulaError(message, self.text, start, end)
-
-    def too_deep(self, token: Token) -> NoReturn:
-        self.fail(
-            f"the formula is nested deeper than {MAXIMUM_NESTING} levels; split it into named steps",
-            token.start,
-            token.end,
-        )
 
     @property
     def token(self) -> Token:
@@ -150,56 +123,9 @@ class _Reader:
         self.position += 1
         return token
 
-    def leaf(self, node: Node, token: Token) -> _Part:
-        self.counted(token.start, token.end)
-        return _Part(node, token.start, token.end, False, 1)
-
-    def counted(self, start: int, end: int) -> None:
-        self.count += 1
-        if self.count > MAXIMUM_NODES:
-            self.fail(
-                f"the formula has more than {MAXIMUM_NODES:,} parts; split it into named steps", start, end
-            )
-
-    def make(self, operator: str, parts: list[_Part], start: int, end: int, condition: bool = False) -> _Part:
-        """The node of an operator, checked for depth, size and a finite value where it is constant."""
-        self.counted(start, end)
-        depth = 1 + max(part.depth for part in parts)
-        if depth > MAXIMUM_NESTING:
-            self.fail(
-                f"the formula is nested deeper than {MAXIMUM_NESTING} levels; split it into named steps",
-                start,
-                end,
-            )
-        node = Apply(operator, tuple(part.node for part in parts), (start, end))
-        if not condition and operator != "if":
-            self.check_constant(node)
-        return _Part(node, start, end, condition, depth)
-
-    def check_constant(self, node: Apply) -> None:
-        # A constant argument was itself checked, so only its value is wanted: `constant_of` is cached by id.
-        if not all(id(argument) in self.constants for argument in node.arguments):
-            if node.operator == "divide" and self.constants.get(id(node.arguments[1])) == 0.0:
-                self.fail(f"{self.quote(node)} divides by zero; the divisor must not be 0", *node.span)
-            return
-        values = [self.constants[id(argument)] for argument in node.arguments]
-        try:
-            value = constant_value(node.operator, values)
-        except NoValue as reason:
-            self.fail(f"{self.quote(node)} {reason}; write a constant with a finite value", *node.span)
-        if value is not None:
-            self.constants[id(node)] = value
-            self.kept.append(node)
-
-    def quote(self, node: Apply) -> str:
-        written = self.text[node.span[0] : node.span[1]]
-        return written if len(written) <= 40 else written[:37] + "..."
-
     # -- grammar ---------------------------------------------------------------------------------
 
-    def read(self) -> _Part:
-        self.constants: dict[int, float] = {}
-        self.kept: list[Node] = []  # keeps the nodes behind the ids of `constants` alive
+    def read(self) -> Part:
         part = self.expression(0)
         token = self.token
         if token.kind != "end":
@@ -241,7 +167,7 @@ class _Reader:
             advice = f"write {name}*(...) for a product, or one of the functions {', '.join(FUNCTIONS)}"
         self.fail(f"{name} is not a function; {advice}", token.start, token.end)
 
-    def expression(self, strength: int) -> _Part:
+    def expression(self, strength: int) -> Part:
         """Operand, then every infix operator that binds at least as tightly as `strength`."""
         self.calls += 1
         if self.calls > 2 * MAXIMUM_NESTING:
@@ -265,30 +191,14 @@ class _Reader:
         self.calls -= 1
         return part
 
-    def number_wanted(self, part: _Part, where: str) -> None:
-        if part.condition:
-            self.fail(
-                f"a condition stands {where}, and a number is wanted; write if(condition, 1, 0) to count it",
-                part.start,
-                part.end,
-            )
-
-    def condition_wanted(self, part: _Part, where: str) -> None:
-        if not part.condition:
-            self.fail(
-                f"a number stands {where}, and a condition is wanted; compare it, as in a > 0",
-                part.start,
-                part.end,
-            )
-
-    def power(self, base: _Part) -> _Part:
+    def power(self, base: Part) -> Part:
         self.number_wanted(base, "under a power")
         self.advance()
         exponent = self.expression(_UNARY)  # right-associative, and a sign may follow
         self.number_wanted(exponent, "in an exponent")
         return self.make("power", [base, exponent], base.start, exponent.end)
 
-    def product(self, first: _Part) -> _Part:
+    def product(self, first: Part) -> Part:
         self.number_wanted(first, "in a product")
         factors = [first]
         while self.operator() in ("*", "/"):
@@ -302,7 +212,7 @@ class _Reader:
                 factors = [self.make("divide", [over, factor], over.start, factor.end)]
         return self.flat("multiply", factors)
 
-    def sum(self, first: _Part) -> _Part:
+    def sum(self, first: Part) -> Part:
         self.number_wanted(first, "in a sum")
         terms = [first]
         while self.operator() in ("+", "-"):
@@ -312,23 +222,7 @@ class _Reader:
             terms.append(term if sign.text == "+" else self.make("negate", [term], sign.start, term.end))
         return self.flat("add", terms)
 
-    def flat(self, operator: str, parts: list[_Part]) -> _Part:
-        """The n-ary node; arguments that are sums in a sum (products in a product) are taken in."""
-        if len(parts) == 1:
-            return parts[0]
-        taken: list[_Part] = []
-        for part in parts:
-            if isinstance(part.node, Apply) and part.node.operator == operator:
-                depth = part.depth - 1
-                taken.extend(
-                    _Part(argument, part.start, part.end, part.condition, depth)
-                    for argument in part.node.arguments
-                )
-            else:
-                taken.append(part)
-        return self.make(operator, taken, parts[0].start, parts[-1].end, operator in ("and", "or"))
-
-    def comparison(self, first: _Part) -> _Part:
+    def comparison(self, first: Part) -> Part:
         sides, operators = [first], []
         while self.operator() in _COMPARISON:
             operators.append(_COMPARISON[self.advance().text])
@@ -341,7 +235,7 @@ class _Reader:
         ]
         return self.flat("and", compared)
 
-    def connective(self, first: _Part, operator: str) -> _Part:
+    def connective(self, first: Part, operator: str) -> Part:
         parts = [first]
         while self.operator() == operator:
             self.advance()
@@ -350,7 +244,7 @@ class _Reader:
             self.condition_wanted(part, f"beside {operator}")
         return self.flat(operator, parts)
 
-    def operand(self) -> _Part:
+    def operand(self) -> Part:
         token = self.advance()
         if token.kind == "number":
             return self.number(token)
@@ -377,7 +271,7 @@ class _Reader:
         behind = f" behind {self.tokens[self.position - 2].text}" if self.position > 1 else ""
         self.fail(f"a number or a name is missing{behind}; found {token.text}", token.start, token.end)
 
-    def number(self, token: Token) -> _Part:
+    def number(self, token: Token) -> Part:
         value = float(token.text)
         if math.isinf(value):
             self.fail(
@@ -393,12 +287,9 @@ class _Reader:
                 token.start,
                 following.end,
             )
-        node = Number(value, token.text, (token.start, token.end))
-        self.constants[id(node)] = value
-        self.kept.append(node)
-        return self.leaf(node, token)
+        return self.constant(value, token.text, token)
 
-    def parenthesised(self, opening: Token) -> _Part:
+    def parenthesised(self, opening: Token) -> Part:
         self.nesting += 1
         if self.nesting > MAXIMUM_NESTING:
             self.too_deep(opening)
@@ -422,7 +313,7 @@ class _Reader:
             self.fail("this ( is never closed; write the ) that belongs to it", opening.start, opening.end)
         self.unexpected(token)
 
-    def word(self, token: Token) -> _Part:
+    def word(self, token: Token) -> Part:
         name = token.text
         called = self.token.text == "("
         if name == "not":
@@ -432,10 +323,7 @@ class _Reader:
         if name in WORDS:
             self.fail(f"a condition is missing before {name}", token.start, token.end)
         if name == "pi" and not called:
-            node: Node = Number(math.pi, "pi", (token.start, token.end))
-            self.constants[id(node)] = math.pi
-            self.kept.append(node)
-            return self.leaf(node, token)
+            return self.constant(math.pi, "pi", token)
         if called:
             if name not in FUNCTIONS:
                 self.not_a_function(token)
@@ -448,12 +336,12 @@ class _Reader:
             )
         return self.leaf(Name(name, (token.start, token.end)), token)
 
-    def call(self, token: Token) -> _Part:
+    def call(self, token: Token) -> Part:
         opening = self.advance()
         self.nesting += 1
         if self.nesting > MAXIMUM_NESTING:
             self.too_deep(opening)
-        parts: list[_Part] = []
+        parts: list[Part] = []
         if self.token.text != ")":
             parts.append(self.expression(0))
             while self.token.text == ",":
@@ -464,7 +352,7 @@ class _Reader:
         self.check_arity(token, parts, closing)
         return self.applied(token, parts, closing)
 
-    def check_arity(self, token: Token, parts: list[_Part], closing: Token) -> None:
+    def check_arity(self, token: Token, parts: list[Part], closing: Token) -> None:
         least, most = OPERATORS[token.text]
         if len(parts) < least or (most is not None and len(parts) > most):
             wanted = f"{least}" if least == most else f"at least {least}"
@@ -476,7 +364,7 @@ class _Reader:
                 closing.end,
             )
 
-    def applied(self, token: Token, parts: list[_Part], closing: Token) -> _Part:
+    def applied(self, token: Token, parts: list[Part], closing: Token) -> Part:
         name = token.text
         if name != "if":
             for part in parts:
