@@ -77,7 +77,11 @@ def _parents_first(inputs: Iterable[Input]) -> list[Input]:
     while waiting:
         known = {described.name for described in ordered}
         open_names = {described.name for described in waiting}
-        ready = [d for d in waiting if not (set(parents(d.distribution)) & open_names - known if d.distribution else ())]
+        ready = [
+            d
+            for d in waiting
+            if not (set(parents(d.distribution)) & open_names - known if d.distribution else ())
+        ]
         if not ready:
             raise DerivationError("the inputs depend on each other in a circle")
         ordered.extend(ready)

@@ -84,10 +84,56 @@ def _generalised_pareto(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
 
 
 def _hoyt(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
-    """Root of the sum of squares of two centred normals with standard deviations in the ratio `ratio`."""
-    q, spread = np.asarray(p["ratio"], float), np.asarray(p["spread"], float)
+    """Root of the sum of squares of two centred normals with standard deviations in the ratio `shape`."""
+    q, spread = np.asarray(p["shape"], float), np.asarray(p["spread"], float)
     major = np.sqrt(spread / (1.0 + q * q))
     return np.asarray(np.hypot(major * g.standard_normal(n), q * major * g.standard_normal(n)))
+
+
+def _gompertz(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
+    """The cumulative hazard shape (exp(x/scale) - 1) at the value is standard exponential."""
+    return np.asarray(p["scale"] * np.log1p(g.standard_exponential(n) / p["shape"]))
+
+
+def _birnbaum_saunders(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
+    """(sqrt(x/scale) - sqrt(scale/x)) / shape is standard normal (Birnbaum and Saunders 1969)."""
+    half = 0.5 * p["shape"] * g.standard_normal(n)
+    # the sum for one sign is the reciprocal of that for the other: no difference of near numbers
+    root = np.abs(half) + np.sqrt(half * half + 1.0)
+    return np.asarray(p["scale"] * np.where(half < 0.0, 1.0 / root, root) ** 2)
+
+
+def _skew_normal(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
+    """delta |U| + sqrt(1 - delta^2) V with independent normals (Henze 1986)."""
+    shape = np.asarray(p["shape"], float)
+    norm = np.sqrt(1.0 + shape * shape)
+    standard = (shape * np.abs(g.standard_normal(n)) + g.standard_normal(n)) / norm
+    return np.asarray(p["location"] + p["scale"] * standard)
+
+
+def _kumaraswamy(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
+    """1 - u^alpha is the power 1/beta of a uniform (Jones 2009)."""
+    power = -np.expm1(-g.standard_exponential(n) / p["beta"])
+    return np.asarray(p["lower"] + (p["upper"] - p["lower"]) * power ** (1.0 / p["alpha"]))
+
+
+def _burr(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
+    """(1 + (x/scale)^c)^(-k) is uniform (Burr 1942, type XII)."""
+    odds = np.expm1(g.standard_exponential(n) / p["outer_shape"])
+    return np.asarray(p["scale"] * odds ** (1.0 / p["inner_shape"]))
+
+
+def _logit_normal(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
+    return np.asarray(1.0 / (1.0 + np.exp(-(p["location"] + p["scale"] * g.standard_normal(n)))))
+
+
+def _log_uniform(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
+    return np.asarray(p["lower"] * np.exp(np.log(p["upper"] / p["lower"]) * g.random(n)))
+
+
+def _power_function(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
+    fraction = np.exp(-g.standard_exponential(n) / p["shape"])
+    return np.asarray(p["lower"] + (p["upper"] - p["lower"]) * fraction)
 
 
 def _categorical(g: Generator, n: int, p: Mapping[str, Any]) -> Array:
@@ -107,7 +153,6 @@ DRAWS: dict[str, Draw] = {
     "beta": lambda g, n, p: p["lower"] + (p["upper"] - p["lower"]) * g.beta(p["alpha"], p["beta"], n),
     "exponential": lambda g, n, p: g.standard_exponential(n) / p["rate"],
     "gamma": lambda g, n, p: p["scale"] * g.standard_gamma(p["shape"], n),
-    "erlang": lambda g, n, p: p["scale"] * g.standard_gamma(p["shape"], n),
     "inverse_gamma": _inverse_gamma,
     "weibull": lambda g, n, p: p["location"] + p["scale"] * g.standard_exponential(n) ** (1.0 / p["shape"]),
     "rayleigh": lambda g, n, p: p["scale"] * np.hypot(g.standard_normal(n), g.standard_normal(n)),
@@ -144,6 +189,18 @@ DRAWS: dict[str, Draw] = {
     "generalised_pareto": _generalised_pareto,
     "inverse_gaussian": lambda g, n, p: g.wald(p["mean"], p["shape"], n),
     "von_mises": lambda g, n, p: g.vonmises(0.0, p["concentration"], n) + p["location"],
+    "power_function": _power_function,
+    "kumaraswamy": _kumaraswamy,
+    "log_uniform": _log_uniform,
+    "half_cauchy": lambda g, n, p: p["scale"] * np.abs(g.standard_cauchy(n)),
+    "gompertz": _gompertz,
+    "folded_normal": lambda g, n, p: np.abs(p["location"] + p["scale"] * g.standard_normal(n)),
+    "levy": lambda g, n, p: p["location"] + p["scale"] / g.standard_normal(n) ** 2,
+    "logit_normal": _logit_normal,
+    "birnbaum_saunders": _birnbaum_saunders,
+    "skew_normal": _skew_normal,
+    "lomax": lambda g, n, p: p["scale"] * np.expm1(g.standard_exponential(n) / p["shape"]),
+    "burr": _burr,
     "bernoulli": lambda g, n, p: (g.random(n) < p["probability"]).astype(float),
     "binomial": lambda g, n, p: g.binomial(np.asarray(p["trials"], int), p["probability"], n).astype(float),
     "poisson": lambda g, n, p: g.poisson(p["mean"], n).astype(float),

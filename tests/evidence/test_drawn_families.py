@@ -12,6 +12,8 @@ from typing import Any
 import numpy as np
 import pytest
 import scipy.stats as st
+from scipy.integrate import cumulative_trapezoid
+from scipy.special import i0e
 
 from outspread.evidence.families import DRAWS
 from outspread.evidence.inverses import INVERSES
@@ -19,6 +21,30 @@ from outspread.laws.registry import FAMILIES
 
 COUNT = 100_000
 Cdf = Callable[[np.ndarray], np.ndarray]
+
+
+class By:
+    """A law known by a formula for its distribution function."""
+
+    def __init__(self, cdf: Cdf):
+        self.cdf = cdf
+
+
+def by_density(x: np.ndarray, density: Cdf, lower: float, upper: float) -> np.ndarray:
+    grid = np.linspace(lower, upper, 200_001)
+    return np.interp(x, grid, cumulative_trapezoid(density(grid), grid, initial=0.0))
+
+
+def curvilinear(x: np.ndarray, a: float = 1.0, b: float = 4.0, d: float = 0.5) -> np.ndarray:
+    half, away = (b - a) / 2, np.abs(x - (a + b) / 2)
+    return np.log((half + d) / np.clip(away, half - d, half + d)) / (4 * d)
+
+
+def hoyt(x: np.ndarray, q: float = 0.4, spread: float = 2.0) -> np.ndarray:
+    bessel = (1 - q**4) * x**2 / (4 * q**2 * spread)
+    exponent = bessel - (1 + q**2) ** 2 * x**2 / (4 * q**2 * spread)
+    return (1 + q**2) * x / (q * spread) * np.exp(exponent) * i0e(bessel)
+
 
 #: family -> (canonical parameters, distribution function by scipy or by its textbook formula)
 KNOWN: dict[str, tuple[Mapping[str, Any], Any]] = {
@@ -62,6 +88,33 @@ KNOWN: dict[str, tuple[Mapping[str, Any], Any]] = {
     "generalised_pareto": ({"shape": -0.2, "location": 1.0, "scale": 2.0}, st.genpareto(-0.2, 1.0, 2.0)),
     "inverse_gaussian": ({"mean": 2.0, "shape": 3.0}, st.invgauss(2.0 / 3.0, scale=3.0)),
     "von_mises": ({"location": 0.0, "concentration": 2.0}, st.vonmises(2.0)),
+    "power_function": ({"shape": 0.4, "lower": 1.0, "upper": 3.0}, st.powerlaw(0.4, 1.0, 2.0)),
+    "log_uniform": ({"lower": 0.01, "upper": 100.0}, st.loguniform(0.01, 100.0)),
+    "half_cauchy": ({"scale": 2.0}, st.halfcauchy(scale=2.0)),
+    "gompertz": ({"shape": 0.7, "scale": 2.0}, st.gompertz(0.7, scale=2.0)),
+    "folded_normal": ({"location": 1.2, "scale": 2.0}, st.foldnorm(0.6, scale=2.0)),
+    "levy": ({"location": 1.0, "scale": 2.0}, st.levy(1.0, 2.0)),
+    "birnbaum_saunders": ({"shape": 0.9, "scale": 2.0}, st.fatiguelife(0.9, scale=2.0)),
+    "skew_normal": ({"location": 1.0, "scale": 2.0, "shape": -3.0}, st.skewnorm(-3.0, 1.0, 2.0)),
+    "lomax": ({"shape": 2.5, "scale": 2.0}, st.lomax(2.5, scale=2.0)),
+    "burr": ({"inner_shape": 2.0, "outer_shape": 0.8, "scale": 3.0}, st.burr12(2.0, 0.8, scale=3.0)),
+    # the logit of the value is normal
+    "logit_normal": (
+        {"location": 0.3, "scale": 0.8},
+        By(lambda x: st.norm.cdf(np.log(x / (1 - x)), 0.3, 0.8)),
+    ),
+    "kumaraswamy": (
+        {"alpha": 2.0, "beta": 3.0, "lower": 0.0, "upper": 2.0},
+        By(lambda x: 1 - (1 - (x / 2) ** 2) ** 3),
+    ),
+    # JCGM 101:2008, 6.4.3.4, equation (5): the density, integrated by the trapezoidal rule
+    "curvilinear_trapezoidal": (
+        {"lower": 1.0, "upper": 4.0, "limit_half_width": 0.5},
+        By(lambda x: by_density(x, curvilinear, 0.5, 4.5)),
+    ),
+    # Hoyt (1947): the density with the Bessel function, integrated by the trapezoidal rule
+    "hoyt": ({"shape": 0.4, "spread": 2.0}, By(lambda x: by_density(x, hoyt, 0.0, 12.0))),
+    "negative_binomial": ({"successes": 2.5, "probability": 0.4}, st.nbinom(2.5, 0.4)),
     "bernoulli": ({"probability": 0.3}, st.bernoulli(0.3)),
     "binomial": ({"trials": 12.0, "probability": 0.3}, st.binom(12, 0.3)),
     "poisson": ({"mean": 3.3}, st.poisson(3.3)),
