@@ -42,7 +42,7 @@ class Binomial(LatticeLaw):
         self.last = trials
 
     def mass(self, k: Array) -> Array:
-        return binomial_mass(k, self.trials, self.probability)
+        return binomial_mass(k, self.trials, self.probability, 1 - self.probability)
 
     def up_to(self, k: Array) -> Array:
         p = np.full_like(k, self.probability)

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from outspread.laws.families.base import Family, Parameters, ParameterSet, positive
+from outspread.laws.families.hazard import LOG_SMALLEST, rounding
 from outspread.laws.families.shapes import INF, Moments, ScaledLaw
 from outspread.laws.functions.incomplete_gamma import (
     gamma_density,
@@ -16,12 +17,17 @@ from outspread.laws.functions.incomplete_gamma import (
 from outspread.laws.law import Array
 
 
+def gamma_error(shape: float) -> float:
+    """Bound on the relative error of the incomplete gamma functions and density of this shape."""
+    return rounding(3 * LOG_SMALLEST + 30 * float(np.sqrt(shape))) + 1e-12
+
+
 class Gamma(ScaledLaw):
-    relative_error = 1e-11
     ends = (0.0, INF)
 
     def __init__(self, shape: float, scale: float):
         self.shape, self.scale = shape, scale
+        self.relative_error = gamma_error(shape)
 
     def standard_pdf(self, z: Array) -> Array:
         return gamma_density(self.shape, z)

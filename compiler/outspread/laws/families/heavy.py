@@ -72,6 +72,37 @@ class StudentT(ScaledLaw):
         )
 
 
+class HalfCauchy(ScaledLaw):
+    """|Cauchy| * scale."""
+
+    relative_error = 1e-14
+    moment_order = 1.0
+    ends = (0.0, INF)
+
+    def __init__(self, scale: float):
+        self.scale = scale
+
+    def standard_pdf(self, z: Array) -> Array:
+        return np.asarray(2 / (np.pi * (1 + z * z)))
+
+    def standard_cdf(self, z: Array) -> Array:
+        return np.asarray(np.arctan(z) * (2 / np.pi))
+
+    def standard_ccdf(self, z: Array) -> Array:
+        return np.asarray(np.arctan2(1.0, z) * (2 / np.pi))
+
+    def standard_icdf(self, p: Array) -> Array:
+        near = np.tan(0.5 * np.pi * np.minimum(p, 0.5))
+        far = 1 / np.tan(0.5 * np.pi * np.minimum(1 - p, 0.5))
+        return np.where(p < 0.5, near, far)
+
+    def standard_iccdf(self, q: Array) -> Array:
+        return 1 / self.standard_icdf(q)
+
+    def standard_moments(self) -> Moments:
+        return (INF, NAN, NAN, NAN)
+
+
 def _cauchy_from_quantiles(p1: float, x1: float, p2: float, x2: float) -> Parameters:
     z1, z2 = Cauchy(0.0, 1.0).icdf([p1, p2])
     scale = (x2 - x1) / (z2 - z1)
@@ -90,6 +121,19 @@ FAMILIES = (
         symbols={"location": r"\mu", "scale": r"\gamma"},
         density_latex=r"\frac{1}{\pi\gamma\left(1+\left(\frac{x-\mu}{\gamma}\right)^2\right)}",
         usage="ratios of centred normal variables, resonance lines; has no mean",
+        reference="Johnson, Kotz and Balakrishnan (1994), Continuous Univariate Distributions 1, ch. 16",
+    ),
+    Family(
+        key="half_cauchy",
+        title="Half-Cauchy distribution",
+        kind="continuous",
+        canonical_names=("scale",),
+        parameter_sets=(ParameterSet(("scale",)),),
+        builder=HalfCauchy,
+        check=lambda parameters: positive(parameters, "scale"),
+        symbols={"scale": r"\gamma"},
+        density_latex=r"\frac{2}{\pi\gamma\left(1+\left(\frac{x}{\gamma}\right)^2\right)}",
+        usage="size of a Cauchy variable, vague positive scales; its mean is infinite",
         reference="Johnson, Kotz and Balakrishnan (1994), Continuous Univariate Distributions 1, ch. 16",
     ),
     Family(

@@ -1,4 +1,4 @@
-"""Binomial and Poisson probabilities by Loader's saddle-point form, which keeps relative accuracy.
+"""Saddle-point form of gamma, beta, Poisson and binomial densities, which keeps relative accuracy.
 
 C. Loader (2000), Fast and accurate computation of binomial probabilities.
 """
@@ -6,65 +6,84 @@ C. Loader (2000), Fast and accurate computation of binomial probabilities.
 from __future__ import annotations
 
 import numpy as np
+import numpy.typing as npt
 
 from outspread.laws.law import Array
 
 LOG_TWO_PI = float(np.log(2 * np.pi))
+#: coefficients of Stirling's series in 1/n³, 1/n⁵, … (DLMF 5.11.1)
+_STIRLING = (1 / 12, -1 / 360, 1 / 1260, -1 / 1680, 1 / 1188, -691 / 360360, 1 / 156)
 
 
-def stirling_error(n: Array) -> Array:
-    """log(n!) - log(sqrt(2 pi n) (n/e)^n), for n >= 0 (n = 0 gives 0 by convention of the callers)."""
-    from scipy import special
+def stirling_error(n: npt.ArrayLike) -> Array:
+    """log Gamma(n + 1) - log(sqrt(2 pi n) (n/e)^n), for n > 0.
 
+    Stirling's series from n = 16 on; below, the recurrence from n to n + 1, term by term small.
+    """
     n = np.asarray(n, float)
-    small = np.minimum(np.maximum(n, 1e-300), 16.0)
-    direct = special.gammaln(small + 1) - (small + 0.5) * np.log(small) + small - 0.5 * LOG_TWO_PI
-    large = np.maximum(n, 15.0)
-    square = 1 / (large * large)
-    coefficients = (1 / 12, -1 / 360, 1 / 1260, -1 / 1680, 1 / 1188, -691 / 360360, 1 / 156)
-    series = np.zeros_like(large)
-    for coefficient in reversed(coefficients):
+    correction = np.zeros(n.shape)
+    shifted = n
+    for _ in range(16):
+        low = shifted < 16
+        if not np.any(low):
+            break
+        step = (shifted + 0.5) * np.log1p(1 / np.maximum(shifted, 1e-300)) - 1
+        correction = correction + np.where(low, step, 0.0)
+        shifted = np.where(low, shifted + 1, shifted)
+    square = 1 / (shifted * shifted)
+    series = np.zeros_like(shifted)
+    for coefficient in reversed(_STIRLING):
         series = series * square + coefficient
-    return np.asarray(np.where(n < 15, direct, series / large))
+    return np.asarray(series / shifted + correction)
 
 
-def deviance(x: Array, mean: Array) -> Array:
+def deviance(x: npt.ArrayLike, mean: npt.ArrayLike) -> Array:
     """x log(x/mean) + mean - x, without cancellation where x is near the mean."""
     x, mean = np.broadcast_arrays(np.asarray(x, float), np.asarray(mean, float))
     total, difference = x + mean, x - mean
     near = np.abs(difference) < 0.1 * total
-    v = np.where(near, difference / total, 0.0)
+    v = np.where(near, difference / np.where(total > 0, total, 1.0), 0.0)
     series = np.zeros_like(v)
     for j in range(12, 0, -1):
         series = (series + 1 / (2 * j + 1)) * v * v
     close = difference * v + 2 * x * v * series
-    ratio = np.where(near | (x <= 0), 1.0, x / np.where(mean > 0, mean, 1.0))
-    return np.asarray(np.where(near, close, x * np.log(ratio) + mean - x))
+    with np.errstate(all="ignore"):
+        # log of a quotient that may overflow, as a difference of logarithms
+        logarithm = np.where(near | (x <= 0), 0.0, np.log(x) - np.log(mean))
+        quotient = np.where(near | (x <= 0), 1.0, x / mean)
+        plain = np.isfinite(quotient) & (quotient > 1e-300)
+        logarithm = np.where(plain, np.log(np.where(plain, quotient, 1.0)), logarithm)
+        return np.asarray(np.where(near, close, x * logarithm + (mean - x)))
+
+
+def gamma_kernel(a: npt.ArrayLike, x: npt.ArrayLike) -> Array:
+    """x^a exp(-x) / Gamma(a + 1) for a > 0."""
+    a = np.asarray(a, float)
+    return np.asarray(np.exp(-stirling_error(a) - deviance(a, x)) / np.sqrt(2 * np.pi * a))
+
+
+def beta_kernel(a: npt.ArrayLike, b: npt.ArrayLike, u: Array, v: Array) -> Array:
+    """u^a v^b / B(a, b), given u and v = 1 - u, for a, b > 0."""
+    a, b = np.asarray(a, float), np.asarray(b, float)
+    n = a + b
+    exponent = stirling_error(n) - stirling_error(a) - stirling_error(b)
+    return np.asarray(
+        np.exp(exponent - deviance(a, n * u) - deviance(b, n * v)) * np.sqrt(a * b / (2 * np.pi * n))
+    )
 
 
 def poisson_mass(k: Array, mean: float) -> Array:
-    k = np.asarray(k, float)
-    safe = np.maximum(k, 1.0)
-    value = np.exp(-stirling_error(safe) - deviance(safe, np.full_like(safe, mean))) / np.sqrt(
-        2 * np.pi * safe
-    )
-    return np.asarray(np.where(k == 0, np.exp(-mean), value))
+    return np.asarray(np.where(k == 0, np.exp(-mean), gamma_kernel(np.maximum(k, 1.0), mean)))
 
 
-def binomial_mass(k: Array, n: float, p: float) -> Array:
-    k = np.asarray(k, float)
-    q = 1 - p
+def binomial_mass(k: Array, n: float, p: float, q: float) -> Array:
+    """Of k successes in n trials of probability p, q = 1 - p."""
     if p == 0 or q == 0:
         return np.asarray(np.where(k == (0 if p == 0 else n), 1.0, 0.0))
     inner = np.clip(k, 1.0, max(n - 1.0, 1.0))
     rest = np.maximum(n - inner, 1.0)
-    exponent = (
-        stirling_error(np.full_like(k, n))
-        - stirling_error(inner)
-        - stirling_error(rest)
-        - deviance(inner, np.full_like(k, n * p))
-        - deviance(rest, np.full_like(k, n * q))
-    )
-    value = np.exp(exponent) * np.sqrt(n / (2 * np.pi * inner * rest))
-    none, every = np.exp(n * np.log1p(-p)), np.exp(n * np.log(p))
-    return np.asarray(np.where(k == 0, none, np.where(k == n, every, value)))
+    kernel = beta_kernel(inner, rest, np.full_like(k, p), np.full_like(k, q))
+    none = np.exp(n * np.log1p(-p)) if p < 0.5 else np.exp(n * np.log(q))
+    every = np.exp(n * np.log(p)) if p < 0.5 else np.exp(n * np.log1p(-q))
+    # C(n, k) p^k q^(n-k) = n / (k (n - k)) p^k q^(n-k) / B(k, n - k)
+    return np.asarray(np.where(k == 0, none, np.where(k == n, every, kernel * n / (inner * rest))))

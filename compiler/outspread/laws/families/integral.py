@@ -1,0 +1,229 @@
+"""Frame for laws that are known by their density: both tails are positive integrals of it, never differences.
+
+The support is cut once into panels on which a 20-point Gauss rule is exact to rounding; the cdf at x is the
+mass of the panels below plus one rule from the last edge to x, the ccdf likewise from above.
+"""
+
+from __future__ import annotations
+
+from functools import cached_property
+
+import numpy as np
+import numpy.typing as npt
+
+from outspread.laws.families.shapes import INF, NAN, Moments, ScaledLaw
+from outspread.laws.law import Array
+from outspread.numerics.roots import bracketed_root
+
+NODES, WEIGHTS = (array.astype(float) for array in np.polynomial.legendre.leggauss(20))
+HALVED_NODES = np.concatenate((0.5 * (NODES - 1), 0.5 * (NODES + 1)))
+HALVED_WEIGHTS = np.concatenate((WEIGHTS, WEIGHTS)) / 2
+#: a panel is accepted where its rule and the same rule on its halves agree to this, relative to its mass
+AGREEMENT = 1e-14
+ROUNDING = 4e-16
+MOST_PANELS = 20_000
+#: masses below this carry no relative accuracy: doubles thin out below 1e-308
+NEGLIGIBLE = 1e-302
+CHUNK = 20_000
+
+
+class Panels:
+    """Edges ascending; `below` and `above` are the masses on either side of each edge, `error` their
+    accumulated relative error."""
+
+    def __init__(self, edges: Array, masses: Array, differences: Array, ends: tuple[float, float]):
+        self.edges, self.masses = edges, masses
+        self.below = np.concatenate(([ends[0]], ends[0] + np.cumsum(masses)))
+        self.above = np.concatenate(((ends[1] + np.cumsum(masses[::-1]))[::-1], [ends[1]]))
+        self.total = float(self.below[-1] + ends[1])
+        left, right = np.cumsum(differences), np.cumsum(differences[::-1])[::-1]
+        with np.errstate(all="ignore"):
+            ratios = np.concatenate((left / self.below[1:], right / self.above[:-1]))
+        considered = np.concatenate((self.below[1:], self.above[:-1])) > 1e-290
+        self.error = float(np.max(ratios[considered], initial=0.0))
+
+
+class IntegralLaw(ScaledLaw):
+    """A law with the density `standard_pdf` of z on `ends`; `centre` and `spread` say where its mass lies,
+    `corners` where the density has a kink or a jump. Panels are made at the first use."""
+
+    centre: float = 0.0
+    spread: float = 1.0
+    corners: tuple[float, ...] = ()
+
+    def breaks(self) -> tuple[float, ...]:
+        return tuple(self.location + self.scale * corner for corner in self.corners)
+
+    def _density(self, z: Array) -> Array:
+        with np.errstate(all="ignore"):
+            return np.asarray(self.standard_pdf(z.ravel()).reshape(z.shape))
+
+    @cached_property
+    def panels(self) -> Panels:
+        edges = self._first_edges()
+        low, high = edges[:-1], edges[1:]
+        done: list[tuple[Array, Array, Array, Array]] = []
+        count = 0
+        for round_ in range(400):
+            whole = self._rule(low, high)
+            halves = self._rule(low, high, halved=True)
+            difference = np.abs(whole - halves)
+            middle = self._split(low, high)
+            # the exponent of a small density is itself rounded, so that its values scatter
+            scatter = ROUNDING * np.maximum(-np.log(np.maximum(halves, NEGLIGIBLE)), 0.0)
+            accepted = (difference <= (AGREEMENT + scatter) * halves) | (halves < NEGLIGIBLE)
+            accepted |= (middle <= low) | (middle >= high)
+            # inside, 40 halvings reach the rounding of x; ends may need many more
+            at_end = (low == edges[0]) | (high == edges[-1])
+            accepted |= ~at_end & (round_ >= 45)
+            count += int(np.sum(accepted))
+            if count + low.size > MOST_PANELS or round_ == 399:
+                accepted[:] = True
+            done.append((low[accepted], high[accepted], halves[accepted], difference[accepted]))
+            low, middle, high = low[~accepted], middle[~accepted], high[~accepted]
+            if not low.size:
+                break
+            low, high = np.concatenate((low, middle)), np.concatenate((middle, high))
+        lows, highs, masses, differences = (np.concatenate(parts) for parts in zip(*done, strict=True))
+        order = np.argsort(lows)
+        return Panels(
+            np.append(lows[order], highs[order[-1]]),
+            masses[order],
+            differences[order],
+            (self._remainder(edges[0], -1), self._remainder(edges[-1], 1)),
+        )
+
+    def _split(self, low: Array, high: Array) -> Array:
+        """The middle, but an end of the support is approached by factors of 16."""
+        middle = low + 0.5 * (high - low)
+        middle = np.where(low == self.ends[0], low + (high - low) / 16, middle)
+        return np.asarray(np.where(high == self.ends[1], high - (high - low) / 16, middle))
+
+    def _rule(self, low: Array, high: Array, halved: bool = False) -> Array:
+        nodes, weights = (HALVED_NODES, HALVED_WEIGHTS) if halved else (NODES, WEIGHTS)
+        result = np.empty(low.shape)
+        for start in range(0, low.size, CHUNK):
+            part = slice(start, start + CHUNK)
+            half = 0.5 * (high[part] - low[part])
+            # measured from the nearer end, so that points next to a finite end stay exact
+            z = (low[part] + half)[:, None] + half[:, None] * nodes
+            result[part] = half * (self._density(z) @ weights)
+        return result
+
+    def _first_edges(self) -> Array:
+        """Edges from the centre outwards: even steps, then growing ones, until the density vanishes."""
+        lower, upper = self.ends
+        steps = np.concatenate((np.arange(0.0, 41.0), 40 * 1.5 ** np.arange(1.0, 1700.0)))
+        steps = steps[steps < 1e300 / self.spread]
+        edges = [self.centre]
+        for sign, end in ((-1.0, lower), (1.0, upper)):
+            points = self.centre + sign * self.spread * steps
+            if np.isfinite(end):
+                points = np.append(points[(points > lower) & (points < upper)], end)
+            else:
+                points = points[np.isfinite(points)]
+                # the density may vanish between two of its parts: what is 0 to the very end is left out
+                present = np.flatnonzero(self._density(points) * np.abs(points) > NEGLIGIBLE)
+                points = points[: present[-1] + 2] if present.size else points[:2]
+            edges.extend(points)
+        return np.unique(np.concatenate((edges, self.corners)))
+
+    def _remainder(self, edge: float, side: int) -> float:
+        """Mass beyond the outermost edge: 0 at an end of the support, else that of the fitted power law."""
+        if edge in self.ends:
+            return 0.0
+        inner, outer = self._density(np.array([edge / 2, edge]))
+        if not (outer * abs(edge) > NEGLIGIBLE and inner > outer):
+            return 0.0
+        exponent = np.log2(inner / outer)
+        return float(abs(edge) * outer / (exponent - 1)) if exponent > 1 else 0.0
+
+    def _panel_of(self, z: Array) -> npt.NDArray[np.int64]:
+        panels = self.panels
+        index = np.searchsorted(panels.edges, z, side="right") - 1
+        return np.clip(index, 0, panels.masses.size - 1)
+
+    def _tail(self, z: Array, upper: bool) -> Array:
+        """P(Z > z) or P(Z <= z): summed from its own side, or as the rest where that is the shorter way."""
+        panels = self.panels
+        z = np.clip(z, panels.edges[0], panels.edges[-1])
+        index = self._panel_of(z)
+        from_above = (panels.above[index + 1] < 0.5) if upper else (panels.below[index] >= 0.5)
+        start = np.where(from_above, z, panels.edges[index])
+        end = np.where(from_above, panels.edges[index + 1], z)
+        mass = np.where(from_above, panels.above[index + 1], panels.below[index]) + self._rule(start, end)
+        return np.asarray(np.where(from_above == upper, mass, 1 - mass))
+
+    def standard_cdf(self, z: Array) -> Array:
+        return self._tail(z, False)
+
+    def standard_ccdf(self, z: Array) -> Array:
+        return self._tail(z, True)
+
+    def standard_icdf(self, p: Array) -> Array:
+        return np.where(p <= 0.5, self._invert(p, False), self._invert(1 - p, True))
+
+    def standard_iccdf(self, q: Array) -> Array:
+        return np.where(q <= 0.5, self._invert(q, True), self._invert(1 - q, False))
+
+    def _invert(self, tail: Array, upper: bool) -> Array:
+        """z whose upper (or lower) tail is `tail` <= 1/2; others give some number."""
+        panels = self.panels
+        goal = np.clip(tail, 5e-324, 0.5)
+        if upper:
+            index = panels.edges.size - 1 - np.searchsorted(panels.above[::-1], goal, side="right")
+        else:
+            index = np.searchsorted(panels.below, goal, side="right") - 1
+        index = np.clip(index, 0, panels.masses.size - 1)
+        function = self.standard_ccdf if upper else self.standard_cdf
+
+        def excess(z: Array, which: npt.NDArray[np.int64]) -> Array:
+            with np.errstate(all="ignore"):
+                value = np.log(np.maximum(function(z), 5e-324)) - np.log(goal[which])
+            return np.asarray(-value if upper else value)
+
+        low, high = panels.edges[index], panels.edges[index + 1]
+        everything = np.arange(goal.size)
+        at_low, at_high = np.minimum(excess(low, everything), 0.0), np.maximum(excess(high, everything), 0.0)
+        root, _ = bracketed_root(excess, low, high, at_low, at_high)
+        return np.asarray(np.where(np.isnan(root), np.where(at_low == 0, low, high), root))
+
+    def between(self, lower: npt.ArrayLike, upper: npt.ArrayLike) -> Array:
+        low, high = np.broadcast_arrays(self._standardise(lower), self._standardise(upper))
+        shape = low.shape
+        a = np.clip(low, self.panels.edges[0], self.panels.edges[-1]).ravel()
+        b = np.clip(high, self.panels.edges[0], self.panels.edges[-1]).ravel()
+        i, j = self._panel_of(a), self._panel_of(b)
+        one = self._rule(a, np.maximum(b, a))
+        many = self._rule(a, self.panels.edges[i + 1]) + self._rule(self.panels.edges[j], b)
+        middle = np.where(
+            self.panels.below[j] < 0.5,
+            self.panels.below[j] - self.panels.below[np.minimum(i + 1, j)],
+            self.panels.above[np.minimum(i + 1, j)] - self.panels.above[j],
+        )
+        value = np.where(i == j, one, many + np.maximum(middle, 0.0))
+        return np.asarray(np.where((b > a), value, 0.0).reshape(shape))
+
+    def standard_moments(self) -> Moments:
+        return self._moments
+
+    @cached_property
+    def _moments(self) -> Moments:
+        if not self.moment_exists(1):
+            one_sided = np.isfinite(self.ends[0]) or np.isfinite(self.ends[1])
+            return (INF if one_sided else NAN, NAN, NAN, NAN)
+        mean = self.centre + self._central(self.centre, 1)
+        variance = self._central(mean, 2) if self.moment_exists(2) else INF
+        known = np.isfinite(variance)
+        third = self._central(mean, 3) / variance**1.5 if known and self.moment_exists(3) else NAN
+        fourth = self._central(mean, 4) / variance**2 if known and self.moment_exists(4) else NAN
+        return (mean, variance, third, fourth)
+
+    def _central(self, about: float, order: int) -> float:
+        edges = self.panels.edges
+        half = 0.5 * (edges[1:] - edges[:-1])
+        z = (edges[:-1] + half)[:, None] + half[:, None] * NODES
+        with np.errstate(all="ignore"):
+            values = np.nan_to_num(self._density(z) * (z - about) ** order, posinf=0.0, neginf=0.0)
+        return float(np.sum(half * (values @ WEIGHTS)))
+
