@@ -13,7 +13,7 @@ from graphlib import CycleError, TopologicalSorter
 from pathlib import Path as FilePath
 
 from outspread.errors import Fault, ModelError, Place
-from outspread.formula.parser import FUNCTIONS, RESERVED
+from outspread.formula.tokens import FUNCTIONS, RESERVED
 from outspread.formula.tree import names
 from outspread.reading.context import Context
 from outspread.reading.dependence import build_dependence, joint_inputs
@@ -83,7 +83,7 @@ def build_model(document: Document, folder: FilePath) -> Model:
     requirements = build_requirements(context, written_outputs)
     readings = build_readings(context, written_outputs)
     accuracy = build_accuracy(context)
-    if len(outputs) == len(written_outputs):
+    if len(outputs) == len(written_outputs) and all(names(output.expression) for output in outputs):
         _check_used(context, inputs, conditional, outputs)
     if context.faults:
         raise ModelError(context.faults)

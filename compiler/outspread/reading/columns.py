@@ -119,7 +119,7 @@ class _Table:
             if name not in header:
                 hint = suggestion(name, header, "its columns")
                 if len(header) == 1 and ";" in header[0]:
-                    hint = "its cells are separated by semicolons; separate them by commas"
+                    hint = "its cells are separated by semicolons, and commas are needed"
                 self.context.fault(
                     asked, f"the file {quoted(self.context.text(path))} has no column {quoted(name)}; {hint}"
                 )

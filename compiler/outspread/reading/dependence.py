@@ -154,12 +154,12 @@ def _matrix(context: Context, path: Path, written: Any, count: int, family: str)
         value = float(written)
         return tuple(tuple(1.0 if i == j else value for j in range(count)) for i in range(count))
     if len(written) != count or any(len(row) != count for row in written):
-        widths = sorted({len(row) for row in written})
-        found = f"{len(written)} rows of {' or '.join(map(str, widths))} numbers"
-        context.fault(
-            path,
-            f"{name} has {found}; write {count} rows of {count} numbers, in the order of `inputs`",
+        widths = " or ".join(str(width) for width in sorted({len(row) for row in written}))
+        message = (
+            f"{name} is a {len(written)}×{widths} matrix; "
+            f"write a {count}×{count} matrix in the order of `inputs`"
         )
+        context.fault(path, message)
         return None
     matrix = tuple(tuple(float(entry) for entry in row) for row in written)
     before = len(context.faults)

@@ -196,7 +196,7 @@ def _mixture(context: Context, path: Path, unit: str, own: str) -> Distribution 
     count = len(context.get((*path, "distributions")))
     before = len(context.faults)
     if len(weights) != count:
-        message = f"there are {len(weights)} weights for {count} distributions; give one weight for each"
+        message = f"{count} distributions need {count} weights; given: {len(weights)}"
         context.key_fault((*path, "weights"), message)
     for index, weight in enumerate(weights):
         if not weight > 0:
@@ -238,7 +238,7 @@ def _density(context: Context, path: Path, unit: str) -> Distribution | None:
         return None
     # The density is a formula between numbers: x is the number of the quantity in its unit.
     node = context.parsed(
-        formula, ["x", *context.constants], "the names that it may use are `x` and constants"
+        formula, ["x", *context.constants], "a density may use"
     )
     if node is None:
         return None

@@ -23,7 +23,9 @@ PARAMETERS: dict[str, tuple[str, str]] = {
     "denominator_degrees_of_freedom": (PLAIN, "Degrees of freedom of the denominator, above 0."),
     "draws": (PLAIN, "Number of draws without replacement."),
     "failures": (PLAIN, "Number of failures."),
+    "first_sd": (DIFFERENCE, "Standard deviation of the first component, above 0."),
     "half_width": (DIFFERENCE, "Half the width of the interval, above 0."),
+    "inner_shape": (PLAIN, "Exponent of the quantity over the scale, above 0."),
     "limit_half_width": (DIFFERENCE, "Half the width over which each limit is itself uncertain."),
     "location": (POSITION, "Location: shifts the distribution."),
     "log_mean": (PLAIN, "Mean of the natural logarithm of the quantity's number in its unit."),
@@ -34,6 +36,7 @@ PARAMETERS: dict[str, tuple[str, str]] = {
     "noncentrality": (PLAIN, "Noncentrality, 0 or more."),
     "numerator_degrees_of_freedom": (PLAIN, "Degrees of freedom of the numerator, above 0."),
     "offset": (DIFFERENCE, "Distance of the centre from the origin, 0 or more."),
+    "outer_shape": (PLAIN, "Exponent of the whole tail, above 0."),
     "population": (PLAIN, "Size of the population."),
     "probabilities": (PLAIN, "Probabilities of the values, in their order; they add up to 1."),
     "probability": (PLAIN, "Probability, from 0 to 1."),
@@ -41,10 +44,12 @@ PARAMETERS: dict[str, tuple[str, str]] = {
     "rate": (RECIPROCAL, "Rate, above 0; the reciprocal of the scale."),
     "scale": (DIFFERENCE, "Scale, above 0."),
     "sd": (DIFFERENCE, "Standard deviation, above 0."),
+    "second_sd": (DIFFERENCE, "Standard deviation of the second component, above 0."),
     "shape": (PLAIN, "Shape parameter."),
     "spread": (SQUARE, "Mean of the square, above 0."),
     "successes": (PLAIN, "Number of successes."),
     "top_lower": (POSITION, "Lower end of the level top."),
+    "top_ratio": (PLAIN, "Width of the level top over the width of the base, from 0 to 1."),
     "top_upper": (POSITION, "Upper end of the level top."),
     "trials": (PLAIN, "Number of trials, a whole number."),
     "upper": (POSITION, "Upper limit."),
@@ -52,7 +57,11 @@ PARAMETERS: dict[str, tuple[str, str]] = {
 }
 
 #: (family, parameter) whose unit differs from that of the parameter's name
-EXCEPTIONS: dict[tuple[str, str], str] = {}
+EXCEPTIONS: dict[tuple[str, str], str] = {
+    ("inverse_gaussian", "shape"): DIFFERENCE,
+    ("logit_normal", "location"): PLAIN,
+    ("logit_normal", "scale"): PLAIN,
+}
 
 #: families whose parameters are not plain numbers, and whose part of the schema is written by hand
 STRUCTURED = ("mixture", "density", "table", "histogram", "sample")
@@ -78,7 +87,7 @@ def _definition(family: Any) -> dict[str, Any]:
     shown = " or ".join(str(candidate) for candidate in sets)
     definition: dict[str, Any] = {
         "title": f"the parameters {shown}",
-        "description": f"{family.title}. {family.usage}",
+        "description": f"{family.title[:1].upper()}{family.title[1:]}: {family.usage}.",
         "type": "object",
         "properties": {name: _parameter(name, sets) for name in used},
         "additionalProperties": False,

@@ -10,7 +10,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from graphlib import CycleError, TopologicalSorter
 
-from outspread.formula.parser import MAXIMUM_NODES
+from outspread.formula.builder import MAXIMUM_NODES
 from outspread.formula.tree import Apply, Name, Node, names, substitute
 from outspread.reading.context import Context
 from outspread.reading.document import Path

@@ -19,6 +19,8 @@ from outspread.reading.words import quoted
 LARGEST_FILE = 1 << 20  # bytes
 MOST_FAULTS = 100  # after so many the rest of the text is not read
 
+_TOO_DEEP = f"values are nested more than {DEEPEST} levels deep here; no model needs that"
+
 #: what the parser says (a part of it) -> what an engineer needs to hear
 _PARSER_WORDS: dict[str, str] = {
     "mapping values are not allowed": (
@@ -39,6 +41,7 @@ _PARSER_WORDS: dict[str, str] = {
     ),
     "found character that cannot start any token": "this character cannot start a value; quote the text",
     "did not find expected node content": "a value is missing here",
+    "exceeded maximum nesting depth": _TOO_DEEP,
     "block sequence entries are not allowed": (
         "a list cannot start on this line; put `-` on a new line under the key"
     ),
@@ -151,10 +154,7 @@ class _Collector:
                 self.stack.pop()
                 self.pending.pop()
             if len(self.stack) > DEEPEST:
-                self.refuse(
-                    _start(event),
-                    f"values are nested more than {DEEPEST} levels deep here; no model needs that",
-                )
+                self.refuse(_start(event), _TOO_DEEP)
                 return
             if len(self.faults) >= MOST_FAULTS:
                 return

@@ -1,0 +1,139 @@
+"""However a right model is damaged, reading gives a model or a list of faults with places, never anything else."""
+
+from __future__ import annotations
+
+import copy
+from pathlib import Path
+from typing import Any
+
+import yaml
+from fault_cases import BASE, FOLDER
+from hypothesis import HealthCheck, given, settings
+from hypothesis import strategies as st
+
+from outspread.errors import ModelError
+from outspread.reading.build import build_model, read_mapping
+from outspread.reading.model import Model
+from outspread.reading.starting import starting_model
+from outspread.reading.yaml_reader import read_yaml
+
+RICH = BASE + """\
+dependence:
+  - inputs: [bore, shaft]
+    copula: {gaussian: {pearson: 0.3}}
+constants: {play: {value: 1e-3, unit: mm}, share: 2}
+accuracy: {digits: 8, seed: 1, time_limit: 60 s}
+record: {number: SK-1}
+cautions: [Calm water only.]
+"""
+TEXTS = [RICH, starting_model("spring")]
+PIECES = [
+    "{", "}", "[", "]", ":", ": ", ",", "-", "- ", "\n", "\n  ", "\t", "'", '"', "#", "&a ", "*a", "!t ", "|", ">", "?",
+    "%", "@", "~", "null", "true", "1e999", "-1", "0", "1e-3", "012", ".nan", "mm", "kg", "bore", "and", "if(", ")",
+    "^", "**", "/0", "é", "\u2028", "\ufeff", "\x00", "\x85", "---\n", "...\n", "<<", "normal", "gamma", "mean", "=",
+]  # fmt: skip
+
+CALM = settings(deadline=None, max_examples=60, suppress_health_check=[HealthCheck.too_slow])
+
+
+def read(source: bytes) -> Model | ModelError:
+    """The model or its faults; every fault has a place and words. Other exceptions pass through and fail."""
+    try:
+        return build_model(read_yaml("m.yaml", source), FOLDER)
+    except ModelError as error:
+        assert error.faults
+        for fault in error.faults:
+            assert fault.message.strip()
+            assert fault.place.file
+            assert fault.place.line >= 0
+        return error
+
+
+@CALM
+@given(data=st.data())
+def test_text_with_pieces_put_in_and_cut_out(data: st.DataObject) -> None:
+    text = data.draw(st.sampled_from(TEXTS))
+    for _ in range(data.draw(st.integers(1, 4))):
+        start = data.draw(st.integers(0, len(text)))
+        end = min(len(text), start + data.draw(st.sampled_from([0, 0, 1, 2, 5, 20, 100])))
+        piece = data.draw(st.sampled_from(PIECES) | st.text(max_size=3))
+        text = text[:start] + piece + text[end:]
+    read(text.encode("utf-8", "surrogatepass"))
+
+
+@CALM
+@given(data=st.data())
+def test_bytes_that_are_changed(data: st.DataObject) -> None:
+    source = bytearray(data.draw(st.sampled_from(TEXTS)).encode())
+    for _ in range(data.draw(st.integers(1, 5))):
+        source[data.draw(st.integers(0, len(source) - 1))] = data.draw(st.integers(0, 255))
+    read(bytes(source))
+
+
+@CALM
+@given(source=st.binary(max_size=200) | st.text(max_size=200).map(lambda text: text.encode("utf-8", "replace")))
+def test_any_bytes(source: bytes) -> None:
+    assert isinstance(read(source), ModelError)
+
+
+VALUES: st.SearchStrategy[Any] = st.recursive(
+    st.none() | st.booleans() | st.integers() | st.floats() | st.text(max_size=5) | st.sampled_from(PIECES),
+    lambda inner: st.lists(inner, max_size=3) | st.dictionaries(st.sampled_from(PIECES), inner, max_size=3),
+    max_leaves=4,
+)
+
+
+def places(value: Any) -> list[tuple[Any, Any]]:
+    """Every container with each key or index in it."""
+    found: list[tuple[Any, Any]] = []
+    if isinstance(value, dict | list):
+        for key in list(value) if isinstance(value, dict) else range(len(value)):
+            found.append((value, key))
+            found.extend(places(value[key]))
+    return found
+
+
+@CALM
+@given(data=st.data())
+def test_mapping_with_values_and_keys_replaced(data: st.DataObject) -> None:
+    model = copy.deepcopy(data.draw(st.sampled_from([yaml.safe_load(text) for text in TEXTS])))
+    for _ in range(data.draw(st.integers(1, 3))):
+        container, key = data.draw(st.sampled_from(places(model)))
+        if key not in container and isinstance(container, dict):
+            continue
+        if isinstance(container, list) and key >= len(container):
+            continue
+        action = data.draw(st.sampled_from(["replace", "remove", "rename"]))
+        if action == "replace":
+            container[key] = data.draw(VALUES)
+        elif action == "remove" or isinstance(container, list):
+            del container[key]
+        else:
+            container[data.draw(st.sampled_from(PIECES))] = container.pop(key)
+        if not places(model):
+            break
+    try:
+        read_mapping(model)
+    except ModelError as error:
+        assert error.faults  # noqa: PT017  (either outcome is right; no other exception is)
+
+
+def test_a_mapping_that_contains_itself() -> None:
+    loop: dict[str, Any] = {}
+    loop["a"] = loop
+    try:
+        read_mapping(loop)
+    except ModelError as error:
+        message = str(error)
+    assert "nested more than 40 levels deep" in message
+
+
+def test_files_in_the_way_of_a_folder(tmp_path: Path) -> None:
+    """A CSV name that leads through a file is no crash."""
+    (tmp_path / "a.csv").write_text("x\n1\n")
+    text = RICH.replace("{normal: {mean: 42, sd: 0.005}}", "{sample: {file: a.csv/b.csv, column: x}}")
+    try:
+        build_model(read_yaml("m.yaml", text.encode()), tmp_path)
+    except ModelError as error:
+        message = str(error)
+    assert "there is no file `a.csv/b.csv` beside the model" in message
