@@ -22,6 +22,8 @@ HALVED_WEIGHTS = np.concatenate((WEIGHTS, WEIGHTS)) / 2
 AGREEMENT = 1e-14
 ROUNDING = 4e-16
 MOST_PANELS = 20_000
+#: a panel at a singular point other than 0 is not cut below this share of the point: x - point is rounded
+END_SHARE = 1e-8
 #: masses below this carry no relative accuracy: doubles thin out below 1e-308
 NEGLIGIBLE = 1e-302
 CHUNK = 20_000
@@ -62,52 +64,83 @@ class IntegralLaw(ScaledLaw):
     def panels(self) -> Panels:
         edges = self._first_edges()
         low, high = edges[:-1], edges[1:]
+        depth = np.zeros(low.size)
         done: list[tuple[Array, Array, Array, Array]] = []
         count = 0
         for round_ in range(400):
             whole = self._rule(low, high)
             halves = self._rule(low, high, halved=True)
-            difference = np.abs(whole - halves)
-            middle = self._split(low, high)
+            middle, near_end, exhausted = self._split(low, high)
             # the exponent of a small density is itself rounded, so that its values scatter
             scatter = ROUNDING * np.maximum(-np.log(np.maximum(halves, NEGLIGIBLE)), 0.0)
-            accepted = (difference <= (AGREEMENT + scatter) * halves) | (halves < NEGLIGIBLE)
-            accepted |= (middle <= low) | (middle >= high)
-            # inside, 40 halvings reach the rounding of x; ends may need many more
-            at_end = (low == edges[0]) | (high == edges[-1])
-            accepted |= ~at_end & (round_ >= 45)
+            with np.errstate(invalid="ignore"):
+                difference = np.abs(whole - halves)
+                accepted = (difference <= (AGREEMENT + scatter) * halves) | (halves < NEGLIGIBLE)
+            for index in np.flatnonzero(~accepted & exhausted):
+                halves[index], difference[index] = self._next_to_end(low[index], high[index])
+            accepted |= exhausted | (middle <= low) | (middle >= high)
+            # inside, 45 halvings reach the rounding of x; ends may need many more
+            accepted |= ~near_end & (depth >= 45)
             count += int(np.sum(accepted))
             if count + low.size > MOST_PANELS or round_ == 399:
                 accepted[:] = True
             done.append((low[accepted], high[accepted], halves[accepted], difference[accepted]))
-            low, middle, high = low[~accepted], middle[~accepted], high[~accepted]
-            if not low.size:
+            rest = ~accepted
+            if not np.any(rest):
                 break
-            low, high = np.concatenate((low, middle)), np.concatenate((middle, high))
+            depth = np.tile(np.where(near_end, 0.0, depth + 1)[rest], 2)
+            low, high = (
+                np.concatenate((low[rest], middle[rest])),
+                np.concatenate((middle[rest], high[rest])),
+            )
         lows, highs, masses, differences = (np.concatenate(parts) for parts in zip(*done, strict=True))
         order = np.argsort(lows)
         return Panels(
             np.append(lows[order], highs[order[-1]]),
             masses[order],
             differences[order],
-            (self._remainder(edges[0], -1), self._remainder(edges[-1], 1)),
+            (self._remainder(edges[0]), self._remainder(edges[-1])),
         )
 
-    def _split(self, low: Array, high: Array) -> Array:
-        """The middle, but an end of the support is approached by factors of 16."""
-        middle = low + 0.5 * (high - low)
-        middle = np.where(low == self.ends[0], low + (high - low) / 16, middle)
-        return np.asarray(np.where(high == self.ends[1], high - (high - low) / 16, middle))
+    def _split(self, low: Array, high: Array) -> tuple[Array, Array, Array]:
+        """Where to cut: in the middle, but by factors of 16 towards an end of the support or a corner.
+
+        Also whether the panel touches such a point, and whether it is too short to be cut further.
+        """
+        special = np.array([*self.ends, *self.corners])
+        at_low, at_high = np.isin(low, special), np.isin(high, special)
+        width = high - low
+        middle = low + 0.5 * width
+        middle = np.where(at_high & ~at_low, high - width / 16, middle)
+        middle = np.where(at_low & ~at_high, low + width / 16, middle)
+        with np.errstate(invalid="ignore"):
+            shortest = 1e-290 + END_SHARE * np.maximum(np.where(at_low, np.abs(low), 0.0),
+                                                       np.where(at_high, np.abs(high), 0.0))  # fmt: skip
+        return middle, at_low | at_high, (at_low ^ at_high) & (width <= shortest)
+
+    def _next_to_end(self, low: float, high: float) -> tuple[float, float]:
+        """Mass of a short panel at a singular point by the power law fitted there, and its error."""
+        special = (*self.ends, *self.corners)
+        width = high - low
+        point, sign = (low, 1) if low in special else (high, -1)
+        far, near = self._density(np.array([point + sign * width, point + 0.5 * sign * width]))
+        if not (far > 0 and near > 0 and np.isfinite(near)):
+            return 0.0, 0.0
+        exponent = 1 + float(np.log2(far / near))
+        if exponent <= 0:
+            return INF, INF
+        mass = float(width * far / exponent)
+        return mass, mass * (END_SHARE if point else 1e-15)
 
     def _rule(self, low: Array, high: Array, halved: bool = False) -> Array:
         nodes, weights = (HALVED_NODES, HALVED_WEIGHTS) if halved else (NODES, WEIGHTS)
         result = np.empty(low.shape)
-        for start in range(0, low.size, CHUNK):
-            part = slice(start, start + CHUNK)
-            half = 0.5 * (high[part] - low[part])
-            # measured from the nearer end, so that points next to a finite end stay exact
-            z = (low[part] + half)[:, None] + half[:, None] * nodes
-            result[part] = half * (self._density(z) @ weights)
+        with np.errstate(invalid="ignore"):
+            for start in range(0, low.size, CHUNK):
+                part = slice(start, start + CHUNK)
+                half = 0.5 * (high[part] - low[part])
+                z = (low[part] + half)[:, None] + half[:, None] * nodes
+                result[part] = half * (self._density(z) @ weights)
         return result
 
     def _first_edges(self) -> Array:
@@ -128,7 +161,7 @@ class IntegralLaw(ScaledLaw):
             edges.extend(points)
         return np.unique(np.concatenate((edges, self.corners)))
 
-    def _remainder(self, edge: float, side: int) -> float:
+    def _remainder(self, edge: float) -> float:
         """Mass beyond the outermost edge: 0 at an end of the support, else that of the fitted power law."""
         if edge in self.ends:
             return 0.0
