@@ -1,4 +1,4 @@
-"""As many outputs as inputs: every branch of the inverse, the Jacobian, and the joint density at any point."""
+"""As many outputs as inputs: every branch of the inverse, the Jacobian, the joint density at any point."""
 
 from outspread.routes.jacobian.branches import solve_for
 from outspread.routes.jacobian.checks import NotPossible

@@ -28,7 +28,7 @@ def affine_map(outputs: Sequence[Node], inputs: Sequence[str]) -> AffineMap | No
     """The map if every output is affine in the inputs and the matrix is regular; else None."""
     rows = [_affine_form(output) for output in outputs]
     forms = [row for row in rows if row is not None]
-    if len(forms) < len(rows):
+    if len(forms) < len(rows) or any(name not in inputs for form in forms for name in form[0]):
         return None
     matrix = [[form[0].get(name, Fraction(0)) for name in inputs] for form in forms]
     inverse = exact_inverse(matrix)

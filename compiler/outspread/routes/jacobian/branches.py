@@ -2,7 +2,7 @@
 
 `solve_for` is meant for any derivation that writes an inverse out. Each branch carries the conditions
 under which it is a solution and the integer parameters of periodic functions. Systems of equations are
-left to `elimination`, and the choice of branch at a point to `evaluation`.
+left to `elimination`, and the choice of branch at a point to `smooth`.
 """
 
 from __future__ import annotations
@@ -135,8 +135,8 @@ def _real(value: Node, *conditions: Node) -> list[Undone]:
     return [(value, conditions, 0.0)]
 
 
-def _at_least(left: Node, right: float) -> Node:
-    return Apply("greater_equal", (left, number(right)))
+def _at_least(left: Node, right: float | Node) -> Node:
+    return Apply("greater_equal", (left, number(right) if isinstance(right, float) else right))
 
 
 def _at_most(left: Node, right: float | Node) -> Node:
@@ -147,9 +147,13 @@ def _positive(node: Node) -> Node:
     return Apply("greater", (node, ZERO))
 
 
+def _within_right_angles(node: Node) -> tuple[Node, Node]:
+    right = divide(PI, number(2.0))
+    return _at_least(node, negate(right)), _at_most(node, right)
+
+
 def _both_signs(value: Node, *conditions: Node) -> list[Undone]:
     return [(value, conditions, 0.0), (negate(value), conditions, 0.0)]
-
 
 
 def _undo_sine(target: Node) -> list[Undone]:
@@ -194,9 +198,9 @@ _UNARY: dict[str, Callable[[Node], list[Undone]]] = {
     "sin": _undo_sine,
     "cos": _undo_cosine,
     "tan": lambda t: [(add(Apply("atan", (t,)), multiply(Name("k"), PI)), (), math.pi)],
-    "asin": lambda t: _real(apply("sin", t), _at_least(t, -math.pi / 2), _at_most(t, math.pi / 2)),
-    "acos": lambda t: _real(apply("cos", t), _at_least(t, 0.0), _at_most(t, math.pi)),
-    "atan": lambda t: _real(apply("tan", t), _at_least(t, -math.pi / 2), _at_most(t, math.pi / 2)),
+    "asin": lambda t: _real(apply("sin", t), *_within_right_angles(t)),
+    "acos": lambda t: _real(apply("cos", t), _at_least(t, 0.0), _at_most(t, PI)),
+    "atan": lambda t: _real(apply("tan", t), *_within_right_angles(t)),
     "sinh": _undo_hyperbolic_sine,
     "cosh": _undo_hyperbolic_cosine,
     "tanh": _undo_hyperbolic_tangent,
@@ -246,7 +250,7 @@ def _undo_angle(others: Sequence[Node], position: int, target: Node) -> list[Und
     else:
         quadrant = _positive(multiply(other, apply("sin", target)))
         value = divide(other, apply("tan", target))
-    return _real(value, quadrant, _at_least(target, -math.pi), _at_most(target, math.pi))
+    return _real(value, quadrant, _at_least(target, negate(PI)), _at_most(target, PI))
 
 
 _N_ARY: dict[str, Callable[[Sequence[Node], int, Node], list[Undone] | None]] = {

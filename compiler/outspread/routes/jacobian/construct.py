@@ -7,7 +7,7 @@ zero apart). It leaves solving to `branches` and `elimination`, and reading form
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 
 from outspread.formula.tree import Apply, Name, Node, Number, names
 
@@ -70,7 +70,8 @@ def subtract(left: Node, right: Node) -> Node:
 
 def multiply(*factors: Node) -> Node:
     """Product with equal bases collected; numbers gathered in front."""
-    coefficient, powers = 1.0, {}
+    coefficient: float = 1.0
+    powers: dict[Node, float] = {}
     for factor in factors:
         part, more = split_factors(factor)
         coefficient *= part
@@ -97,11 +98,11 @@ def apply(operator: str, *arguments: Node) -> Node:
     if operator == "power":
         exponent = known_number(arguments[1])
         return power(arguments[0], exponent) if exponent is not None else Apply(operator, arguments)
-    special = {
+    special: dict[str, Callable[..., Node]] = {
         "add": add, "multiply": multiply, "negate": negate, "divide": divide, "sqrt": square_root,
-    }.get(operator)  # fmt: skip
-    if special is not None:
-        return special(*arguments)
+    }  # fmt: skip
+    if operator in special:
+        return special[operator](*arguments)
     inner = arguments[0]
     undone = {"exp": "log", "log": "exp", "sin": "asin", "cos": "acos", "tan": "atan",
               "decibel": "from_decibel", "from_decibel": "decibel"}  # fmt: skip
@@ -160,10 +161,8 @@ _PRODUCTS = frozenset({"multiply", "negate", "divide", "sqrt", "power"})
 
 def from_factors(coefficient: float, powers: dict[Node, float]) -> Node:
     """The node c · Π base^exponent, written as one fraction."""
-    if any(is_integer(exponent) and _is_product(base) for base, exponent in powers.items()):
-        opened = (_raised(*split_factors(base), exponent) if is_integer(exponent) else (1.0, {base: exponent})
-                  for base, exponent in powers.items())  # fmt: skip
-        more, powers = _joined(opened)
+    if any(_opens(base, exponent) for base, exponent in powers.items()):
+        more, powers = _joined(_opened(base, exponent) for base, exponent in powers.items())
         coefficient *= more
     if coefficient == 0.0:
         return ZERO
@@ -205,6 +204,23 @@ def _is_sum(node: Node) -> bool:
     return isinstance(node, Apply) and node.operator == "add"
 
 
+def _opens(base: Node, exponent: float) -> bool:
+    """Whether base^exponent can be written without its outermost root, length or product."""
+    return is_integer(exponent) and (_is_product(base) or (_is_length(base) and is_integer(exponent / 2.0)))
+
+
+def _opened(base: Node, exponent: float) -> tuple[float, dict[Node, float]]:
+    if not _opens(base, exponent):
+        return 1.0, {base: exponent}
+    if isinstance(base, Apply) and base.operator == "hypot":
+        return _raised(*split_factors(add(*(power(part, 2.0) for part in base.arguments))), exponent / 2.0)
+    return _raised(*split_factors(base), exponent)
+
+
+def _is_length(node: Node) -> bool:
+    return isinstance(node, Apply) and node.operator == "hypot"
+
+
 def _is_product(node: Node) -> bool:
     return isinstance(node, Apply) and node.operator in _PRODUCTS and split_factors(node)[1] != {node: 1.0}
 
@@ -216,7 +232,8 @@ def _is_negative(node: Node) -> bool:
 
 
 def _joined(parts: Iterable[tuple[float, dict[Node, float]]]) -> tuple[float, dict[Node, float]]:
-    coefficient, powers = 1.0, {}
+    coefficient: float = 1.0
+    powers: dict[Node, float] = {}
     for part, more in parts:
         coefficient *= part
         for base, exponent in more.items():
@@ -236,11 +253,13 @@ def _raised(
     if coefficient == 0.0:
         return (0.0, {}) if exponent > 0.0 else (1.0, {Apply("power", (ZERO, number(exponent))): 1.0})
     single = len(powers) == 1 and not is_integer(next(iter(powers.values())) / 2.0)
+    if is_integer(exponent):
+        return _whole_power(coefficient, exponent), {base: q * exponent for base, q in powers.items()}
     outside = _exact_power(coefficient, exponent) if coefficient > 0.0 else None
-    if is_integer(exponent) or (outside and (single or not powers)):
-        return coefficient**exponent, {base: q * exponent for base, q in powers.items()}
+    if outside and (single or not powers):
+        return outside, {base: q * exponent for base, q in powers.items()}
     if exponent == 0.5 and coefficient > 0.0 and all(is_integer(q / 2.0) for q in powers.values()):
-        halves = {Apply("abs", (base,)): q / 2.0 for base, q in powers.items()}
+        halves: dict[Node, float] = {Apply("abs", (base,)): q / 2.0 for base, q in powers.items()}
         root = _exact_power(coefficient, 0.5)
         return (root, halves) if root else (1.0, {**halves, number(coefficient): 0.5})
     outside = _exact_power(abs(coefficient), exponent)
@@ -248,9 +267,21 @@ def _raised(
     return outside or 1.0, {inner: exponent}
 
 
+def _whole_power(value: float, exponent: float) -> float:
+    """value^exponent, infinite beyond the range of doubles: the branch is then no solution at any point."""
+    try:
+        return float(value**exponent)
+    except OverflowError:
+        return math.inf
+
+
 def _exact_power(value: float, exponent: float) -> float | None:
     """value^exponent where that is a short decimal, so that √2 stays √2."""
+    if not 1e-12 < value < 1e12 or abs(exponent) > 12.0:
+        return None
     result: float = value**exponent
+    if not 1e-6 < result < 1e6:
+        return None
     back: float = result ** (1.0 / exponent)
     short = any(float(f"{part:.6g}") == part for part in (result, 1.0 / result))
     return result if short and math.isclose(back, value, rel_tol=3e-16) else None
@@ -286,3 +317,22 @@ def _join_circles(collected: dict[Node, float]) -> float:
                     constant += value
                 break
     return constant
+
+
+def common_factors_out(node: Node) -> Node:
+    """A sum with the powers that divide every term taken out: a/(bc) + d/(bc) as (a + d)/(bc)."""
+    if not isinstance(node, Apply):
+        return node
+    if node.operator != "add":
+        return apply(node.operator, *(common_factors_out(argument) for argument in node.arguments))
+    terms = [split_factors(common_factors_out(term))[1] for term in node.arguments]
+    shared = {
+        base: min(term.get(base, 0.0) for term in terms)
+        for base in dict.fromkeys(base for term in terms for base in term)
+    }
+    divisor = from_factors(1.0, {base: exponent for base, exponent in shared.items() if exponent < 0.0})
+    if divisor == ONE:
+        return node
+    inside = add(*(divide(common_factors_out(term), divisor) for term in node.arguments))
+    found = multiply(inside, divisor)
+    return found if size(found) < size(node) else node

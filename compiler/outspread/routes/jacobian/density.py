@@ -14,7 +14,7 @@ _LARGEST_EXPONENT = 600.0  # beyond it, and where the product underflows, the fa
 def input_density(
     laws: Mapping[str, Law], correlation_of_normal_scores: Sequence[Sequence[float]] | None = None
 ) -> Callable[[Array], Array]:
-    """A function from inputs of shape (n, k), rows in the order of `laws`, to their joint density, shape (k,).
+    """A function from inputs of shape (n, k), rows in the order of `laws`, to their joint density (k,).
 
     `correlation_of_normal_scores` is the Gaussian copula's matrix in the same order; None: independent.
     Each normal score is taken from the nearer tail, so it is as accurate in the upper as in the lower one.
@@ -36,13 +36,10 @@ def input_density(
         usable = np.where(finite, scores, 0.0)
         exponent = log_constant - 0.5 * np.einsum("ik,ij,jk->k", usable, excess, usable)
         marginal = _product_of_densities(members, inputs)
-        plain = np.abs(exponent) < _LARGEST_EXPONENT
+        plain = (np.abs(exponent) < _LARGEST_EXPONENT) & (marginal > 1e-290)
         with np.errstate(divide="ignore", over="ignore", under="ignore", invalid="ignore"):
-            logarithm = exponent + sum(
-                np.log(law.pdf(row)) for law, row in zip(members, inputs, strict=True)
-            )
-            joined = np.where(plain & (marginal > 1e-290), marginal * np.exp(np.where(plain, exponent, 0.0)), 0.0)
-            value = np.where(plain & (marginal > 1e-290), joined, np.exp(logarithm))
+            logarithm = exponent + sum(np.log(law.pdf(row)) for law, row in zip(members, inputs, strict=True))
+            value = np.where(plain, marginal * np.exp(np.where(plain, exponent, 0.0)), np.exp(logarithm))
         return np.where(finite, value, 0.0)
 
     return density

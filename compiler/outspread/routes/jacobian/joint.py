@@ -1,7 +1,7 @@
 """Derives the joint density of n outputs of n inputs: pieces, inverse of each, Jacobian, sum over branches.
 
 The density is f_Y(y) = Σ f_X(x_b) / |det J(x_b)| over all solutions x_b of y = g(x) (change of variables).
-How an inverse is found is in `elimination`, `searching` and `numeric`; how it is written in `writing`.
+How an inverse is found is in `elimination` and `numeric`; how it is written in `writing`.
 """
 
 from __future__ import annotations
@@ -26,17 +26,19 @@ from outspread.routes.jacobian.checks import (
 )
 from outspread.routes.jacobian.elimination import Solution, solve_system
 from outspread.routes.jacobian.numeric import SearchedInverse
-from outspread.routes.jacobian.pieces import Piece, smooth_pieces
-from outspread.routes.jacobian.smooth import ROUNDING, SmoothMap, Solutions
+from outspread.routes.jacobian.pieces import smooth_pieces
+from outspread.routes.jacobian.smooth import ROUNDING, Mask, SmoothMap, Solutions
 from outspread.routes.jacobian.symbolic import TooManyBranches, WrittenInverse
+from outspread.routes.jacobian.writing import Writer
 
+NEGLIGIBLE = 1e-18  # a solution that adds less than this, relative to the sum, is not refined
 _CHUNK = 65_536
 _TESTED = 300  # draws through which a written inverse must lead back to the inputs
 
 
 @dataclass(frozen=True)
 class PieceInverse:
-    """One smooth piece with its inverse and the numbers of its branches that some draw of the inputs used."""
+    """One smooth piece with its inverse."""
 
     smooth: SmoothMap
     inverse: WrittenInverse | SearchedInverse
@@ -59,7 +61,7 @@ def derive_joint(
     `density` is the joint density of the inputs: from an array of shape (n, k), rows in the order of `laws`,
     to shape (k,). `symbols` gives LaTeX for names of inputs and outputs. `written=False` leaves symbolic
     inverses aside and finds every solution numerically (for checks). The result's `pdf` and `region` take
-    outputs of shape (n, k); a point at which the number of solutions could not be settled has the density nan.
+    outputs of shape (n, k); where the number of solutions could not be settled the density is nan.
     Returns NotPossible with its reason where inputs and outputs differ in number, an input has atoms, or
     outputs are functionally dependent on a part of the support.
     """
@@ -80,7 +82,7 @@ def derive_joint(
             try:
                 found.append(_inverse(smooth, laws, draws, written))
             except TooManyBranches:
-                return NotPossible("a periodic function or a whole part takes too many values over the support")
+                return NotPossible("a periodic function or a whole part takes too many values on the support")
     return _joint_law(tuple(outputs), found, laws, density, symbols)
 
 
@@ -105,7 +107,10 @@ def _judge(smooth: SmoothMap, laws: Mapping[str, Law], draws: Array) -> bool | N
 
 def _inverse(smooth: SmoothMap, laws: Mapping[str, Law], draws: Array, written: bool) -> PieceInverse:
     if written:
-        equations = [(expression, Name(name)) for name, expression in zip(smooth.outputs, smooth.piece.outputs, strict=True)]
+        equations = [
+            (expression, Name(name))
+            for name, expression in zip(smooth.outputs, smooth.piece.outputs, strict=True)
+        ]
         solutions = solve_system(equations, smooth.inputs)
         if solutions is not None:
             inverse = WrittenInverse(smooth, solutions, laws)
@@ -125,15 +130,13 @@ def _leads_back(smooth: SmoothMap, inverse: WrittenInverse, draws: Array) -> boo
     inputs, points = inputs[:, usable], points[:, usable]
     reached = np.zeros(points.shape[1], dtype=bool)
     floor = 1e-8 * np.subtract(*np.quantile(draws, [0.75, 0.25], axis=1))[:, None]
-    for solutions in _settled(smooth, inverse, points):
+    for candidates in inverse.candidates(points):
+        solutions = smooth.settle(candidates, points)
         start = inputs[:, solutions.columns]
-        near = np.abs(solutions.inputs - start) <= 1e-5 * (np.abs(start) + np.abs(solutions.inputs)) + floor
+        allowed = 1e-5 * (np.abs(start) + np.abs(solutions.inputs)) + floor + solutions.inputs_error
+        near = np.abs(solutions.inputs - start) <= allowed
         reached[solutions.columns[np.all(near, axis=0)]] = True
     return bool(np.all(reached))
-
-
-def _settled(smooth: SmoothMap, inverse: WrittenInverse | SearchedInverse, points: Array) -> list[Solutions]:
-    return [smooth.settle(candidates, points) for candidates in inverse.candidates(points)]
 
 
 @dataclass(frozen=True)
@@ -160,19 +163,30 @@ class _Density:
         return np.concatenate(parts).reshape(given.shape[1:]) if parts else np.zeros(given.shape[1:])
 
     def _sums(self, points: Array, with_error: bool = False) -> tuple[Array, Array, Array]:
+        """Sum over all solutions, its error, and where there is a solution; enclosures that are too wide are
+        made narrow first, except where what they add is beyond the last digit."""
         count = points.shape[1]
-        total, error, reached = np.zeros(count), np.zeros(count), np.zeros(count, dtype=bool)
+        first, total, error = np.zeros(count), np.zeros(count), np.zeros(count)
+        reached = np.zeros(count, dtype=bool)
+        found = []
         for piece in self.pieces:
-            for solutions in _settled(piece.smooth, piece.inverse, points):
-                if not solutions.columns.size:
-                    continue
-                value = self.density(solutions.inputs)
-                with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-                    part = np.where(value > 0.0, value / solutions.determinant, 0.0)
-                    np.add.at(total, solutions.columns, part)
-                    if with_error:
-                        np.add.at(error, solutions.columns, part * self._relative_error(solutions, value))
-                reached[solutions.columns] = True
+            for candidates in piece.inverse.candidates(points):
+                solutions = piece.smooth.settle(candidates, points)
+                if solutions.columns.size:
+                    _, part = self._parts(solutions)
+                    np.add.at(first, solutions.columns, np.where(solutions.uncertain, 0.0, part))
+                    found.append((piece, candidates, solutions))
+        for piece, candidates, solutions in found:
+            which = solutions.uncertain | (solutions.wide & ~self._negligible(solutions, first))
+            if np.any(which):
+                solutions = piece.smooth.refined(candidates, solutions, which, points)
+            value, part = self._parts(solutions)
+            np.add.at(total, solutions.columns, part)
+            reached[solutions.columns] = True
+            if with_error:
+                relative = np.where(part > 0.0, self._relative_error(solutions, value), 0.0)
+                np.add.at(error, solutions.columns, part * relative)
+        for piece in self.pieces:
             if isinstance(piece.inverse, SearchedInverse):
                 total[piece.inverse.unresolved] = np.nan
                 error[piece.inverse.unresolved] = np.nan
@@ -180,19 +194,33 @@ class _Density:
         total[undefined], error[undefined] = np.nan, np.nan
         return total, error, reached
 
+    def _parts(self, solutions: Solutions) -> tuple[Array, Array]:
+        value = self.density(solutions.inputs)
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            return value, np.where(value > 0.0, value / solutions.determinant, 0.0)
+
+    def _negligible(self, solutions: Solutions, total: Array) -> Mask:
+        value = self.density(solutions.inputs)
+        smallest = solutions.determinant - solutions.determinant_error
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            small = value <= NEGLIGIBLE * total[solutions.columns] * smallest
+        close = np.all(solutions.inputs_error <= 1e-9 * np.abs(solutions.inputs), axis=0)
+        return np.asarray((smallest > 0.0) & small & close)
+
     def _relative_error(self, solutions: Solutions, value: Array) -> Array:
         """First-order bound: error of the inputs through the density's slope, of det J, and of the laws."""
-        result = solutions.determinant_error / solutions.determinant
-        result = result + sum(law.relative_error for law in self.laws.values()) + 4 * ROUNDING
-        for index, row in enumerate(solutions.inputs):
-            step = 1e-6 * np.abs(row) + 1e-300
-            slopes = []
-            for sign in (1.0, -1.0):
-                moved = solutions.inputs.copy()
-                moved[index] = row + sign * step
-                slopes.append(np.abs(self.density(moved) - value) / step)
-            slope = np.minimum(*slopes)  # one of the two may lie across a jump of the density
-            result = result + np.where(value > 0.0, slope * solutions.inputs_error[index] / value, 0.0)
+        with np.errstate(all="ignore"):
+            result = solutions.determinant_error / solutions.determinant
+            result = result + sum(law.relative_error for law in self.laws.values()) + 4 * ROUNDING
+            for index, row in enumerate(solutions.inputs):
+                step = 1e-6 * np.abs(row) + 1e-300
+                slopes = []
+                for sign in (1.0, -1.0):
+                    moved = solutions.inputs.copy()
+                    moved[index] = row + sign * step
+                    slopes.append(np.abs(self.density(moved) - value) / step)
+                slope = np.minimum(*slopes)  # one of the two may lie across a jump of the density
+                result = result + slope * solutions.inputs_error[index] / value
         return np.asarray(result)
 
 
@@ -205,10 +233,15 @@ def _joint_law(
 ) -> JointLaw:
     computed = _Density(tuple(pieces), dict(laws), density)
     used = used_branches(pieces, laws)
+    parts = [
+        (piece.smooth, tuple(piece.solutions[number] for number in numbers), not piece.solutions)
+        for piece, numbers in zip(pieces, used, strict=True)
+    ]
+    writer = Writer(outputs, tuple(laws), symbols, draw_inputs(laws, _TESTED))
     return JointLaw(
         outputs=outputs,
         pdf=computed.pdf,
-        mathematics=(),
+        mathematics=writer.statements(parts),
         branches=sum(len(numbers) if numbers else 1 for numbers in used),
         region=computed.region,
         pdf_error=computed.pdf_error,
@@ -218,7 +251,7 @@ def _joint_law(
 def used_branches(pieces: Sequence[PieceInverse], laws: Mapping[str, Law]) -> list[tuple[int, ...]]:
     """For each piece, the numbers of the written solutions that some draw of the inputs needs."""
     draws = draw_inputs(laws, _TESTED)
-    result = []
+    result: list[tuple[int, ...]] = []
     for piece in pieces:
         if not isinstance(piece.inverse, WrittenInverse):
             result.append(())
@@ -233,7 +266,7 @@ def used_branches(pieces: Sequence[PieceInverse], laws: Mapping[str, Law]) -> li
                 number
                 for number in range(len(piece.inverse.solutions))
                 if any(
-                    piece.smooth.settle(one, points).columns.size
+                    not np.all(piece.smooth.settle(one, points).uncertain)
                     for one in piece.inverse.candidates_of(number, points)
                 )
             )

@@ -19,7 +19,7 @@ import numpy.typing as npt
 from outspread.formula.interval import Interval, enclose
 from outspread.formula.interval_arithmetic import add, multiply, negate
 from outspread.laws.law import Array, Law
-from outspread.routes.jacobian.precise import Precise, evaluate_precisely
+from outspread.routes.jacobian.precise import Precise
 from outspread.routes.jacobian.smooth import Candidates, Mask, SmoothMap
 from outspread.routes.jacobian.symbolic import parameter_ranges, reach
 
@@ -82,7 +82,7 @@ class SearchedInverse:
                 with np.errstate(all="ignore"):  # unbounded slopes give infinities, which rule nothing out
                     found, open_columns = self._search(points[:, first : first + CHUNK], parameters)
                 unresolved.append(open_columns + first)
-                yield self._as_candidates(found, parameters, points, first)
+                yield self._as_candidates(found, parameters, first)
         self.unresolved = np.unique(np.concatenate(unresolved)) if unresolved else np.zeros(0, dtype=np.int64)
 
     def _search(self, points: Array, parameters: Mapping[str, float]) -> tuple[_Boxes, Index]:
@@ -193,14 +193,17 @@ class SearchedInverse:
             )
         return boxes
 
-    def _as_candidates(
-        self, found: _Boxes, parameters: Mapping[str, float], points: Array, first: int
-    ) -> Candidates:
+    def _as_candidates(self, found: _Boxes, parameters: Mapping[str, float], first: int) -> Candidates:
+        from mpmath import mpf
+
         columns = found.column + first
         middle = 0.5 * found.lower + 0.5 * found.upper
 
         def precise(index: int) -> Mapping[str, Precise] | None:
-            return newton_precisely(self.smooth, middle[:, index], points[:, columns[index]], parameters)
+            return {
+                name: mpf(float(value))
+                for name, value in zip(self.smooth.inputs, middle[:, index], strict=True)
+            }
 
         named = {name: Interval(found.lower[i], found.upper[i]) for i, name in enumerate(self.smooth.inputs)}
         constant = {name: np.full(columns.size, value) for name, value in parameters.items()}
@@ -218,7 +221,7 @@ def _approximate_inverse(slopes: list[list[Interval]], order: int, count: int) -
         scale = np.prod(np.linalg.norm(matrix, axis=2), axis=1)
         singular = ~(np.abs(np.linalg.det(matrix)) > 1e-12 * scale)
         matrix[singular] = np.eye(order)
-        return np.linalg.inv(matrix)
+        return np.asarray(np.linalg.inv(matrix), dtype=np.float64)
 
 
 def _inside(image: _Boxes, box: _Boxes) -> Mask:
@@ -244,30 +247,3 @@ def _without_repeats(found: _Boxes, regions: _Boxes) -> _Boxes:
         within = np.all((found.lower[:, i + 1 :] >= low) & (found.upper[:, i + 1 :] <= high), axis=0)
         keep[i + 1 :] &= ~(same & within)
     return found.take(keep)
-
-
-def newton_precisely(
-    smooth: SmoothMap, start: Array, point: Array, parameters: Mapping[str, float]
-) -> Mapping[str, Precise] | None:
-    """The solution near `start` with 60 digits by Newton's method, or None where it does not settle."""
-    import mpmath
-
-    order = len(smooth.inputs)
-    x = mpmath.matrix([mpmath.mpf(float(value)) for value in start])
-    constants = {name: mpmath.mpf(value) for name, value in parameters.items()}
-    entries = [entry for row in smooth.jacobian for entry in row]
-    for _ in range(12):
-        values = {name: x[i] for i, name in enumerate(smooth.inputs)} | constants
-        forward = evaluate_precisely(smooth.piece.outputs, values)
-        slopes = evaluate_precisely(entries, values)
-        if any(value is None for value in (*forward, *slopes)):
-            return None
-        residual = mpmath.matrix([value - float(y) for value, y in zip(forward, point, strict=True)])
-        matrix = mpmath.matrix([slopes[i * order : (i + 1) * order] for i in range(order)])
-        if mpmath.det(matrix) == 0:
-            return None
-        step = mpmath.lu_solve(matrix, residual)
-        x = x - step
-        if all(abs(step[i]) <= mpmath.mpf(10) ** -50 * abs(x[i]) or step[i] == 0 for i in range(order)):
-            break
-    return {name: x[i] for i, name in enumerate(smooth.inputs)}

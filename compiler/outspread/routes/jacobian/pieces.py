@@ -80,7 +80,7 @@ def _chosen(piece: Piece, corner: Apply, index: int) -> Piece:
     """min or max taken by its argument `index`; of equal arguments the first counts."""
     value = corner.arguments[index]
     strict, loose = ("less", "less_equal") if corner.operator == "min" else ("greater", "greater_equal")
-    conditions = [
+    conditions: list[Node] = [
         Apply(strict if other_index < index else loose, (value, other))
         for other_index, other in enumerate(corner.arguments)
         if other_index != index

@@ -64,25 +64,27 @@ def _operation(operator: str) -> Callable[..., Precise]:
     if operator in _PLAIN:
         return _PLAIN[operator]
     if operator in _SAME_NAME:
-        function: Callable[..., Precise] = getattr(mpmath, operator)
-        return function
-    return {
+        named: Callable[..., Precise] = getattr(mpmath, operator)
+        return named
+    special: dict[str, Callable[..., Precise]] = {
         "abs": mpmath.fabs,
         "hypot": lambda *v: mpmath.sqrt(mpmath.fsum(x * x for x in v)),
         "log10": lambda x: mpmath.log(x) / mpmath.log(10),
         "decibel": lambda x: 10 * mpmath.log(x) / mpmath.log(10),
         "from_decibel": lambda x: mpmath.mpf(10) ** (x / 10),
         "polygamma": lambda n, x: mpmath.polygamma(int(n), x),
-    }[operator]
+    }
+    return special[operator]
 
 
 def _product(*factors: Precise) -> Precise:
     return math.prod(factors[1:], start=factors[0])
 
 
-_SAME_NAME = frozenset(
-    "sqrt exp log sign sin cos tan asin acos atan atan2 sinh cosh tanh erf gamma floor ceil".split()
-)
+_SAME_NAME = frozenset({
+    "sqrt", "exp", "log", "sign", "sin", "cos", "tan", "asin", "acos", "atan", "atan2", "sinh", "cosh",
+    "tanh", "erf", "gamma", "floor", "ceil",
+})  # fmt: skip
 _PLAIN: dict[str, Callable[..., Precise]] = {
     "add": lambda *v: sum(v[1:], v[0]),
     "multiply": _product,

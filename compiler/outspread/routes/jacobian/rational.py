@@ -30,7 +30,7 @@ Root = tuple[Node, tuple[Node, ...]]  # a value and the conditions under which i
 
 
 def generator(node: Node, name: str) -> Node | None:
-    """The one sub-expression through which `node` depends on `name` rationally, or None if there are several."""
+    """The one sub-expression through which `node` depends on `name` rationally; None if there are more."""
     leaves: list[Node] = []
     _collect_leaves(node, name, leaves)
     return leaves[0] if leaves and all(leaf == leaves[0] for leaf in leaves) else None
@@ -49,7 +49,7 @@ def _collect_leaves(node: Node, name: str, leaves: list[Node]) -> None:
 
 
 def roots(left: Node, right: Node, atom: Node, name: str) -> list[Root] | None:
-    """Values of `atom` with left = right, where both are rational in it; None beyond degree 2 in a power of it."""
+    """Values of `atom` with left = right, both rational in it; None beyond degree 2 in a power of it."""
     fraction = _as_fraction(subtract(left, right), atom, name)
     if fraction is None:
         return None
@@ -68,7 +68,7 @@ def roots(left: Node, right: Node, atom: Node, name: str) -> list[Root] | None:
         step = used[1]
     if any(i % step for i in used) or used[-1] > 2 * step:
         return None
-    values = _low_roots(coefficients[0], *coefficients[step :: step])
+    values = _low_roots(coefficients[0], *coefficients[step::step])
     return [root for value in values for root in _power_roots(value, step)]
 
 
@@ -131,7 +131,9 @@ def _as_fraction(node: Node, atom: Node, name: str) -> tuple[Polynomial, Polynom
     return _combined(node.operator, known)
 
 
-def _combined(operator: str, parts: list[tuple[Polynomial, Polynomial]]) -> tuple[Polynomial, Polynomial] | None:
+def _combined(
+    operator: str, parts: list[tuple[Polynomial, Polynomial]]
+) -> tuple[Polynomial, Polynomial] | None:
     top, bottom = parts[0]
     if operator == "negate":
         return [negate(part) for part in top], bottom

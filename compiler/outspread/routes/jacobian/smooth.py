@@ -15,7 +15,6 @@ import numpy.typing as npt
 from outspread.formula.calculus import derivative
 from outspread.formula.interval import Interval, enclose
 from outspread.formula.interval_arithmetic import add, multiply, negate
-from outspread.formula.tree import Node
 from outspread.laws.law import Array, Law
 from outspread.routes.jacobian.pieces import Piece
 from outspread.routes.jacobian.precise import DIGITS, Precise, evaluate_precisely
@@ -27,6 +26,7 @@ NARROW = 64 * 2.0**-52
 #: the same for the determinant
 NARROW_DETERMINANT = 1024 * 2.0**-52
 ROUNDING = 2.0**-53
+_NEWTON_STEPS = 12
 #: how far an enclosure of the outputs may miss the point before the candidate counts as spurious
 NEAR = 1e-9
 #: the same with 60 digits
@@ -51,13 +51,26 @@ class Candidates:
 @dataclass(frozen=True)
 class Solutions:
     """Solutions at the points `columns`: inputs of shape (n, m) and |det J| of shape (m,), with bounds on
-    the absolute errors of both."""
+    the absolute errors of both.
+
+    `uncertain`: the enclosures leave open whether it is a solution; `wide`: they are too wide for 12 digits.
+    `candidate` is the number of each among the candidates it came from.
+    """
 
     columns: npt.NDArray[np.int64]
     inputs: Array
     inputs_error: Array
     determinant: Array
     determinant_error: Array
+    uncertain: Mask
+    wide: Mask
+    candidate: npt.NDArray[np.int64]
+
+    def take(self, keep: Mask) -> Solutions:
+        return Solutions(
+            self.columns[keep], self.inputs[:, keep], self.inputs_error[:, keep], self.determinant[keep],
+            self.determinant_error[keep], self.uncertain[keep], self.wide[keep], self.candidate[keep],
+        )  # fmt: skip
 
 
 class SmoothMap:
@@ -77,32 +90,44 @@ class SmoothMap:
         }
 
     def settle(self, candidates: Candidates, points: Array) -> Solutions:
-        """The candidates that are solutions at their points (outputs of shape (n, k))."""
+        """The candidates that may be solutions at their points (outputs of shape (n, k))."""
         at = points[:, candidates.columns]
-        box = {**candidates.box, **{name: Interval.of(value) for name, value in candidates.parameters.items()}}
+        constants = {name: Interval.of(value) for name, value in candidates.parameters.items()}
+        box = {**candidates.box, **constants}
         possible, certain = self._judged(box, at)
         chosen = np.flatnonzero(possible)
         narrowed = {name: Interval(part.lower[chosen], part.upper[chosen]) for name, part in box.items()}
         determinant = absolute(self.determinant(narrowed))
-        middle = np.stack([_middle(narrowed[name]) for name in self.inputs])
-        size = _middle(determinant)
-        away = np.stack([_half_width(narrowed[name]) for name in self.inputs])
-        size_away = _half_width(determinant)
-        doubtful = ~certain[chosen] | candidates.undecided[chosen] | self._wide(narrowed) | ~_narrow(determinant, NARROW_DETERMINANT)
-        keep = np.ones(len(chosen), dtype=bool)
-        for place in np.flatnonzero(doubtful):
-            settled = self._settled_precisely(candidates, int(chosen[place]), at[:, chosen[place]])
+        return Solutions(
+            columns=candidates.columns[chosen],
+            inputs=np.stack([_middle(narrowed[name]) for name in self.inputs]),
+            inputs_error=np.stack([_half_width(narrowed[name]) for name in self.inputs]),
+            determinant=_middle(determinant),
+            determinant_error=_half_width(determinant),
+            uncertain=~certain[chosen] | candidates.undecided[chosen],
+            wide=self._wide(narrowed) | ~_narrow(determinant, NARROW_DETERMINANT),
+            candidate=chosen,
+        )
+
+    def refined(self, candidates: Candidates, solutions: Solutions, which: Mask, points: Array) -> Solutions:
+        """The solutions with those at `which` recomputed with 60 digits, and dropped where they are none."""
+        inputs, error = solutions.inputs.copy(), solutions.inputs_error.copy()
+        size, size_error = solutions.determinant.copy(), solutions.determinant_error.copy()
+        keep = np.ones(len(solutions.columns), dtype=bool)
+        for place in np.flatnonzero(which):
+            at = points[:, solutions.columns[place]]
+            settled = self._settled_precisely(candidates, int(solutions.candidate[place]), at)
             if settled is None:
                 keep[place] = False
             else:
-                middle[:, place], size[place] = settled
-                away[:, place], size_away[place] = ROUNDING * np.abs(settled[0]), ROUNDING * settled[1]
-        return Solutions(
-            candidates.columns[chosen][keep], middle[:, keep], away[:, keep], size[keep], size_away[keep]
-        )
+                inputs[:, place], size[place] = settled
+                error[:, place], size_error[place] = ROUNDING * np.abs(settled[0]), ROUNDING * settled[1]
+        doubt = solutions.uncertain & ~which, solutions.wide & ~which
+        columns, candidate = solutions.columns, solutions.candidate
+        return Solutions(columns, inputs, error, size, size_error, *doubt, candidate).take(keep)
 
     def _judged(self, box: Mapping[str, Interval], at: Array) -> tuple[Mask, Mask]:
-        """(possible, certain): whether each candidate may be, and surely is, a solution inside the support."""
+        """(possible, certain): whether each candidate may be, and surely is, a solution in the support."""
         some = box[self.inputs[0]]
         possible = ~some.empty
         certain = possible.copy()
@@ -160,7 +185,8 @@ class SmoothMap:
             found = candidates.precise(index)
             if found is None:
                 return None
-            values = {**found, **{name: mpmath.mpf(float(p[index])) for name, p in candidates.parameters.items()}}
+            constants = {name: mpmath.mpf(float(p[index])) for name, p in candidates.parameters.items()}
+            values = {**self.polished(found, at, constants), **constants}
             if not self._holds_precisely(values, at):
                 return None
             entries = evaluate_precisely([entry for row in self.jacobian for entry in row], values)
@@ -172,6 +198,33 @@ class SmoothMap:
             if size < _determinant_scale(rows) * mpmath.mpf(PRECISELY_NEAR):
                 size = mpmath.mpf(0)
             return np.array([float(values[name]) for name in self.inputs]), float(size)
+
+    def polished(
+        self, start: Mapping[str, Precise], at: Array, constants: Mapping[str, Precise]
+    ) -> Mapping[str, Precise]:
+        """The solution by Newton's method from `start`; `start` itself where that does not settle near it."""
+        import mpmath
+
+        order = len(self.inputs)
+        x = mpmath.matrix([start[name] for name in self.inputs])
+        entries = [entry for row in self.jacobian for entry in row]
+        for _ in range(_NEWTON_STEPS):
+            values = {**dict(zip(self.inputs, x, strict=True)), **constants}
+            forward = evaluate_precisely(self.piece.outputs, values)
+            slopes = evaluate_precisely(entries, values)
+            if any(value is None for value in (*forward, *slopes)):
+                return start
+            residual = mpmath.matrix(forward) - mpmath.matrix([float(y) for y in at])
+            matrix = mpmath.matrix([slopes[i * order : (i + 1) * order] for i in range(order)])
+            if mpmath.fabs(mpmath.det(matrix)) <= 1e-45 * _determinant_scale(matrix.tolist()):
+                return start
+            step = mpmath.lu_solve(matrix, residual)
+            x = x - step
+            if all(abs(step[i]) <= mpmath.mpf(10) ** -52 * abs(x[i]) for i in range(order)):
+                break
+        found = dict(zip(self.inputs, x, strict=True))
+        near = all(abs(found[name] - start[name]) <= 1e-6 * (abs(start[name]) + 1e-6) for name in self.inputs)
+        return found if near else start
 
     def _holds_precisely(self, values: Mapping[str, Precise], at: Array) -> bool:
         import mpmath
@@ -188,7 +241,7 @@ class SmoothMap:
         if not all(held):
             return False
         for forward, value in zip(evaluate_precisely(self.piece.outputs, values), at, strict=True):
-            if forward is None or abs(forward - value) > 1e-25 * abs(value) + slack * (1 + abs(forward)):
+            if forward is None or abs(forward - value) > 1e-20 * abs(value) + slack * (1 + abs(forward)):
                 return False
         return True
 

@@ -87,7 +87,10 @@ class WrittenInverse:
         known = {name: Interval.of(row) for name, row in zip(self.smooth.outputs, points, strict=True)}
         known |= {name: Interval.of(np.full(count, value)) for name, value in parameters.items()}
         box = {name: enclose(solution.values[name], known) for name in self.smooth.inputs}
-        possible, undecided = ~np.logical_or.reduce([part.empty for part in box.values()]), np.zeros(count, bool)
+        possible, undecided = (
+            ~np.logical_or.reduce([part.empty for part in box.values()]),
+            np.zeros(count, bool),
+        )
         for condition in solution.conditions:
             held = enclose(condition, known)
             with np.errstate(invalid="ignore"):
