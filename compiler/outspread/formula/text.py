@@ -1,4 +1,4 @@
-"""Writes an expression as formula text that `parser` reads back to the same tree.
+"""Writes an expression as formula text; `parser` reads it back (negative numbers as negated ones).
 
 For messages, results and records; typesetting is in `latex`. A number that carries a constant's name is
 written by that name.
@@ -74,8 +74,15 @@ def _sum(terms: tuple[Node, ...]) -> str:
     for term in terms[1:]:
         if isinstance(term, Apply) and term.operator == "negate":
             pieces.append(f" - {_at(term.arguments[0], _PRODUCT)}")
-        elif isinstance(term, Number) and number_text(term).startswith("-"):
-            pieces.append(f" - {number_text(term)[1:]}")
+        elif _leads_negative(term):
+            pieces.append(f" - {_at(term, _PRODUCT)[1:]}")
         else:
             pieces.append(f" + {_at(term, _PRODUCT)}")
     return "".join(pieces)
+
+
+def _leads_negative(term: Node) -> bool:
+    """A negative number, or a product or quotient that begins with one: set as a difference."""
+    while isinstance(term, Apply) and term.operator in ("multiply", "divide"):
+        term = term.arguments[0]
+    return isinstance(term, Number) and number_text(term).startswith("-")
