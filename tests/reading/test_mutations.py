@@ -33,7 +33,7 @@ PIECES = [
     "^", "**", "/0", "é", "\u2028", "\ufeff", "\x00", "\x85", "---\n", "...\n", "<<", "normal", "gamma", "mean", "=",
 ]  # fmt: skip
 
-CALM = settings(deadline=None, max_examples=60, suppress_health_check=[HealthCheck.too_slow])
+CALM = settings(deadline=None, max_examples=80, suppress_health_check=[HealthCheck.too_slow])
 
 
 def read(source: bytes) -> Model | ModelError:

@@ -17,7 +17,7 @@ from outspread.reading.words import quoted
 Path = tuple[str | int, ...]
 
 DEEPEST = 40  # levels of mappings and lists
-MOST_VALUES = 200_000
+MOST_VALUES = 50_000
 
 
 @dataclass(frozen=True)

@@ -161,6 +161,8 @@ def _missing_key(document: Document, path: Path, error: Any) -> Said:
 
 def _key_sets(document: Document, path: Path, error: Any) -> Said:
     """Exactly one of several sets of keys must be given; only the sets are named, never each attempt."""
+    if not isinstance(error.instance, dict):
+        return  # the wrong kind of value is the fault, and is reported
     given = list(error.instance)
     known = error.schema.get("properties", {})
     if any(key not in known for key in given):
