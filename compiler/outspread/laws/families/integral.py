@@ -15,6 +15,7 @@ from outspread.laws.families.shapes import INF, NAN, Moments, ScaledLaw
 from outspread.laws.law import Array
 from outspread.numerics.roots import bracketed_root
 
+Mask = npt.NDArray[np.bool_]
 NODES, WEIGHTS = (array.astype(float) for array in np.polynomial.legendre.leggauss(20))
 HALVED_NODES = np.concatenate((0.5 * (NODES - 1), 0.5 * (NODES + 1)))
 HALVED_WEIGHTS = np.concatenate((WEIGHTS, WEIGHTS)) / 2
@@ -102,7 +103,7 @@ class IntegralLaw(ScaledLaw):
             (self._remainder(edges[0]), self._remainder(edges[-1])),
         )
 
-    def _split(self, low: Array, high: Array) -> tuple[Array, Array, Array]:
+    def _split(self, low: Array, high: Array) -> tuple[Array, Mask, Mask]:
         """Where to cut: in the middle, but by factors of 16 towards an end of the support or a corner.
 
         Also whether the panel touches such a point, and whether it is too short to be cut further.
@@ -259,4 +260,3 @@ class IntegralLaw(ScaledLaw):
         with np.errstate(all="ignore"):
             values = np.nan_to_num(self._density(z) * (z - about) ** order, posinf=0.0, neginf=0.0)
         return float(np.sum(half * (values @ WEIGHTS)))
-

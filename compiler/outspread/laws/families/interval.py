@@ -155,9 +155,7 @@ FAMILIES = (
         builder=Beta,
         check=_check_beta,
         symbols={"alpha": r"\alpha", "beta": r"\beta", "lower": "a", "upper": "b"},
-        density_latex=(
-            r"\frac{(x-a)^{\alpha-1}(b-x)^{\beta-1}}{B(\alpha,\beta)\,(b-a)^{\alpha+\beta-1}}"
-        ),
+        density_latex=(r"\frac{(x-a)^{\alpha-1}(b-x)^{\beta-1}}{B(\alpha,\beta)\,(b-a)^{\alpha+\beta-1}}"),
         usage="proportions, and bounded quantities of many shapes",
         reference="Johnson, Kotz and Balakrishnan (1995), Continuous Univariate Distributions 2, ch. 25",
     ),

@@ -63,11 +63,13 @@ class NoncentralChiSquare(IntegralLaw):
         self.relative_error = rounding(3 * LOG_SMALLEST + 40 * magnitude) + 1e-13
 
     def standard_pdf(self, z: Array) -> Array:
+        from scipy import special
+
         order = 0.5 * self.nu - 1
         root = np.sqrt(z * self.noncentrality)
         log_bessel = log_scaled_bessel(order, root)
         exponent = -0.5 * (np.sqrt(z) - np.sqrt(self.noncentrality)) ** 2
-        return np.asarray(0.5 * np.exp(exponent + log_bessel + order * np.log(0.5 * z)))
+        return np.asarray(0.5 * np.exp(exponent + log_bessel + special.xlogy(order, 0.5 * z)))
 
     def singular_ends(self) -> tuple[bool, bool]:
         return (self.nu < 2, False)

@@ -132,9 +132,7 @@ FAMILIES = (
         builder=triangular,
         check=_check_triangle,
         symbols={"lower": "a", "mode": "c", "upper": "b"},
-        density_latex=(
-            r"\frac{2}{b-a}\,\min\left(\frac{x-a}{c-a},\ \frac{b-x}{b-c}\right)"
-        ),
+        density_latex=(r"\frac{2}{b-a}\,\min\left(\frac{x-a}{c-a},\ \frac{b-x}{b-c}\right)"),
         usage="limits and a most likely value; sum of two uniform quantities of equal width",
         reference="JCGM 101:2008, 6.4.5",
     ),
@@ -150,9 +148,7 @@ FAMILIES = (
         builder=Trapezoidal,
         check=_check_trapezoid,
         symbols={"lower": "a", "top_lower": "c", "top_upper": "d", "upper": "b"},
-        density_latex=(
-            r"\frac{2}{b+d-a-c}\,\min\left(\frac{x-a}{c-a},\ 1,\ \frac{b-x}{b-d}\right)"
-        ),
+        density_latex=(r"\frac{2}{b+d-a-c}\,\min\left(\frac{x-a}{c-a},\ 1,\ \frac{b-x}{b-d}\right)"),
         usage="sum of two uniform quantities; level between two corners",
         reference="JCGM 101:2008, 6.4.4",
     ),

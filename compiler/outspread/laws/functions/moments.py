@@ -60,7 +60,7 @@ def extreme_moments(shape: float) -> Moments:
     # E^(-shape) itself has raw moments Gamma(1 - k shape); shift and scale come after
     digits = 80 + _small(abs(shape))
     mean, variance, skewness, kurtosis = from_raw(
-        lambda mp, k: (mp.gamma(1 - k * mp.mpf(shape))), order, digits
+        lambda mp, k: mp.gamma(1 - k * mp.mpf(shape)), order, digits
     )
     if order <= 1:
         return (INF, NAN, NAN, NAN)

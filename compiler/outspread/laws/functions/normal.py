@@ -60,16 +60,17 @@ def normal_between(lower: Array, upper: Array) -> Array:
 
     Narrow intervals (width below 1/4) are integrated by a 20-point Gauss rule, which does not cancel.
     """
-    swap = lower > 0
-    low = np.where(swap, -upper, lower)
-    high = np.where(swap, -lower, upper)
-    difference = np.where(
-        high > 0, 1 - normal_cdf(low) - normal_cdf(-high), normal_cdf(high) - normal_cdf(low)
-    )
-    width = high - low
-    narrow = (width < 0.25) & (width > 0)
-    nodes, weights = np.polynomial.legendre.leggauss(20)
-    middle, half = np.where(narrow, low + 0.5 * width, 0.0), np.where(narrow, 0.5 * width, 0.0)
-    points = middle[..., None] + half[..., None] * nodes
-    integral = half * (normal_pdf(points) @ weights)
-    return np.asarray(np.where(narrow, integral, np.where(width > 0, np.maximum(difference, 0.0), 0.0)))
+    with np.errstate(invalid="ignore"):
+        swap = lower > 0
+        low = np.where(swap, -upper, lower)
+        high = np.where(swap, -lower, upper)
+        difference = np.where(
+            high > 0, 1 - normal_cdf(low) - normal_cdf(-high), normal_cdf(high) - normal_cdf(low)
+        )
+        width = high - low
+        narrow = (width < 0.25) & (width > 0)
+        nodes, weights = np.polynomial.legendre.leggauss(20)
+        middle, half = np.where(narrow, low + 0.5 * width, 0.0), np.where(narrow, 0.5 * width, 0.0)
+        points = middle[..., None] + half[..., None] * nodes
+        integral = half * (normal_pdf(points) @ weights)
+        return np.asarray(np.where(narrow, integral, np.where(width > 0, np.maximum(difference, 0.0), 0.0)))

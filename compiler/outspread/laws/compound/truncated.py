@@ -1,0 +1,171 @@
+"""A law cut to an interval: what lies outside is taken away, what is left is scaled to probability 1."""
+
+from __future__ import annotations
+
+from functools import cached_property
+
+import numpy as np
+import numpy.typing as npt
+
+from outspread.errors import LawError
+from outspread.laws.compound.moments import central_moments
+from outspread.laws.families.lattice import PointLaw
+from outspread.laws.families.shapes import INF, NAN, Moments
+from outspread.laws.law import Array, Atoms, Law
+
+
+def truncate(base: Law, lower: float | None, upper: float | None) -> Law:
+    """`base` given lower <= X <= upper; a limit that is None or beyond the support does not cut.
+
+    Raises LawError where the limits are not in order or leave (almost) no probability.
+    """
+    low, high = base.support()
+    least = low if lower is None else max(low, lower)
+    most = high if upper is None else min(high, upper)
+    if least == low and most == high:
+        return base
+    if lower is not None and upper is not None and not lower < upper:
+        message = f"upper is {upper:g} and lower is {lower:g}, and upper above lower would be right"
+        raise LawError(message, "upper")
+    mass = float(base.between(np.nextafter(least, -INF), most)) if least <= most else 0.0
+    if not mass > 1e-280:
+        blamed = "upper" if lower is None or most < lower else "lower"
+        raise LawError(
+            f"the limits leave probability {mass:g}, and limits that meet the distribution"
+            f" (from {low:g} to {high:g}) would be right",
+            blamed,
+        )
+    if base.continuous_mass == 0:
+        atoms = base.atoms()
+        kept = (atoms.values >= least) & (atoms.values <= most)
+        law: Law = PointLaw(atoms.values[kept], atoms.masses[kept] / np.sum(atoms.masses[kept]))
+        law.relative_error = 2 * base.relative_error + 1e-14
+    else:
+        law = TruncatedLaw(base, least, most, mass)
+    law.name = f"Truncated {base.name[0].lower()}{base.name[1:]}" if base.name else ""
+    return law
+
+
+class TruncatedLaw(Law):
+    """`base` between `lower` and `upper` (infinite: not cut), divided by its probability `mass` there."""
+
+    def __init__(self, base: Law, lower: float, upper: float, mass: float):
+        self.base, self.lower, self.upper, self.mass = base, lower, upper, mass
+        #: the point up to which probability is taken away: an atom on the limit itself stays
+        self._open_lower = lower if base.continuous_mass == 1 else float(np.nextafter(lower, -INF))
+        self.relative_error = 3 * base.relative_error + 1e-14
+        low, high = base.support()
+        cut = (np.isfinite(lower) or lower == low) and (np.isfinite(upper) or upper == high)
+        bounded = np.isfinite(lower) and np.isfinite(upper)
+        self.moment_order = INF if bounded else self._order(low, high) if cut else base.moment_order
+
+    def _order(self, low: float, high: float) -> float:
+        """A cut tail has all moments; the one that stays may not."""
+        open_side = 1 if np.isfinite(self.lower) else 0
+        tails = getattr(self.base, "tail_orders", None)
+        return tails[open_side] if tails else self.base.moment_order
+
+    def support(self) -> tuple[float, float]:
+        return (self.lower, self.upper)
+
+    def pdf(self, x: npt.ArrayLike) -> Array:
+        x = np.asarray(x, float)
+        inside = (x >= self.lower) & (x <= self.upper)
+        return np.asarray(np.where(inside | np.isnan(x), self.base.pdf(x) / self.mass, 0.0))
+
+    def cdf(self, x: npt.ArrayLike) -> Array:
+        x = np.asarray(x, float)
+        value = self.base.between(self._open_lower, np.minimum(x, self.upper)) / self.mass
+        value = np.where(x >= self.upper, 1.0, np.where(x < self.lower, 0.0, value))
+        return np.asarray(np.where(np.isnan(x), NAN, np.minimum(value, 1.0)))
+
+    def ccdf(self, x: npt.ArrayLike) -> Array:
+        x = np.asarray(x, float)
+        value = self.base.between(np.maximum(x, self._open_lower), self.upper) / self.mass
+        value = np.where(x >= self.upper, 0.0, np.where(x < self.lower, 1.0, value))
+        return np.asarray(np.where(np.isnan(x), NAN, np.minimum(value, 1.0)))
+
+    def icdf(self, p: npt.ArrayLike) -> Array:
+        return self._quantile(np.asarray(p, float), False)
+
+    def iccdf(self, q: npt.ArrayLike) -> Array:
+        return self._quantile(np.asarray(q, float), True)
+
+    def _quantile(self, p: Array, upper: bool) -> Array:
+        """Through the base's quantile of the probability in its smaller tail, then polished."""
+        shape = p.shape
+        p = np.atleast_1d(np.where((p >= 0) & (p <= 1), p, NAN))
+        below, above = (1 - p, p) if upper else (p, 1 - p)
+        before = self.base.cdf(self._open_lower)
+        after = self.base.ccdf(self.upper)
+        left, right = before + below * self.mass, after + above * self.mass
+        with np.errstate(all="ignore"):
+            x = np.where(
+                left < right,
+                self.base.icdf(np.clip(left, 0.0, 1.0)),
+                self.base.iccdf(np.clip(right, 0.0, 1.0)),
+            )
+            x = np.clip(x, self.lower, self.upper)
+            if self.base.continuous_mass == 1:
+                x = self._polish(x, p, upper)
+        ends = (self.upper, self.lower) if upper else (self.lower, self.upper)
+        x = np.where(p == 0, ends[0], np.where(p == 1, ends[1], x))
+        return np.asarray(np.where(np.isnan(p), NAN, x).reshape(shape))
+
+    def _polish(self, x: Array, p: Array, upper: bool) -> Array:
+        """Newton's method: near a cut the base's own quantile has lost the distance to the cut."""
+        for _ in range(4):
+            small = p <= 0.5
+            error = np.where(
+                small == upper,
+                np.where(small, p, 1 - p) - self.ccdf(x),
+                self.cdf(x) - np.where(small, p, 1 - p),
+            )
+            step = error / self.pdf(x)
+            tail = np.where(small, p, 1 - p)
+            # only where the tail is far from its goal, and the step stays inside
+            new = x - step
+            use = np.isfinite(new) & (new >= self.lower) & (new <= self.upper)
+            use &= np.abs(error) > 2 * self.relative_error * tail
+            if not np.any(use):
+                break
+            x = np.where(use, new, x)
+        return x
+
+    def between(self, lower: npt.ArrayLike, upper: npt.ArrayLike) -> Array:
+        low = np.maximum(np.asarray(lower, float), self._open_lower)
+        high = np.minimum(np.asarray(upper, float), self.upper)
+        return np.asarray(np.minimum(self.base.between(low, high) / self.mass, 1.0))
+
+    def atoms(self) -> Atoms:
+        atoms = self.base.atoms()
+        kept = (atoms.values >= self.lower) & (atoms.values <= self.upper)
+        return Atoms(atoms.values[kept], atoms.masses[kept] / self.mass, atoms.errors[kept] * 3 / self.mass)
+
+    @property
+    def continuous_mass(self) -> float:
+        return float(1 - np.sum(self.atoms().masses)) if self.base.continuous_mass < 1 else 1.0
+
+    def breaks(self) -> tuple[float, ...]:
+        return tuple(point for point in self.base.breaks() if self.lower < point < self.upper)
+
+    def singular_ends(self) -> tuple[bool, bool]:
+        low, high = self.base.support()
+        first, last = self.base.singular_ends()
+        return (first and self.lower == low, last and self.upper == high)
+
+    @cached_property
+    def _moments(self) -> Moments:
+        return central_moments(self)
+
+    def mean(self) -> float:
+        return self._moments[0]
+
+    def variance(self) -> float:
+        return self._moments[1]
+
+    def skewness(self) -> float:
+        return self._moments[2]
+
+    def kurtosis(self) -> float:
+        return self._moments[3]
