@@ -8,7 +8,6 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from fractions import Fraction
-from functools import reduce
 
 from outspread.routes.closed_form import exact as ex
 from outspread.routes.closed_form.expressions import (
@@ -86,7 +85,7 @@ def _together(expression: Expression, algebra: NormalForm) -> Expression | None:
             if inner is None:
                 return None
             parts.append(algebra.power(inner, exponent))
-        return reduce(algebra.multiply, parts)
+        return algebra.multiply(*parts)
     if not isinstance(expression, Sum) or len(expression.terms) > _MOST_TERMS:
         return expression
     lowest = dict[Expression, Fraction]()

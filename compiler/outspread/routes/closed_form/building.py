@@ -145,9 +145,12 @@ def _uniform(form: Form) -> Named:
     if form.power == 1:
         low, high = sorted((form.shift, form.shift + form.scale))
         return family("uniform", lower=float(low), upper=float(high)), "Uniform distribution"
+    if form.power > 0 and form.scale < 0:
+        ends = {"lower": float(form.shift + form.scale), "upper": float(form.shift)}
+        return family("beta", alpha=1.0, beta=float(1 / form.power), **ends), "Beta distribution"
     if form.power > 0:
-        law = family("power_function", shape=float(1 / form.power), lower=0.0, upper=size)
-        return moved(law, "Power function distribution", sign, form.shift)
+        ends = {"lower": float(form.shift), "upper": float(form.shift + form.scale)}
+        return family("power_function", shape=float(1 / form.power), **ends), "Power function distribution"
     law = family("pareto", shape=float(-1 / form.power), scale=size)
     return moved(law, "Pareto distribution", sign, form.shift)
 

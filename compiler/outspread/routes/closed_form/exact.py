@@ -35,6 +35,14 @@ def trimmed(value: Fraction) -> Fraction:
     return Fraction(_decimal(value))
 
 
+def tidied(value: Fraction) -> Fraction:
+    """The simple fraction that a product of 50-digit roots stands for: sqrt(5)/sqrt(5) is 1."""
+    if value.denominator < 10**6:
+        return value
+    simple = value.limit_denominator(10**6)
+    return simple if abs(simple - value) * 10**40 <= abs(value) else value
+
+
 def _decimal(value: Fraction) -> Decimal:
     return _CONTEXT.divide(Decimal(value.numerator), Decimal(value.denominator))
 

@@ -59,6 +59,13 @@ class Form:
         return replace(self, scale=scale, shift=shift)
 
 
+    def tidied(self) -> Form:
+        """The same form with roots that cancelled taken for the simple numbers they are."""
+        shape = tuple(ex.tidied(value) for value in self.shape)
+        scale, shift, power = ex.tidied(self.scale), ex.tidied(self.shift), ex.tidied(self.power)
+        return replace(self, shape=shape, scale=scale, shift=shift, power=power)
+
+
 def raised(form: Form, exponent: Fraction) -> Form | None:
     """The form of Y^exponent, where it has one."""
     if exponent == 1:

@@ -11,6 +11,8 @@ from dataclasses import dataclass
 from fractions import Fraction
 from math import fsum
 
+import numpy as np
+
 from outspread.laws.law import Law
 from outspread.routes.closed_form import exact as ex
 from outspread.routes.closed_form.expressions import Expression, Function, Product, Sum, Symbol
@@ -120,14 +122,19 @@ class Gaussian:
                     if rho:
                         cross += loadings[left] * loadings[right] * ex.exact(rho)
             return ex.trimmed(squares + 2 * cross)
-        numbers = {name: float(loadings[name]) for name in named}
-        parts = [
-            2 * numbers[left] * numbers[right] * self._dependence.between(left, right)
-            for i, left in enumerate(named)
-            for right in named[:i]
-        ]
-        variance = fsum([float(squares), *parts])
-        size = fsum([float(squares), *(abs(part) for part in parts)])
+        return self._rounded_variance(loadings, named, float(squares))
+
+    def _rounded_variance(
+        self, loadings: dict[str, Fraction], named: list[str], squares: float
+    ) -> Fraction | None:
+        """The variance in double precision, exactly summed; None where terms cancel."""
+        assert self._dependence is not None
+        place = [self._dependence.index[name] for name in named]
+        numbers = np.array([float(loadings[name]) for name in named])
+        matrix = np.asarray(self._dependence.correlation, float)[np.ix_(place, place)]
+        cross = np.tril(matrix * np.outer(numbers, numbers), -1).ravel()
+        variance = fsum([squares, *(2 * cross)])
+        size = fsum([squares, *(2 * np.abs(cross))])
         return Fraction(variance) if variance > 0.1 * size else None
 
     def lognormal(self, expression: Expression) -> Result | None:

@@ -120,6 +120,7 @@ def closed_form(form: Form, trail: tuple[Statement, ...], inputs: tuple[str, ...
     """The named result; None for a law without a name of its own (a map of one input of another family)."""
     if form.kind == "opaque":
         return _extreme(form, trail)
+    form = form.tidied()
     law, name = build(form)
     source = _RICE if name == "Rice distribution" else _SOURCES[form.kind]
     parameters = Statement(f"The result: {name}.", _parametrised(form), "density")
@@ -127,7 +128,7 @@ def closed_form(form: Form, trail: tuple[Statement, ...], inputs: tuple[str, ...
 
 
 def law_of(form: Form) -> Law:
-    return build(form)[0]
+    return build(form.tidied())[0]
 
 
 def _extreme(form: Form, trail: tuple[Statement, ...]) -> ClosedForm | None:

@@ -1,7 +1,8 @@
 """Rewrites a formula to one normal form, so that all spellings of it look alike to the rules.
 
 Sums and products are flattened and collected, constants folded, powers of powers, roots, hypot, decibels,
-logarithms of products and exponentials of sums resolved where the inputs' supports allow it; a lognormal
+logarithms of products and exponentials of sums resolved where the inputs' supports allow it ("root" and
+"checked_log" stay where it is not known that the argument is positive); a lognormal
 input becomes the exponential of its normal score. Products of sums are not multiplied out here, see
 `alternatives`. Conditions and piecewise functions other than abs, min and max have no normal form.
 """
@@ -10,7 +11,6 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from fractions import Fraction
-from functools import reduce
 
 from outspread.formula.tree import Apply, Name, Node, Number
 from outspread.laws.law import Law
@@ -45,7 +45,7 @@ class NormalForm:
         self._laws = laws
         self._readers: dict[str, Callable[[list[Expression]], Expression]] = {
             "add": self.add,
-            "multiply": lambda args: reduce(self.multiply, args),
+            "multiply": lambda args: self.multiply(*args),
             "negate": lambda args: self.scale(args[0], -ex.ONE),
             "divide": lambda args: self.multiply(args[0], self.power(args[1], -ex.ONE)),
             "power": lambda args: self._power_of(args[0], args[1]),
@@ -96,16 +96,20 @@ class NormalForm:
         terms = {term: ex.trimmed(factor * c) for term, c in whole.terms}
         return simplest(ex.trimmed(factor * whole.constant), terms)
 
-    def multiply(self, left: Expression, right: Expression) -> Expression:
-        for factor, other in ((left, right), (right, left)):
-            constant = constant_of(factor)
-            if constant is not None:
-                return self.scale(other, constant)
-        coefficient = ex.ONE
+    def multiply(self, *parts: Expression) -> Expression:
+        coefficient, varying = ex.ONE, list[Expression]()
+        for part in parts:
+            constant = constant_of(part)
+            if constant is None:
+                varying.append(part)
+            else:
+                coefficient = ex.trimmed(coefficient * constant)
+        if len(varying) < 2:
+            return self.scale(varying[0], coefficient) if varying else number(coefficient)
         factors = dict[Expression, Fraction]()
-        for part in (left, right):
+        for part in varying:
             multiplier, term = self._monic(part)
-            coefficient *= multiplier
+            coefficient = ex.trimmed(coefficient * multiplier)
             for base, exponent in factors_of(term):
                 factors[base] = factors.get(base, ex.ZERO) + exponent
         return self.scale(from_factors(self._without_abs(factors)), coefficient)
@@ -147,7 +151,7 @@ class NormalForm:
             raised = from_factors(self._without_abs({b: p * exponent for b, p in factors_of(term)}))
             return self.scale(raised, ex.power(coefficient, exponent))
         if self.bounds(base)[0] < 0:
-            raise NoNormalForm
+            return Function("root", (base, number(exponent)))  # no rule may assume that it is defined
         if coefficient < 0:
             coefficient, term = -coefficient, self.scale(term, -ex.ONE)
         return self.scale(self._root_of(term, exponent), ex.power(coefficient, exponent))
@@ -167,7 +171,7 @@ class NormalForm:
                 parts.append(self.power(self.absolute(base), inner * exponent))
             else:
                 return from_factors({term: exponent})
-        return reduce(self.multiply, parts)
+        return self.multiply(*parts)
 
     def _power_of(self, base: Expression, exponent: Expression) -> Expression:
         fixed_exponent, fixed_base = constant_of(exponent), constant_of(base)
@@ -185,15 +189,15 @@ class NormalForm:
                 factors.append(self.power(term.arguments[0], coefficient))
             else:
                 factors.append(from_factors({Function("exp", (term,)): coefficient}))
-        return reduce(self.multiply, factors)
+        return self.multiply(*factors)
 
     def log(self, argument: Expression) -> Expression:
         constant = constant_of(argument)
         if constant is not None:
             return number(ex.logarithm(constant))
-        if self.bounds(argument)[0] < 0:
-            raise NoNormalForm
         self._never_zero(argument)
+        if self.bounds(argument)[0] < 0:
+            return Function("checked_log", (argument,))  # no rule may assume that it is defined
         coefficient, term = self._monic(argument)
         if coefficient < 0:
             coefficient, term = -coefficient, self.scale(term, -ex.ONE)
@@ -224,7 +228,7 @@ class NormalForm:
             if self.bounds(base)[0] < 0 and not ex.is_even(exponent):
                 base = Function("abs", (base,))
             parts.append(from_factors({base: exponent}))
-        return reduce(self.multiply, parts)
+        return self.multiply(*parts)
 
     def extreme(self, operator: str, arguments: list[Expression]) -> Expression:
         flat = dict[Expression, None]()
@@ -234,7 +238,13 @@ class NormalForm:
             else:
                 flat[argument] = None
         parts = sorted(flat, key=lambda part: part.key)
-        return parts[0] if len(parts) == 1 else Function(operator, tuple(parts))
+        if len(parts) == 1:
+            return parts[0]
+        singles = [scaled_term(part) for part in parts]
+        if all(single is not None and single[0] < 0 for single in singles):
+            other = "max" if operator == "min" else "min"  # min(-x, -y) is -max(x, y)
+            return self.scale(self.extreme(other, [self.scale(part, -ex.ONE) for part in parts]), -ex.ONE)
+        return Function(operator, tuple(parts))
 
     def bounds(self, expression: Expression) -> tuple[float, float]:
         """An interval that holds every value of the expression (used for signs only: 0 is exact)."""
@@ -268,7 +278,7 @@ class NormalForm:
 
     def _bounds_of_function(self, expression: Function) -> tuple[float, float]:
         ends = [self.bounds(argument) for argument in expression.arguments]
-        if expression.operator in ("exp", "abs"):
+        if expression.operator in ("exp", "abs", "root"):
             return (0.0, INF)
         if expression.operator == "log":
             return (-INF if ends[0][0] < 1 else 0.0, 0.0 if ends[0][1] <= 1 else INF)

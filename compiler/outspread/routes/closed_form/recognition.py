@@ -22,6 +22,7 @@ from outspread.routes.closed_form.expressions import (
     Product,
     Sum,
     Symbol,
+    constant_of,
     factors_of,
     from_factors,
     simplest,
@@ -198,14 +199,24 @@ class _Search:
         form = quadratic(whole, self.gaussian)
         if form is not None:
             return form[0], (form[1],)
-        if len(whole.factors) != 2 or whole.factors[0][1] != -whole.factors[1][1]:
+        if len(whole.factors) != 2:
             return None
-        for (part, exponent), (rest, _) in (whole.factors, whole.factors[::-1]):
-            found = self._share(part, rest)
-            result = raised(found[0], exponent) if found else None
-            if found is not None and result is not None:
-                return result, found[1]
+        for (part, exponent), (rest, power) in (whole.factors, whole.factors[::-1]):
+            if power < 0 < exponent or exponent < 0 < power:
+                found = self._raised_share(part, exponent, rest, -power)
+                if found is not None:
+                    return found
         return None
+
+    def _raised_share(
+        self, part: Expression, exponent: Fraction, rest: Expression, power: Fraction
+    ) -> Result | None:
+        """part^exponent / rest^power as (part^(exponent/power) / rest)^power."""
+        if self.algebra.bounds(part)[0] < 0 and not ex.is_whole(power):
+            return None  # the root would lose the sign of the part
+        found = self._share(self.algebra.power(part, exponent / power), rest)
+        result = raised(found[0], power) if found else None
+        return (result, found[1]) if found and result else None
 
     def _share(self, part: Expression, total: Expression) -> Result | None:
         """N/D where D = c N + M with M independent of N."""
@@ -233,7 +244,11 @@ class _Search:
         form: Form | None = None
         if whole.operator == "exp":
             form, text = exponential(inner[0]), "The exponential of this variable is of a known kind."
-        elif whole.operator == "log":
+        elif whole.operator == "root":
+            exponent = constant_of(whole.arguments[1])
+            form = raised(inner[0], exponent) if exponent is not None else None
+            text = "The root of this variable is of a known kind."
+        elif whole.operator in ("log", "checked_log"):
             form, text = logarithm(inner[0]), "The logarithm of this variable is of a known kind."
         elif whole.operator == "abs":
             form, text = absolute(inner[0]), "The absolute value of this variable is of a known kind."
