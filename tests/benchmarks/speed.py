@@ -82,7 +82,8 @@ def command_times(repeats: int) -> list[tuple[str, float]]:
 
 
 def process_time(arguments: list[str], repeats: int) -> float:
-    program = [sys.executable, "-c", "from outspread.command import main; main()", *arguments]
+    start_up = "import sys; from outspread.command import main; sys.exit(main())"
+    program = [sys.executable, "-c", start_up, *arguments]
     environment = {**os.environ, "PYTHONPATH": str(ROOT / "compiler")}
     times = []
     for _ in range(repeats):

@@ -107,7 +107,8 @@ def interval(output: OutputResults, check: published.Check, which: str) -> tuple
 def joint_density(derived: Any, check: published.Check) -> Figure:
     point = dict(zip(check["output"], map(float, check["at"]), strict=True))
     value = float(derived.joint_pdf(point))
-    return Figure(value, 1e-10 * abs(value))
+    law = next(law for law in derived.joint if set(law.outputs) == set(point))
+    return Figure(value, law.relative_error * abs(value))
 
 
 def findings(derived: Any, check: published.Check) -> tuple[Finding, ...]:
