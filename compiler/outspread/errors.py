@@ -84,3 +84,9 @@ class DerivationError(OutspreadError):
     def __init__(self, message: str, output: str | None = None):
         self.message, self.output = message, output
         super().__init__(message)
+
+
+class ReportError(OutspreadError):
+    """A report cannot be written on this machine (exit status 5); figures and results are not touched by it."""
+
+    exit_status = 5

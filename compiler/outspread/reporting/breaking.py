@@ -83,9 +83,7 @@ def _opened(piece: tuple[Part, ...], room: float, measure: Measure) -> tuple[Par
 
 def _can_open(part: Part) -> bool:
     if isinstance(part, Scripts):
-        return isinstance(part.base, (Fence, Root, Fraction)) or (
-            part.above is not None and part.below is None and part.base == Symbol("e", "letter")
-        )
+        return isinstance(part.base, (Fence, Root, Fraction))
     return isinstance(part, (Fence, Fraction, Root)) or (isinstance(part, Row) and bool(part.parts))
 
 
@@ -119,8 +117,6 @@ def _open(part: Part, room: float, measure: Measure) -> tuple[Part, ...]:
         power = part.index or Row((Symbol("2", "number"),))
         exponent = Row((Symbol("1", "number"), Symbol("/", "ordinary"), *power.parts))
         return _with_script(_brackets(Fence("(", part.body, ")")), None, exponent)
-    if isinstance(part, Scripts) and part.above is not None and part.base == Symbol("e", "letter"):
-        return (Symbol("exp", "function"), *_brackets(Fence("(", part.above, ")")))
     if isinstance(part, Scripts):
         inner = part.base if isinstance(part.base, Fence) else Fence("(", Row((part.base,)), ")")
         return _with_script(_brackets(inner), part.below, part.above)

@@ -406,7 +406,7 @@ def _delimiter(character: str, token: str, size: float = 0.0) -> Symbol:
 
 def _in_variant(row: Row, variant: str) -> Part:
     """The row with its letters in another face; upright words stay one word."""
-    letters = [part.text for part in row.parts if isinstance(part, Symbol) and part.kind == "letter"]
+    letters = [p.text for p in row.parts if isinstance(p, Symbol) and (p.kind == "letter" or p.text == "_")]
     if variant == "normal" and letters and len(letters) == len(row.parts):
         return Symbol("".join(letters), "letter", variant)
     parts = tuple(

@@ -61,7 +61,7 @@ def height(part: Part) -> float:
         return height(part.body) + 0.15
     if isinstance(part, Scripts):
         base = height(part.base)
-        scripts = sum(0.6 * height(script) for script in (part.below, part.above) if script is not None)
+        scripts = sum(0.6 * height(slashed(row)) for row in (part.below, part.above) if row is not None)
         if isinstance(part.base, Symbol) and part.base.kind in ("large", "function"):
             return base + scripts if part.base.limits or part.base.kind == "large" else base
         return base + max(0.0, scripts - 0.65) * 0.6
@@ -94,6 +94,33 @@ def flat(parts: tuple[Part, ...]) -> list[Part]:
         else:
             found.append(part)
     return found
+
+
+def slashed(row: Row) -> Row:
+    """A script with its fractions on one line: stacked, they would be too small to read."""
+    parts: list[Part] = []
+    for part in row.parts:
+        if isinstance(part, Fraction) and part.line:
+            above, below = slashed(part.above), slashed(part.below)
+            parts += [Fence("(", above, ")")] if _is_sum(above) else above.parts
+            parts.append(Symbol("/", "ordinary"))
+            parts += [Fence("(", below, ")")] if len(below.parts) > 1 else below.parts
+        elif isinstance(part, Fence):
+            parts.append(Fence(part.left, slashed(part.body), part.right))
+        else:
+            parts.append(part)
+    return Row(tuple(parts))
+
+
+def _is_sum(row: Row) -> bool:
+    """Whether an operation or relation stands in the row outside all brackets (a leading sign apart)."""
+    depth = 0
+    for index, part in enumerate(row.parts):
+        kind = atom_class(part)
+        depth += (kind == "open") - (kind == "close")
+        if index and depth == 0 and kind in ("binary", "relation"):
+            return True
+    return False
 
 
 def mathml(row: Row) -> str:
@@ -175,8 +202,8 @@ def _(part: Scripts, script: bool) -> str:
         above_and_below = True
     kind = ("munder", "mover", "munderover") if above_and_below else ("msub", "msup", "msubsup")
     base = _draw(part.base, script)
-    below = _row(part.below, True) if part.below is not None else ""
-    above = _row(part.above, True) if part.above is not None else ""
+    below = _row(slashed(part.below), True) if part.below is not None else ""
+    above = _row(slashed(part.above), True) if part.above is not None else ""
     tag = kind[2] if below and above else kind[0] if below else kind[1]
     return f"<{tag}>{base}{below}{above}</{tag}>"
 

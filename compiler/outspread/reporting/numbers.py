@@ -1,18 +1,19 @@
 """Prints numbers for people: to the digits that the stated error supports, with readable powers and units.
 
-The printed pair holds by itself: the error printed beside a value covers the rounding of that value too.
-The results file is written by `findings.writing`, which rounds for itself.
+How far a figure is rounded, and the error beside it, is decided in `findings.writing`, so that the report
+and the results file show the same digits; here they are written out.
 """
 
 from __future__ import annotations
 
 import math
 import re
-from decimal import ROUND_CEILING, ROUND_HALF_EVEN, Context, Decimal
+from decimal import ROUND_HALF_EVEN, Context, Decimal
 
 from markupsafe import Markup, escape
 
-from outspread.findings.results import Absent, Figure, Finding
+from outspread.findings.results import Absent, Finding
+from outspread.findings.writing import rounded as printed
 
 MOST_DIGITS = 15  # significant digits that a double holds
 MINUS = "−"
@@ -20,36 +21,33 @@ _EXACT = Context(prec=400)
 _SUPERSCRIPTS = str.maketrans("0123456789-", "⁰¹²³⁴⁵⁶⁷⁸⁹⁻")
 
 
-def value_text(value: float, error: float) -> str:
-    """The value to the last digit whose place is not below the error: 1.23456789, 3e-7 -> 1.234568."""
+def value_text(value: float, error: float, scale: float = 0.0) -> str:
+    """The value to the decimal place of its printed error; `scale` as in `findings.writing.rounded`."""
     if not math.isfinite(value):
         return not_finite(value)
-    if error == 0:
+    if error == 0 or not math.isfinite(error):
         return exact(value)
-    return _write(*_rounded(value, error))
+    return _write(*_rounded(value, error, scale))
 
 
-def error_text(value: float, error: float) -> str:
-    """The bound that holds for the printed value, upwards to one digit; "exact" where both are exact."""
+def error_text(value: float, error: float, scale: float = 0.0) -> str:
+    """The bound that holds for the printed value, to one digit; "exact" where there is no error."""
     if not math.isfinite(value) or error == 0:
         return "exact"
     if not math.isfinite(error):
         return "unknown"
-    rounded, _ = _rounded(value, error)
-    bound = _EXACT.add(Decimal(error), _EXACT.abs(_EXACT.subtract(Decimal(value), rounded)))
-    place = bound.adjusted()
-    upwards = bound.quantize(Decimal((0, (1,), place)), rounding=ROUND_CEILING, context=_EXACT)
-    if 0 < upwards.adjusted() <= 3:
-        return str(int(upwards))
-    return _write(upwards, upwards.adjusted())
+    bound = Decimal(repr(printed(value, error, scale)[1]))
+    if 0 < bound.adjusted() <= 3:
+        return str(int(bound))
+    return _write(bound, bound.adjusted())
 
 
-def figure(value: float, error: float, unit: str = "") -> str:
+def figure(value: float, error: float, unit: str = "", scale: float = 0.0) -> str:
     """`value ± error unit` on one line."""
-    suffix = f"\N{NARROW NO-BREAK SPACE}{unit_text(unit)}" if unit else ""
+    shown = value_text(value, error, scale)
     if error == 0 or not math.isfinite(value):
-        return value_text(value, error) + suffix
-    return f"{value_text(value, error)} ± {error_text(value, error)}{suffix}"
+        return shown + unit_suffix(unit)
+    return f"{shown} ± {error_text(value, error, scale)}{unit_suffix(unit)}"
 
 
 def exact(value: float) -> str:
@@ -57,7 +55,9 @@ def exact(value: float) -> str:
     if not math.isfinite(value):
         return not_finite(value)
     decimal = Decimal(repr(float(value))).normalize()
-    return "0" if decimal == 0 else _write(decimal, _last_place(decimal))
+    if decimal == 0:
+        return "0"
+    return re.sub(r"^(−?)1 × (?=10)", r"\1", _write(decimal, _last_place(decimal)))
 
 
 def brief(value: float, error: float, against: float | None = None, digits: int = 4) -> str:
@@ -80,6 +80,15 @@ def brief(value: float, error: float, against: float | None = None, digits: int 
     return _write(shown, wanted) if error else _write(shown, _last_place(shown))
 
 
+def rounded(value: float, digits: int = 3) -> str:
+    """A measured number, such as a difference observed, to a few significant digits and without error."""
+    if value == 0 or not math.isfinite(value):
+        return exact(value)
+    place = Decimal(value).adjusted() - digits + 1
+    shown = Decimal(value).quantize(Decimal((0, (1,), place)), rounding=ROUND_HALF_EVEN, context=_EXACT)
+    return _write(shown, place)
+
+
 def _last_place(decimal: Decimal) -> int:
     """The place of the last digit to write of an exact number: its last non-zero one, or the units."""
     place = decimal.normalize().as_tuple().exponent
@@ -93,16 +102,12 @@ def not_finite(value: float) -> str:
     return "∞" if value > 0 else f"{MINUS}∞"
 
 
-def _rounded(value: float, error: float) -> tuple[Decimal, int]:
-    """The value rounded at the smallest power of ten that is not below the error, and that place."""
-    decimal = Decimal(value)
-    if not math.isfinite(error):
-        return Decimal(0), 0
-    stated = Decimal(repr(float(error)))
-    place = stated.adjusted() if stated == Decimal((0, (1,), stated.adjusted())) else stated.adjusted() + 1
-    if decimal != 0:
-        place = max(place, decimal.adjusted() - MOST_DIGITS + 1)
-    return decimal.quantize(Decimal((0, (1,), place)), rounding=ROUND_HALF_EVEN, context=_EXACT), place
+def _rounded(value: float, error: float, scale: float = 0.0) -> tuple[Decimal, int]:
+    """The value as printed beside its error, and the place of its last digit."""
+    shown, stated = printed(value, error, scale)
+    place = Decimal(repr(stated)).adjusted()
+    unit = Decimal((0, (1,), place))
+    return Decimal(repr(shown)).quantize(unit, rounding=ROUND_HALF_EVEN, context=_EXACT), place
 
 
 def _write(value: Decimal, place: int) -> str:
@@ -117,8 +122,6 @@ def _write(value: Decimal, place: int) -> str:
     digits = max(leading - place, 0)
     mantissa = value.scaleb(-leading, context=_EXACT)
     power = f"10{str(leading).translate(_SUPERSCRIPTS)}"
-    if digits == 0 and mantissa == 1:
-        return f"{sign}{power}"
     return f"{sign}{mantissa:.{digits}f} × {power}"
 
 
@@ -155,6 +158,14 @@ def unit_text(unit: str) -> str:
     return "".join(parts).strip("·")
 
 
+def unit_suffix(unit: str) -> str:
+    """The unit as it follows a number: with its space, if it takes one; nothing for plain numbers."""
+    text = unit_text(unit)
+    if text in ("", "1"):
+        return ""
+    return text if text == "°" else f"\N{NO-BREAK SPACE}{text}"
+
+
 def unit_latex(unit: str) -> str:
     """A unit for use inside a formula."""
     text = re.sub(r"[{}\\$]", "", unit_text(unit))
@@ -172,19 +183,23 @@ def number_latex(value: float) -> str:
     return f"{match[1]}{mantissa}10^{{{exponent}}}"
 
 
-_LONG_FRACTION = re.compile(r"(?<=\.)\d{5,}")
+_LONG_FRACTION = re.compile(r"(?<=\.)\d{5,}|(?<=10)[⁰¹²³⁴⁵⁶⁷⁸⁹⁻]+")
+_PLAIN_DIGITS = str.maketrans("⁰¹²³⁴⁵⁶⁷⁸⁹⁻", f"0123456789{MINUS}")
 
 
 def grouped(text: str) -> Markup:
-    """The text with decimals set in groups of three (ISO 80000-1, 7.3.1) by style, so that copying a
-    number copies no space."""
+    """The text as HTML: decimals in groups of three (ISO 80000-1, 7.3.1) by style, so that copying a
+    number copies no space, and exponents raised."""
     pieces: list[Markup] = []
     end = 0
     for match in _LONG_FRACTION.finditer(text):
         pieces.append(escape(text[end : match.start()]))
         digits = match[0]
-        groups = [digits[start : start + 3] for start in range(0, len(digits), 3)]
-        pieces.append(Markup("").join(Markup('<span class="g">{}</span>').format(group) for group in groups))
+        if digits.isascii():
+            groups = [digits[start : start + 3] for start in range(0, len(digits), 3)]
+            pieces += [Markup('<span class="g">{}</span>').format(group) for group in groups]
+        else:
+            pieces.append(Markup("<sup>{}</sup>").format(digits.translate(_PLAIN_DIGITS)))
         end = match.end()
     pieces.append(escape(text[end:]))
     return Markup('<span class="n">{}</span>').format(Markup("").join(pieces))
@@ -195,7 +210,3 @@ def finding_text(finding: Finding, unit: str = "") -> str:
     if isinstance(finding, Absent):
         return finding.because
     return figure(finding.value, finding.error, unit)
-
-
-def bounds(finding: Figure) -> tuple[float, float]:
-    return finding.value - finding.error, finding.value + finding.error

@@ -104,12 +104,24 @@ _MATHEMATICS = re.compile(r"(?<!\\)\$([^$]+)\$")
 
 
 def sentence(text: str) -> Markup:
-    """Plain text with `$...$` formulas typeset in place."""
+    """Plain text with `$...$` formulas typeset in place and `names` set as code."""
     pieces: list[Markup] = []
     end = 0
     for match in _MATHEMATICS.finditer(text):
-        pieces.append(escape(text[end : match.start()]))
+        pieces.append(coded(text[end : match.start()]))
         pieces.append(inline(match[1]))
         end = match.end()
-    pieces.append(escape(text[end:]))
+    pieces.append(coded(text[end:]))
     return Markup("").join(pieces)
+
+
+_CODE = re.compile(r"`([^`]+)`")
+
+
+def coded(text: str) -> Markup:
+    """Plain text with `names` set as code."""
+    pieces = _CODE.split(text)
+    return Markup("").join(
+        Markup("<code>{}</code>").format(piece) if index % 2 else escape(piece)
+        for index, piece in enumerate(pieces)
+    )
