@@ -462,7 +462,7 @@ CASES: list[tuple[str, list[Edit], str]] = [
         [
             ("    unit: mm\n    distribution: {normal: {mean: 42.02", "    unit: kg\n    distribution: {normal: {mean: 42.02"),
         ],
-        "m.yaml:12:17: shaft is in mm, and bore is in kg; a sum needs one dimension\n"
+        "m.yaml:12:17: shaft is in mm, and bore is in kg; a sum must have one dimension\n"
         "    bore - shaft\n"
         "           ^^^^^"
     ),

@@ -1,4 +1,4 @@
-"""Writes the schema's part on families anew: `python tests/reading/refresh_schema.py` after a family is added."""
+"""Writes the schema's part on families anew: run this file with python after a family is added."""
 
 from __future__ import annotations
 

@@ -13,8 +13,9 @@ import yaml
 from outspread.errors import ModelError, Place
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.tree import Node, names
-from outspread.reading.build import read_mapping, read_model
+from outspread.reading.build import build_model, read_mapping, read_model
 from outspread.reading.model import Accuracy, Model, Readings
+from outspread.reading.yaml_reader import read_yaml
 
 # The example of the format's own description.
 BEARING = r"""outspread: 1                          # format of this file
@@ -54,12 +55,12 @@ transformation:
 
 requirements:
   - name: The parts can be assembled
-    event: clearance > 0.002          # numbers are in the outputs' units; and / or / not may join several outputs
+    event: clearance > 0.002          # numbers are in the outputs' units; and / or / not may join
     probability: {at_least: 0.999}
   - name: The fit is not sloppy
     quantile: {output: clearance, at: 0.99, at_most: 0.045}
 
-readings:                             # what the report and the results file must state, beside the standard set
+readings:                             # what is stated beside the standard set
   coverage: [0.95, 0.99]              # intervals, probabilistically symmetric and shortest
   quantiles: [0.001, 0.5, 0.999]
   probabilities: ["clearance < 0"]
@@ -184,7 +185,10 @@ def test_a_mapping_and_its_yaml_give_the_same_model() -> None:
 def test_places_of_a_mapping_are_key_paths() -> None:
     with pytest.raises(ModelError) as caught:
         read_mapping(small(titel=3, transformation={"outputs": {"s": {"formula": "a + c"}}}))
-    assert str(caught.value) == "model: titel: unknown key `titel` at the top of the model; did you mean `title`?"
+    assert (
+        str(caught.value)
+        == "model: titel: unknown key `titel` at the top of the model; did you mean `title`?"
+    )
     with pytest.raises(ModelError) as caught:
         read_mapping(small(transformation={"outputs": {"s": {"formula": "a + b + c"}}}))
     assert str(caught.value) == (
@@ -255,7 +259,9 @@ def test_steps_that_double_are_stopped_before_they_fill_the_memory() -> None:
     where = {"s0": "a", **{f"s{i}": f"s{i - 1} * s{i - 1}" for i in range(1, 61)}}
     inputs = {"a": {"distribution": {"normal": {"mean": 1, "sd": 0.1}}}}
     with pytest.raises(ModelError) as caught:
-        read_mapping(small(inputs=inputs, transformation={"where": where, "outputs": {"s": {"formula": "s60"}}}))
+        read_mapping(
+            small(inputs=inputs, transformation={"where": where, "outputs": {"s": {"formula": "s60"}}})
+        )
     assert len(caught.value.faults) == 1
     assert "at most 20,000 parts are possible; use fewer steps within steps" in str(caught.value)
 
@@ -265,7 +271,9 @@ def test_a_long_chain_of_steps_is_stopped() -> None:
     where = {"s0": "a", **{f"s{i}": f"sin(s{i - 1})" for i in range(1, 500)}}
     inputs = {"a": {"distribution": {"normal": {"mean": 1, "sd": 0.1}}}}
     with pytest.raises(ModelError) as caught:
-        read_mapping(small(inputs=inputs, transformation={"where": where, "outputs": {"s": {"formula": "s499"}}}))
+        read_mapping(
+            small(inputs=inputs, transformation={"where": where, "outputs": {"s": {"formula": "s499"}}})
+        )
     assert [fault.message for fault in caught.value.faults] == [
         "with its steps put in, `s200` has 201 levels, and at most 200 levels are possible; "
         "use fewer steps within steps"
@@ -293,7 +301,8 @@ def test_cautions_are_kept() -> None:
 
 
 @pytest.mark.parametrize(
-    ("written", "seconds"), [("60 s", 60.0), ("5 min", 300.0), ("1 h", 3600.0), (90, 90.0), ("0.5s", 0.5), ("2e1", 20.0)]
+    ("written", "seconds"),
+    [("60 s", 60.0), ("5 min", 300.0), ("1 h", 3600.0), (90, 90.0), ("0.5s", 0.5), ("2e1", 20.0)],
 )
 def test_time_limit(written: object, seconds: float) -> None:
     assert read_mapping(small(accuracy={"time_limit": written})).accuracy.time_limit == seconds
@@ -301,10 +310,11 @@ def test_time_limit(written: object, seconds: float) -> None:
 
 def test_numbers_may_stand_where_text_is_wanted() -> None:
     """A title `2025`, a revision `1.10` and a unit `1` are taken as written."""
-    text = "outspread: 1\ntitle: 2025\nrecord: {revision: 1.10}\ninputs: {a: {unit: 1, distribution: {normal: {mean: 0, sd: 1}}}}\ntransformation: {outputs: {s: {formula: a}}}\n"
-    from outspread.reading.build import build_model
-    from outspread.reading.yaml_reader import read_yaml
-
+    text = (
+        "outspread: 1\ntitle: 2025\nrecord: {revision: 1.10}\n"
+        "inputs: {a: {unit: 1, distribution: {normal: {mean: 0, sd: 1}}}}\n"
+        "transformation: {outputs: {s: {formula: a}}}\n"
+    )
     model = build_model(read_yaml("m", text.encode()), Path())
     assert (model.title, dict(model.record), model.inputs[0].unit) == ("2025", {"revision": "1.10"}, "1")
 
@@ -313,8 +323,10 @@ def test_csv_columns_and_their_bytes_are_kept(tmp_path: Path) -> None:
     source = 'day,"wind, m/s"\n1,3.5\n\n2,4.25\n'
     (tmp_path / "wind.csv").write_text(source, encoding="utf-8-sig")
     (tmp_path / "m.yaml").write_text(
-        "outspread: 1\ntitle: Wind\ninputs:\n  a: {distribution: {sample: {file: wind.csv, column: 'wind, m/s'}}}\n"
-        "  b: {}\n  c: {}\ndependence:\n  - inputs: [b, c]\n    joint_sample: {file: wind.csv, columns: {b: day, c: 'wind, m/s'}}\n"
+        "outspread: 1\ntitle: Wind\ninputs:\n"
+        "  a: {distribution: {sample: {file: wind.csv, column: 'wind, m/s'}}}\n"
+        "  b: {}\n  c: {}\ndependence:\n  - inputs: [b, c]\n"
+        "    joint_sample: {file: wind.csv, columns: {b: day, c: 'wind, m/s'}}\n"
         "transformation: {outputs: {s: {formula: a + b*c}}}\n",
         encoding="utf-8",
     )
@@ -345,7 +357,10 @@ def test_a_link_out_of_the_folder_is_not_followed(tmp_path: Path) -> None:
 @pytest.mark.parametrize(
     ("name", "message"),
     [
-        ("none.yaml", "there is no such file; give the path of a model, or write one with `outspread new NAME`"),
+        (
+            "none.yaml",
+            "there is no such file; give the path of a model, or write one with `outspread new NAME`",
+        ),
         (".", "this is a folder; give the path of a model file in it"),
         ("a\0b", "the file cannot be read (embedded null byte); check its name and its permissions"),
     ],
@@ -365,7 +380,7 @@ def test_reading_loads_no_heavy_library(tmp_path: Path) -> None:
     file.write_text(BEARING, encoding="utf-8")
     code = (
         "import sys; from outspread.reading.build import read_model; read_model(sys.argv[1]); "
-        "heavy = 'scipy.stats scipy.integrate scipy.optimize sympy matplotlib weasyprint ziamath jinja2'.split(); "
+        "heavy = 'scipy.stats scipy.integrate scipy.optimize sympy matplotlib weasyprint ziamath'.split(); "
         "print([name for name in heavy if name in sys.modules])"
     )
     environment = {"PYTHONPATH": str(Path(__file__).resolve().parents[2] / "compiler"), "HOME": str(tmp_path)}

@@ -116,23 +116,44 @@ class Context:
             self.formula_fault(path, error)
             return None
 
+    def parameter(self, path: Path, node: Node, wanted: str) -> Node | None:
+        """The formula of a distribution's parameter, right in the unit `wanted`, constants put in.
+
+        A number beside a quantity is taken in that quantity's unit, as in `2*bias + 1`, but only where this
+        is the parameter's own unit: beside a length in cm, the 1 of a parameter in mm could be either.
+        """
+        from outspread.formula.unit import parse_unit
+        from outspread.formula.units import resolve_units
+
+        text = self.written(path)
+        numbers = not names(node)
+        try:
+            resolve_units(node, self.units, wanted, text, numbers_take_units=numbers)
+        except FormulaError as strict:
+            try:
+                _, unit = resolve_units(node, self.units, None, text, numbers_take_units=True)
+            except FormulaError as error:
+                self.formula_fault(path, error)
+                return None
+            if parse_unit(unit).factor != parse_unit(wanted).factor:
+                self.formula_fault(path, strict)
+                return None
+            numbers = True
+        found = self.resolved(path, node, wanted, numbers=numbers)
+        return None if found is None else self.with_constants(found[0])
+
     def with_constants(self, node: Node) -> Node:
         """The tree with each constant's name replaced by its number."""
         values = {name: Number(constant.value, name) for name, constant in self.constants.items()}
         return substitute(node, values)
 
-    def constant_value(self, path: Path, node: Node, wanted: str | None) -> float | None:
-        """The number of a formula of constants, in the unit `wanted` (None: as the formula gives it)."""
-        found = self.resolved(path, node, wanted, numbers=True)
+    def constant_value(self, path: Path, node: Node, wanted: str) -> float | None:
+        """The number of a parameter that is a formula of constants, in the unit `wanted`."""
+        found = self.parameter(path, node, wanted)
         if found is None:
             return None
-        value = fold(self.with_constants(found[0]))
+        value = fold(found)
         if isinstance(value, Number):
             return value.value
         self.fault(path, f"the formula {quoted(self.written(path))} has no finite value; check its constants")
         return None
-
-
-def depends_on(node: Node, candidates: Collection[str]) -> tuple[str, ...]:
-    """Those of `candidates` that occur in the tree, in order of occurrence."""
-    return tuple(name for name in names(node) if name in candidates)

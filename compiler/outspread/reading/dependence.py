@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from dataclasses import replace
 from typing import Any
 
 from outspread.reading.columns import read_columns
@@ -31,7 +32,7 @@ def build_dependence(context: Context, conditional: Mapping[str, tuple[str, ...]
             continue
         entry = _entry(context, path, inputs)
         if entry is not None:
-            found.append(entry)
+            found.append(replace(entry, basis=context.text((*path, "basis"))))
     return tuple(found)
 
 

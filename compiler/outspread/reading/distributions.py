@@ -26,8 +26,13 @@ def build_distribution(context: Context, path: Path, unit: str, own: str) -> Dis
     """
     family = next(iter(context.get(path)))
     inner = (*path, family)
-    if family in STRUCTURED:
-        distribution = _structured(context, inner, family, unit, own)
+    if family == "mixture":
+        distribution = _mixture(context, inner, unit, own)
+    elif family == "density":
+        distribution = _density(context, inner, unit)
+    elif family in {"table", "histogram", "sample"}:
+        columns = _columns(context, inner)
+        distribution = Distribution(family, columns, place=context.place(inner)) if columns else None
     else:
         distribution = _family(context, inner, family, unit, own)
     if distribution is not None and not is_conditional(distribution):
@@ -102,8 +107,7 @@ def _parameter(context: Context, path: Path, written: Any, family: str, unit: st
     wanted = unit_of_parameter(unit, kind_of(family, str(path[-1])))
     if not any(name in others for name in names(node)):
         return context.constant_value(path, node, wanted)
-    found = context.resolved(path, node, wanted, numbers=True)
-    return None if found is None else context.with_constants(found[0])
+    return context.parameter(path, node, wanted)
 
 
 def _quantiles(context: Context, path: Path, written: Mapping[str, Any]) -> dict[float, float] | None:
@@ -178,17 +182,6 @@ def _limit(context: Context, path: Path, written: Any, unit: str) -> float | Non
 
 
 # --- mixtures, densities, tables -------------------------------------------------------------------------
-
-
-def _structured(context: Context, path: Path, family: str, unit: str, own: str) -> Distribution | None:
-    if family == "mixture":
-        return _mixture(context, path, unit, own)
-    if family == "density":
-        return _density(context, path, unit)
-    columns = _columns(context, path)
-    if columns is None:
-        return None
-    return Distribution(family, columns, place=context.place(path))
 
 
 def _mixture(context: Context, path: Path, unit: str, own: str) -> Distribution | None:

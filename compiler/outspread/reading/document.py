@@ -122,7 +122,7 @@ def read_plain(name: str, value: object) -> Document:
             return real
         if isinstance(item, Mapping):
             for key in item:
-                if not isinstance(key, str):
+                if not isinstance(key, str | int | float) or isinstance(key, bool):
                     faults.append(Fault(place(path), f"the key {quoted(key)} is not text; keys are strings"))
                 keys[(*path, str(key))] = place((*path, str(key)))
             return {str(key): convert(part, (*path, str(key))) for key, part in item.items()}

@@ -68,6 +68,7 @@ class Dependence:
     matrix: tuple[tuple[float, ...], ...] = ()
     parameters: Mapping[str, object] = field(default_factory=dict)
     place: Place = NO_PLACE
+    basis: str = ""
 
 
 @dataclass(frozen=True)
@@ -79,6 +80,7 @@ class Step:
     written: Node
     unit: str = ""
     place: Place = NO_PLACE
+    description: str = ""
 
 
 @dataclass(frozen=True)

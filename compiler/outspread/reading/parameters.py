@@ -63,8 +63,8 @@ EXCEPTIONS: dict[tuple[str, str], str] = {
     ("logit_normal", "scale"): PLAIN,
 }
 
-#: families whose parameters are not plain numbers, and whose part of the schema is written by hand
-STRUCTURED = ("mixture", "density", "table", "histogram", "sample")
+#: ways to state a distribution that are no family; their part of the schema is written by hand
+STRUCTURED = ("observations", "mixture", "density", "table", "histogram", "sample")
 
 LISTS = frozenset({"values", "probabilities"})
 MAPS = frozenset({"quantiles"})

@@ -56,7 +56,9 @@ def _written(context: Context, group: str) -> dict[str, Path]:
 
 def _step(context: Context, formula: _Formula) -> Step:
     unit = context.units[formula.name]
-    return Step(formula.name, context.written(formula.path), formula.node, unit, context.place(formula.key))
+    description = context.text((*formula.key, "description"))
+    text, place = context.written(formula.path), context.place(formula.key)
+    return Step(formula.name, text, formula.node, unit, place, description)
 
 
 def _output(context: Context, formula: _Formula, expression: Node) -> Output:
