@@ -1,7 +1,8 @@
 """Integrates a law's density over panels between its quantiles, to hold it against the distribution function.
 
-Double exponential quadrature (Takahasi and Mori 1974), which bears singular ends, written for this check
-alone: it shares no code with the quadrature of the routes.
+Gauss-Legendre rules of two orders where the density is smooth, else double exponential quadrature
+(Takahasi and Mori 1974), which bears singular ends; written for this check alone, it shares no code with
+the quadrature of the routes.
 """
 
 from __future__ import annotations
@@ -12,12 +13,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from outspread.evidence.stating import stated
+from outspread.evidence.stating import Graded, stated
 from outspread.laws.law import Array, Law
 
 #: lower and upper probabilities between whose quantiles the density is integrated
-PROBABILITIES = (1e-6, 1e-4, 1e-2, 0.1, 0.3, 0.5)
+PROBABILITIES = (1e-6, 1e-3, 0.05, 0.5)
 STEPS = (0.25, 0.125, 0.0625)
+ORDERS = (14, 20)  # of the two Gauss-Legendre rules
+SMOOTH = 1e-9  # relative error up to which they are taken
 REACH = 3.4  # of the variable t, where the weights have fallen below 1e-20
 
 
@@ -33,8 +36,18 @@ class Panels:
 def panel_ends(law: Law) -> Array:
     """Ascending ends of the panels: quantiles in both tails, breaks, atoms and finite ends of the support."""
     tails = np.asarray(PROBABILITIES)
-    with np.errstate(all="ignore"):
-        quantiles = np.concatenate([np.asarray(law.icdf(tails)), np.asarray(law.iccdf(tails))])
+    if isinstance(law, Graded):  # any ends do: take known points near these quantiles
+        nodes = np.asarray(law.nodes, float)
+        below, above = stated(law, "cdf", nodes).value, stated(law, "ccdf", nodes).value
+        near = [
+            int(np.argmin(np.abs(np.log(side + 1e-300) - math.log(p))))
+            for side in (below, above)
+            for p in tails
+        ]
+        quantiles = nodes[near]
+    else:
+        with np.errstate(all="ignore"):
+            quantiles = np.concatenate([np.asarray(law.icdf(tails)), np.asarray(law.iccdf(tails))])
     marks = np.asarray([*law.breaks(), *law.support(), *law.atoms().values[:50].tolist()], float)
     quantiles = quantiles[np.isfinite(quantiles)]
     if quantiles.size == 0:
@@ -60,7 +73,9 @@ def integrate_density(law: Law) -> Panels:
 
 
 def _panel(law: Law, start: float, stop: float) -> tuple[float, float, float]:
-    integral, error = _double_exponential(law, start, stop)
+    integral, error = _gauss(law, start, stop)
+    if error > SMOOTH * abs(integral):
+        integral, error = _double_exponential(law, start, stop)
     lower = stated(law, "cdf", np.array([start, stop]))
     upper = stated(law, "ccdf", np.array([start, stop]))
     atoms = law.atoms()
@@ -72,6 +87,22 @@ def _panel(law: Law, start: float, stop: float) -> tuple[float, float, float]:
     rise, rise_error = (from_below, below_error) if below_error <= above_error else (from_above, above_error)
     allowed = error + rise_error + inside_error + 8 * float(np.finfo(float).eps)
     return stop, abs(integral - (rise - inside)), allowed
+
+
+def _gauss(law: Law, start: float, stop: float) -> tuple[float, float]:
+    """The integral by 20 points, and its stated errors with the difference from 14 points."""
+    results = []
+    stated_error = 0.0
+    for order in ORDERS:
+        nodes, weights = np.polynomial.legendre.leggauss(order)
+        half = 0.5 * (stop - start)
+        rows = stated(law, "pdf", start + half * (1.0 + nodes))
+        results.append(float(half * np.sum(weights * rows.value)))
+        stated_error = float(half * np.sum(weights * rows.error))
+    away = abs(results[1] - results[0])
+    if not math.isfinite(away):
+        return results[1], math.inf
+    return results[1], stated_error + away + 1e-14 * abs(results[1])
 
 
 def _double_exponential(law: Law, start: float, stop: float) -> tuple[float, float]:

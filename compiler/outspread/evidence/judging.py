@@ -14,13 +14,14 @@ import numpy as np
 from outspread.evidence.comparison import Comparison
 from outspread.evidence.drawing import Sample
 from outspread.evidence.integrating import integrate_density
-from outspread.evidence.stating import stated
+from outspread.evidence.stating import Graded, StatesErrors, stated
 from outspread.laws.law import Array, Law
 from outspread.routes.derived import DerivedOutput
 
 CONFIDENCE = 0.9999
-FIRST_POINTS = 512
-POINTS_AT_MOST = 200_000
+FIRST_POINTS = 401
+#: points at which a law is evaluated; one that computes each value with its error is costly
+POINTS_AT_MOST, POINTS_OF_COSTLY = 200_000, 401
 CURVE_POINTS = 400
 COMPARED_POINTS = 200
 #: share of the scale of a law within which a draw is taken to be at an atom: rounding of the formula
@@ -51,7 +52,8 @@ def judge_sample(output: str, law: Law, draws: Array, label: str) -> Comparison:
     """The empirical distribution function against the law's, with a bound on the largest difference.
 
     Between two points where both are known, both functions are monotone, so that their difference there
-    is bounded; points are added where that bound is not small enough to decide.
+    is bounded; points are added where that bound is not small enough to decide. For a law whose values are
+    costly the points stay few, what is seen there is judged, and the bound is said in a note.
     """
     undefined = int(np.count_nonzero(np.isnan(draws)))
     allowed = band(draws.size)
@@ -68,9 +70,12 @@ def judge_sample(output: str, law: Law, draws: Array, label: str) -> Comparison:
             note=f"the formula is undefined in {undefined:,} of the draws",
         )
     walk = _Walk(law, _snapped(np.sort(draws), law))
-    largest, bound, error = walk.settle(allowed)
-    agrees = bound <= allowed + error
+    costly = isinstance(law, StatesErrors)
+    largest, bound, error = walk.settle(allowed, POINTS_OF_COSTLY if costly else POINTS_AT_MOST)
+    agrees = (largest if costly else bound) <= allowed + error
     note = "" if agrees else "the distribution function lies outside the band"
+    if agrees and bound > allowed + error:
+        note = f"between these points the difference is at most {bound:.2g}, because both rise"
     return Comparison(
         output, label, walk.points.size, largest, allowed + error, agrees, CONFIDENCE, walk.curve(), note
     )
@@ -124,7 +129,7 @@ class _Walk:
         away = np.maximum(np.abs(self.sampled_at - self.at), np.abs(self.sampled_before - self.before))
         return float(np.max(away)), float(np.max(self.error))
 
-    def settle(self, allowed: float) -> tuple[float, float, float]:
+    def settle(self, allowed: float, most: int) -> tuple[float, float, float]:
         """Largest difference seen, a bound on all of them, and the law's error.
 
         Points are added until the bound is allowed, or what was seen is not.
@@ -138,7 +143,7 @@ class _Walk:
             if seen > allowed + error or open_gaps.size == 0:
                 return seen, max(seen, float(np.max(bound))), error
             fresh = self._inside(open_gaps)
-            if fresh.size == 0 or self.points.size + fresh.size > POINTS_AT_MOST:
+            if fresh.size == 0 or self.points.size + fresh.size > most:
                 # nothing lies between: the law itself rises there without a draw, as far as the bound says
                 return seen, max(seen, float(np.max(bound))), error
             self.points = np.unique(np.concatenate([self.points, fresh]))
@@ -230,7 +235,18 @@ def judge_density(output: str, law: Law) -> Comparison:
 
 
 def comparison_points(law: Law, count: int = COMPARED_POINTS) -> Array:
-    """`count` quantiles from 1e-6 in either tail, without points at which the law is not smooth."""
+    """About `count` points from 1e-6 in either tail, without points at which the law is not smooth.
+
+    Quantiles, or for a law whose quantiles are costly points spread between those that grade it.
+    """
+    if isinstance(law, Graded):
+        nodes = np.asarray(law.nodes, float)
+        central = (stated(law, "cdf", nodes).value > 1e-6) & (stated(law, "ccdf", nodes).value > 1e-6)
+        nodes = nodes[central]
+        if nodes.size < 2:
+            return nodes
+        points = np.interp(np.linspace(0, nodes.size - 1, count), np.arange(nodes.size), nodes)
+        return points[np.isin(points, np.asarray(law.breaks(), float), invert=True)]
     lower = np.geomspace(1e-6, 0.5, count // 2)
     upper = np.geomspace(1e-6, 0.5, count - count // 2 + 1)[:-1]
     with np.errstate(all="ignore"):

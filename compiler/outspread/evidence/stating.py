@@ -11,7 +11,7 @@ from typing import Literal, Protocol, runtime_checkable
 import numpy as np
 import numpy.typing as npt
 
-from outspread.laws.law import Estimates, Law
+from outspread.laws.law import Array, Estimates, Law
 
 Kind = Literal["pdf", "cdf", "ccdf"]
 
@@ -26,6 +26,13 @@ class StatesErrors(Protocol):
     def estimate(self, kind: Kind, y: npt.ArrayLike) -> Estimates: ...
 
     def estimate_quantile(self, p: npt.ArrayLike, upper: bool = False) -> Estimates: ...
+
+
+@runtime_checkable
+class Graded(Protocol):
+    """A law that keeps its values at ascending `nodes`, where asking for them costs nothing more."""
+
+    nodes: Array
 
 
 def stated(law: Law, kind: Kind, y: npt.ArrayLike) -> Estimates:
@@ -56,3 +63,18 @@ def stated_quantile(law: Law, p: npt.ArrayLike, upper: bool = False) -> Estimate
     if law.continuous_mass == 0.0:  # the points of a discrete law are exact
         error = np.where(away == 0.0, 0.0, error)
     return Estimates(value, error)
+
+
+def grid_points(law: Law, count: int = 401) -> Array:
+    """Ascending distinct points from tail to tail: the law's own nodes, else quantiles to 1e-6."""
+    if isinstance(law, Graded):
+        points = np.asarray(law.nodes, float)
+    else:
+        inner = np.linspace(0.0, 1.0, count)[1:-1]
+        tail = np.geomspace(1e-6, inner[0], 9)[:-1]
+        with np.errstate(all="ignore"):
+            lower = law.icdf(np.concatenate([tail, inner[inner <= 0.5]]))
+            upper = law.iccdf(np.concatenate([tail, np.sort(1.0 - inner[inner > 0.5])]))
+        points = np.concatenate([np.asarray(lower, float), np.asarray(upper, float)])
+    distinct: Array = np.unique(points[np.isfinite(points)])
+    return distinct

@@ -10,22 +10,26 @@ from typing import Literal, Protocol, runtime_checkable
 
 import numpy as np
 
-from outspread.evidence.stating import POINT_ROUNDING, StatesErrors, stated, stated_quantile
+from outspread.evidence.stating import POINT_ROUNDING, StatesErrors, grid_points, stated, stated_quantile
 from outspread.findings.results import Absent, AtomFigure, Figure, Finding
-from outspread.laws.law import Array, Estimates, Law
+from outspread.laws.law import Estimates, Law
+
+MOMENTS = ("mean", "standard deviation", "skewness", "kurtosis")
 
 
 @runtime_checkable
 class StatesMoments(Protocol):
-    """A law that bounds the errors of its own moments."""
+    """A law that bounds the errors of its own moments: mean, standard deviation, skewness, kurtosis."""
 
-    def moment_figures(self) -> tuple[Finding, Finding, Finding, Finding]: ...
+    def moment_estimates(self) -> Estimates: ...
 
 
-def moment_figures(law: Law) -> tuple[Finding, Finding, Finding, Finding]:
+def moment_figures(law: Law) -> tuple[Finding, ...]:
     """Mean, standard deviation, skewness and kurtosis, each with its error or the reason why it is absent."""
     if isinstance(law, StatesMoments):
-        return law.moment_figures()
+        rows = law.moment_estimates()
+        pairs = zip(MOMENTS, rows.value.tolist(), rows.error.tolist(), strict=True)
+        return tuple(_moment(name, value, error) for name, value, error in pairs)
     with np.errstate(all="ignore"):
         mean, deviation = law.mean(), law.standard_deviation()
         skewness, kurtosis = law.skewness(), law.kurtosis()
@@ -99,27 +103,16 @@ def heaviest_atoms(law: Law, most: int) -> tuple[tuple[AtomFigure, ...], int, Fi
 
 
 def largest_cdf_error(law: Law) -> float:
-    """A bound on |stated - true cdf| anywhere, from the law's own bounds at many of its quantiles.
+    """A bound on |stated - true cdf| anywhere, from the law's own bounds at the points that grade it.
 
     Between two neighbouring points the cdf is monotone and its error is interpolated with it, so the
     largest of the stated bounds on a dense grid is taken.
     """
     if not isinstance(law, StatesErrors):
         return law.relative_error  # relative to the smaller tail, which is at most 1
-    points = spread_points(law, 201)
+    points = grid_points(law)
     if points.size == 0:
         return float(law.relative_error)
     lower = np.asarray(law.estimate("cdf", points).error, float)
     upper = np.asarray(law.estimate("ccdf", points).error, float)
     return float(np.max(np.minimum(lower, upper)))
-
-
-def spread_points(law: Law, count: int) -> Array:
-    """Up to `count` finite quantiles, ascending and distinct, denser in both tails down to 1e-6."""
-    inner = np.linspace(0.0, 1.0, count)[1:-1]
-    lower = np.concatenate([np.geomspace(1e-6, inner[0], 9)[:-1], inner[inner <= 0.5]])
-    upper = np.concatenate([np.geomspace(1e-6, 1 - inner[-1], 9)[:-1], np.sort(1 - inner[inner > 0.5])])
-    with np.errstate(all="ignore"):
-        points = np.concatenate([np.asarray(law.icdf(lower), float), np.asarray(law.iccdf(upper), float)])
-    distinct: Array = np.unique(points[np.isfinite(points)])
-    return distinct

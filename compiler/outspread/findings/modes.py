@@ -10,12 +10,11 @@ import math
 
 import numpy as np
 
-from outspread.evidence.stating import POINT_ROUNDING, stated
-from outspread.findings.figures import spread_points
+from outspread.evidence.stating import POINT_ROUNDING, grid_points, stated
 from outspread.findings.results import Absent, Figure, Finding
 from outspread.laws.law import Array, Law
 
-WINDOW = 60  # points to either side with which the search for a smooth panel begins
+WINDOW = 30  # points in 400 to either side, with which the search for a smooth panel begins
 DEGREE = 24  # of the Chebyshev interpolant that is differentiated
 
 
@@ -53,7 +52,7 @@ def _heaviest(law: Law) -> Finding:
 def _knots(law: Law) -> Array:
     """Ascending points that hold every break, the finite ends and many quantiles."""
     marks = [*law.breaks(), *(end for end in law.support() if math.isfinite(end))]
-    points = spread_points(law, 401)
+    points = grid_points(law)
     knots: Array = np.unique(np.concatenate([points, np.asarray(marks, float)]))
     return knots
 
@@ -65,8 +64,7 @@ def _sided(law: Law, knots: Array) -> tuple[Array, Array]:
     near = 1e-13 * np.maximum(np.abs(marks), width)
     low, high = law.support()
     beside = np.concatenate([marks - near, marks + near])
-    middles = 0.5 * (knots[1:] + knots[:-1])
-    points = np.unique(np.concatenate([knots, middles, beside[(beside >= low) & (beside <= high)]]))
+    points = np.unique(np.concatenate([knots, beside[(beside >= low) & (beside <= high)]]))
     with np.errstate(all="ignore"):
         return points, np.asarray(stated(law, "pdf", points).value, float)
 
@@ -113,8 +111,9 @@ def _peak(law: Law, points: Array, index: int, knots: Array) -> tuple[float, flo
                 POINT_ROUNDING * abs(nearest) + 2e-15 * width,
                 float(rows.error),
             )
-    left = float(points[max(index - WINDOW, 0)])
-    right = float(points[min(index + WINDOW, points.size - 1)])
+    window = max(WINDOW * points.size // 400, 2)
+    left = float(points[max(index - window, 0)])
+    right = float(points[min(index + window, points.size - 1)])
     inside = marks[(marks > left) & (marks < right)]
     left = max([left, *inside[inside < at].tolist()])
     right = min([right, *inside[inside > at].tolist()])
