@@ -27,16 +27,22 @@ def _flat(operator: str, parts: list[Node]) -> Node:
 def conditions(inner: st.SearchStrategy[Node]) -> st.SearchStrategy[Node]:
     simple = st.builds(lambda o, a, b: Apply(o, (a, b)), st.sampled_from(COMPARED), inner, inner)
     joined = st.builds(
-        lambda o, parts: Apply(o, tuple(parts)), st.sampled_from(["and", "or"]), st.lists(simple, min_size=2, max_size=3)
+        lambda o, parts: Apply(o, tuple(parts)),
+        st.sampled_from(["and", "or"]),
+        st.lists(simple, min_size=2, max_size=3),
     )
-    return st.one_of(simple, joined, joined.map(lambda c: Apply("not", (c,))), simple.map(lambda c: Apply("not", (c,))))
+    return st.one_of(
+        simple, joined, joined.map(lambda c: Apply("not", (c,))), simple.map(lambda c: Apply("not", (c,)))
+    )
 
 
 def _grown(inner: st.SearchStrategy[Node]) -> st.SearchStrategy[Node]:
     few = st.lists(inner, min_size=2, max_size=3)
     return st.one_of(
         st.builds(_flat, st.sampled_from(["add", "multiply"]), few),
-        st.builds(lambda o, a, b: Apply(o, (a, b)), st.sampled_from(["divide", "power", "atan2"]), inner, inner),
+        st.builds(
+            lambda o, a, b: Apply(o, (a, b)), st.sampled_from(["divide", "power", "atan2"]), inner, inner
+        ),
         inner.map(lambda a: Apply("negate", (a,))),
         st.builds(lambda a, n: Apply("power", (a, Number(float(n), str(n)))), inner, st.integers(0, 5)),
         st.builds(lambda o, a: Apply(o, (a,)), st.sampled_from(ONE + STEPS), inner),

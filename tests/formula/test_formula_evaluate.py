@@ -16,10 +16,14 @@ from outspread.formula.text import to_text
 from outspread.formula.tree import Apply, Name, Node
 
 ONE_OPERATOR = [
-    "x + y - z", "x*y*z", "x/y", "x^y", "x^2", "x^3", "x^4", "x^-1", "x^-2", "x^0.5", "-x", "sqrt(x)", "exp(x)",
-    "log(x)", "log10(x)", "abs(y - x)", "sign(y - x)", "min(x, y, z)", "max(x, y, z)", "hypot(x, y, z)", "hypot(x)",
-    "sin(x)", "cos(x)", "tan(x)", "asin(x/9)", "acos(x/9)", "atan(x)", "atan2(x - 2, y - 2)", "sinh(x)", "cosh(x)",
-    "tanh(x)", "erf(x)", "gamma(x)", "floor(x)", "ceil(x)", "decibel(x)", "from_decibel(x)", "if(x < y, x, z)",
+    "x + y - z", "x*y*z", "x/y", "x^y", "x^2", "x^3", "x^4", "x^-1", "x^-2", "x^0.5", "-x", "sqrt(x)",
+    "exp(x)",
+    "log(x)", "log10(x)", "abs(y - x)", "sign(y - x)", "min(x, y, z)", "max(x, y, z)", "hypot(x, y, z)",
+    "hypot(x)",
+    "sin(x)", "cos(x)", "tan(x)", "asin(x/9)", "acos(x/9)", "atan(x)", "atan2(x - 2, y - 2)", "sinh(x)",
+    "cosh(x)",
+    "tanh(x)", "erf(x)", "gamma(x)", "floor(x)", "ceil(x)", "decibel(x)", "from_decibel(x)",
+    "if(x < y, x, z)",
     "if(x < y or not z > x and z != y, x, z)",
 ]  # fmt: skip
 
@@ -54,7 +58,12 @@ def test_conditions_give_boolean_arrays() -> None:
     found = compile_numpy(parse_event("0 < x < 2 and not x == 1"), ("x",))(np.arange(4.0))
     assert found.dtype == np.bool_
     assert found.tolist() == [False, False, False, False]
-    assert compile_numpy(parse_event("x >= 2 or x == 0"), ("x",))(np.arange(4.0)).tolist() == [True, False, True, True]
+    assert compile_numpy(parse_event("x >= 2 or x == 0"), ("x",))(np.arange(4.0)).tolist() == [
+        True,
+        False,
+        True,
+        True,
+    ]
 
 
 def test_if_selects_without_letting_the_other_branch_through() -> None:
@@ -95,8 +104,10 @@ def test_thousands_of_terms_and_shared_parts_are_computed_once_each() -> None:
 
 
 FOLDED = {
-    "x*1": "x", "1*x": "x", "x + 0": "x", "0 + x": "x", "x - 0": "x", "--x": "x", "x/1": "x", "x^1": "x", "x^0": "1",
-    "2*x*3": "6*x", "-2*x": "-2*x", "-(2*x)": "-2*x", "(-x)*(-y)": "x*y", "x*0 + y": "y", "1 + x + 2": "3 + x",
+    "x*1": "x", "1*x": "x", "x + 0": "x", "0 + x": "x", "x - 0": "x", "--x": "x", "x/1": "x", "x^1": "x",
+    "x^0": "1",
+    "2*x*3": "6*x", "-2*x": "-2*x", "-(2*x)": "-2*x", "(-x)*(-y)": "x*y", "x*0 + y": "y",
+    "1 + x + 2": "3 + x",
     "x - 1 - 2": "x - 3", "2^3*x": "8*x", "if(1 < 2, x, y)": "x", "if(not 1 < 2 or 3 > 4, x, y)": "y",
     "max(x, 1, 3, x)": "max(x, 3)", "min(x, x)": "x", "hypot(x)": "abs(x)", "abs(-x)": "abs(x)", "0/x": "0",
     "x/(2 - 1)": "x", "sqrt(4)*x": "2*x", "if(x < 1, y, y)": "y", "x*y + z": "x*y + z", "-1*x": "-x",

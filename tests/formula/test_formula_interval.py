@@ -163,7 +163,13 @@ def test_true_values_lie_inside(node: Node) -> None:
     for index in range(count):
         share = generator.uniform(size=3)
         point = {
-            n: float(np.clip(b.lower[index] + (b.upper[index] - b.lower[index]) * share[i], b.lower[index], b.upper[index]))
+            n: float(
+                np.clip(
+                    b.lower[index] + (b.upper[index] - b.lower[index]) * share[i],
+                    b.lower[index],
+                    b.upper[index],
+                )
+            )
             for i, (n, b) in enumerate(box.items())
         }
         try:
@@ -174,7 +180,8 @@ def test_true_values_lie_inside(node: Node) -> None:
 
 
 @pytest.mark.parametrize(
-    "operator", ["sqrt", "exp", "log", "log10", "sin", "cos", "tan", "asin", "acos", "atan", "sinh", "cosh", "tanh",
+    "operator", ["sqrt", "exp", "log", "log10", "sin", "cos", "tan", "asin", "acos", "atan", "sinh", "cosh",
+                 "tanh",
                  "erf", "gamma", "decibel", "from_decibel"],
 )  # fmt: skip
 def test_single_points_are_enclosed_tightly_and_soundly(operator: str) -> None:

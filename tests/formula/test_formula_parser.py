@@ -61,8 +61,12 @@ EVENTS = {
     "1 < a < 2": op("and", op("less", ONE, A), op("less", A, TWO)),
     "1 < a <= b < 2": op("and", op("less", ONE, A), op("less_equal", A, B), op("less", B, TWO)),
     "not a < b and c > d": op("and", op("not", op("less", A, B)), op("greater", C, D)),
-    "a < b and c > d or x > y": op("or", op("and", op("less", A, B), op("greater", C, D)), op("greater", X, Y)),
-    "a < b and (c > d or x > y)": op("and", op("less", A, B), op("or", op("greater", C, D), op("greater", X, Y))),
+    "a < b and c > d or x > y": op(
+        "or", op("and", op("less", A, B), op("greater", C, D)), op("greater", X, Y)
+    ),
+    "a < b and (c > d or x > y)": op(
+        "and", op("less", A, B), op("or", op("greater", C, D), op("greater", X, Y))
+    ),
     "a + b < 2 * c": op("less", op("add", A, B), op("multiply", TWO, C)),
     "not (a < b or c < d)": op("not", op("or", op("less", A, B), op("less", C, D))),
 }
@@ -168,14 +172,15 @@ def test_an_error_says_what_is_wrong_and_what_would_be_right_and_points_at_it(
 
 
 def test_an_event_must_be_a_condition() -> None:
-    with pytest.raises(FormulaError, match="event is a number.*compare it") as caught:
+    with pytest.raises(FormulaError, match=r"event is a number.*compare it") as caught:
         parse_event("a + b")
     assert (caught.value.start, caught.value.end) == (0, 5)
 
 
 @pytest.mark.parametrize(
     "text",
-    ["(" * 9_000 + "1" + ")" * 9_000, "-" * 15_000 + "x", "not " * 4_000 + "a < b", "sqrt(" * 2_000, "a^" * 5_000 + "a",
+    ["(" * 9_000 + "1" + ")" * 9_000, "-" * 15_000 + "x", "not " * 4_000 + "a < b", "sqrt(" * 2_000,
+     "a^" * 5_000 + "a",
      "a/" * 5_000 + "a", "(1 + " * 150 + "a" + ")" * 150, "x<(" * 3_000],
     ids=["parentheses", "signs", "not", "calls", "powers", "quotients", "sums", "comparisons"],
 )  # fmt: skip

@@ -141,7 +141,7 @@ class Converter(ABC):
             self.fail(
                 node,
                 f"{self.quote(node)} is {part.unit.described()}, and {self.quote(reference)} is "
-                f"{self.part(reference).unit.described()}; {what} needs one dimension",
+                f"{self.part(reference).unit.described()}; {what} must have one dimension",
             )
         return Part(found, target, part.free)
 
