@@ -87,6 +87,11 @@ def test_whole_powers_of_negative_bases_and_special_values_follow_ieee_754() -> 
     assert np.isnan(compile_numpy(parse("max(x, 1)"), ("x",))(np.nan))
 
 
+def test_the_sign_of_a_zero_does_not_turn_an_angle() -> None:
+    assert compile_numpy(parse("atan2(x, -x)"), ("x",))(0.0) == 0.0
+    assert compile_numpy(parse("atan2(-x, -1)"), ("x",))(0.0) == np.pi
+
+
 def test_wrong_arguments_are_refused() -> None:
     with pytest.raises(KeyError):
         compile_numpy(parse("x + q"), ("x",))

@@ -8,11 +8,13 @@ from __future__ import annotations
 import math
 import subprocess
 import sys
+from pathlib import Path
 
 import numpy as np
 import pytest
 
 from outspread.errors import FormulaError
+from outspread.formula import unit_words
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.parser import parse, parse_event
 from outspread.formula.tree import names
@@ -241,6 +243,19 @@ def test_units_of_one_dimension_are_recognised() -> None:
     assert not same_dimension("mm", "mm^2")
     assert not same_dimension("dBm", "mW")
     assert not same_dimension("dB", "")
+
+
+@pytest.mark.parametrize("damage", [b"", b"\x80\x04 not a pickle"])
+def test_a_damaged_cache_of_unit_definitions_is_passed_over(
+    damage: bytes, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setenv("XDG_CACHE_HOME", str(tmp_path))
+    assert unit_words._registry.__wrapped__().parse_units("mm") is not None
+    cached = [path for path in tmp_path.rglob("*") if path.is_file()]
+    assert cached
+    for path in cached:
+        path.write_bytes(damage)
+    assert unit_words._registry.__wrapped__().parse_units("mm") is not None
 
 
 def test_formulas_without_units_do_not_load_the_unit_library() -> None:

@@ -66,7 +66,8 @@ _FUNCTIONS: dict[str, Function] = {
     "asin": np.arcsin,
     "acos": np.arccos,
     "atan": np.arctan,
-    "atan2": np.arctan2,
+    # formulas know no sign of zero: atan2(0, -0.0) is 0, not pi
+    "atan2": lambda y, x: np.arctan2(y + 0.0, x + 0.0),
     "sinh": np.sinh,
     "cosh": np.cosh,
     "tanh": np.tanh,

@@ -6,6 +6,7 @@ Unit expressions are read in `unit`; levels and offsets, which pint treats other
 from __future__ import annotations
 
 import os
+import pickle
 import re
 import sys
 from collections.abc import Mapping
@@ -81,7 +82,12 @@ def _registry() -> pint.UnitRegistry[Any]:
     import pint
 
     folder = _cache_folder(pint.__version__)
-    return pint.UnitRegistry(non_int_type=Fraction, cache_folder=None if folder is None else str(folder))
+    if folder is not None:
+        try:
+            return pint.UnitRegistry(non_int_type=Fraction, cache_folder=str(folder))
+        except (OSError, EOFError, pickle.PickleError, AttributeError, ImportError, ValueError, IndexError):
+            pass  # a damaged cache, or one that another process is writing: read the definitions themselves
+    return pint.UnitRegistry(non_int_type=Fraction, cache_folder=None)
 
 
 def _cache_folder(version: str) -> Path | None:
