@@ -152,7 +152,8 @@ def test_mixture() -> None:
         ),
         (
             {"normal": {"quantiles": {"0.5": 1, "0.50": 2}}},
-            "distribution.normal.quantiles.0.50: the probability `0.50` occurs twice; give two different ones",
+            "distribution.normal.quantiles.0.50: the probability `0.50` occurs twice; "
+            "give two different ones",
         ),
     ],
 )
@@ -160,14 +161,26 @@ def test_what_makes_no_distribution(written: object, message: str) -> None:
     assert fault(written) == message
 
 
-def test_truncation_that_leaves_nothing() -> None:
-    """Limits far outside a normal distribution, and beside a bounded one."""
-    assert "the limits leave probability 0" in fault(
-        {"normal": {"mean": 0, "sd": 1}}, truncate={"lower": 1e9}
-    )
-    assert "the limits leave probability 0" in fault(
-        {"uniform": {"lower": 0, "upper": 1}}, truncate={"lower": 1.5}
-    )
+@pytest.mark.parametrize(
+    ("written", "limits"),
+    [
+        ({"normal": {"mean": 0, "sd": 1}}, {"lower": 1e9}),
+        ({"uniform": {"lower": 0, "upper": 1}}, {"lower": 1.5}),
+        ({"uniform": {"lower": 0, "upper": 1}}, {"lower": 1}),
+        ({"exponential": {"rate": 1}}, {"upper": 0}),
+        ({"exponential": {"rate": 1}}, {"upper": -1}),
+        ({"poisson": {"mean": 1}}, {"upper": -1}),
+        ({"sample": {"values": [1, 2]}}, {"lower": 3}),
+    ],
+)
+def test_truncation_that_leaves_nothing(written: object, limits: object) -> None:
+    """Limits where the distribution has no probability, or none that a number can hold."""
+    assert "the limits leave probability 0" in fault(written, truncate=limits)
+
+
+def test_truncation_to_one_atom() -> None:
+    """A count can be cut to its smallest value."""
+    assert read({"poisson": {"mean": 1}}, unit="1", truncate={"upper": 0}).upper == 0.0
 
 
 def test_truncation_in_a_far_tail_is_right() -> None:

@@ -33,6 +33,14 @@ def test_starting_model(name: str, title: str, tmp_path: Path) -> None:
     assert read_model(file).title == title
 
 
+def test_the_schema_is_named_for_editors(tmp_path: Path) -> None:
+    text = starting_model("gap", schema="../schema/model-1.schema.json")
+    assert text.startswith("# yaml-language-server: $schema=../schema/model-1.schema.json\n# A model")
+    assert starting_model("gap").startswith("# A model")
+    (tmp_path / "m.yaml").write_text(text, encoding="utf-8")
+    assert read_model(tmp_path / "m.yaml").title == "Gap"
+
+
 @pytest.mark.parametrize("name", ["", "a b", "../a", "a/b", "-a", "é", "a\n", "x" * 101, "{a}"])
 def test_a_name_that_is_no_file_name(name: str) -> None:
     with pytest.raises(ValueError, match="is no name for a model; use letters, digits"):

@@ -171,7 +171,33 @@ def truncated(context: Context, path: Path, distribution: Distribution, unit: st
     )
     if is_conditional(cut):
         return cut
-    return cut if _check(context, path, cut) else None
+    return cut if _leaves_something(context, path, cut) else None
+
+
+def _leaves_something(context: Context, path: Path, cut: Distribution) -> bool:
+    """Whether probability is left between the limits of `cut`; if not, the fault is noted.
+
+    Where the limits hold the centre of a family between them this needs no figure, and the libraries that
+    would compute one are not loaded: that is the usual case, and `check` must be quick.
+    """
+    from outspread.laws.registry import FAMILIES
+
+    family = FAMILIES.get(cut.family)
+    if family is None or family.kind != "continuous":
+        return _check(context, path, cut)
+    canonical = family.canonical(cut.parameters)
+    low, high = family.build(canonical).support()
+    least = low if cut.lower is None else max(low, cut.lower)
+    most = high if cut.upper is None else min(high, cut.upper)
+    if not least < most:
+        message = (
+            f"the limits leave probability 0; write limits that meet the distribution, "
+            f"which reaches from {number(low)} to {number(high)}"
+        )
+        context.key_fault(path, message)
+        return False
+    centres = [float(canonical[name]) for name in ("mean", "location", "mode") if name in canonical]
+    return any(least < centre < most for centre in centres[:1]) or _check(context, path, cut)
 
 
 def _limit(context: Context, path: Path, written: Any, unit: str) -> float | None:

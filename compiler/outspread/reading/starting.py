@@ -6,12 +6,8 @@ import re
 
 from outspread.reading.words import quoted
 
-#: what `outspread new` puts before the model's name in the schema reference for editors
-SCHEMA_REFERENCE = "model-1.schema.json"
-
 _TEXT = """\
-# yaml-language-server: $schema={schema}
-# A model for Outspread. `outspread check {name}.yaml` reads it, `outspread derive {name}.yaml` derives it.
+{reference}# A model for Outspread. `outspread check {name}.yaml` reads it, `outspread derive {name}.yaml` derives it.
 outspread: 1                     # format of this file
 title: {title}
 purpose: Says what the result is used for, and what is decided with it.
@@ -68,10 +64,10 @@ accuracy: {{digits: 8, seed: 20260401, time_limit: 60 s}}
 """
 
 
-def starting_model(name: str, schema: str = SCHEMA_REFERENCE) -> str:
+def starting_model(name: str, schema: str = "") -> str:
     """The text of a small model that reads without a fault, titled after `name`.
 
-    `schema` is the path or URL of the schema in the line that editors read. Raises ValueError where `name`
+    `schema` is the path or URL of the schema for the first line, which editors read; none: no such line. Raises ValueError where `name`
     is no plain file name (letters, digits, `-`, `_` and `.`).
     """
     if not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,99}", name):
@@ -84,4 +80,5 @@ def starting_model(name: str, schema: str = SCHEMA_REFERENCE) -> str:
     # A title such as `12` or `true` would be read as a number or a truth value.
     if not re.match(r"[A-Za-z]", title) or title.lower() in {"true", "false", "null"}:
         title = f'"{title}"'
-    return _TEXT.format(name=name, title=title, schema=schema)
+    reference = f"# yaml-language-server: $schema={schema}\n" if schema else ""
+    return _TEXT.format(name=name, title=title, reference=reference)

@@ -34,7 +34,7 @@ _PARSER_WORDS: dict[str, str] = {
     "did not find expected '-' indicator": (
         "the indentation does not fit here; the `-` of one list stand in one column"
     ),
-    "did not find expected ',' or": "a `{…}` or `[…]` is not closed or lacks a comma before this",
+    "expected ',' or": "a `{…}` or `[…]` is not closed or lacks a comma before this",
     "found unexpected end of stream": "a quote is not closed before the end of the file",
     "found unknown escape character": (
         "an unknown escape in a double-quoted text; use single quotes, in which `\\` is an ordinary character"
