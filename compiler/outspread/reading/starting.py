@@ -7,7 +7,7 @@ import re
 from outspread.reading.words import quoted
 
 _TEXT = """\
-{reference}# A model for Outspread. `outspread check {name}.yaml` reads it, `outspread derive {name}.yaml` derives it.
+# A model for Outspread. `outspread check {name}.yaml` reads it, `outspread derive {name}.yaml` derives it.
 outspread: 1                     # format of this file
 title: {title}
 purpose: Says what the result is used for, and what is decided with it.
@@ -67,8 +67,8 @@ accuracy: {{digits: 8, seed: 20260401, time_limit: 60 s}}
 def starting_model(name: str, schema: str = "") -> str:
     """The text of a small model that reads without a fault, titled after `name`.
 
-    `schema` is the path or URL of the schema for the first line, which editors read; none: no such line. Raises ValueError where `name`
-    is no plain file name (letters, digits, `-`, `_` and `.`).
+    `schema` is the path or URL of the schema for a first line that editors read; none: no such line.
+    Raises ValueError where `name` is no plain file name (letters, digits, `-`, `_` and `.`).
     """
     if not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,99}", name):
         raise ValueError(
@@ -81,4 +81,4 @@ def starting_model(name: str, schema: str = "") -> str:
     if not re.match(r"[A-Za-z]", title) or title.lower() in {"true", "false", "null"}:
         title = f'"{title}"'
     reference = f"# yaml-language-server: $schema={schema}\n" if schema else ""
-    return _TEXT.format(name=name, title=title, reference=reference)
+    return reference + _TEXT.format(name=name, title=title)
