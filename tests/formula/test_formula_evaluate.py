@@ -11,6 +11,7 @@ from random_formulas import formulas
 
 from outspread.formula.evaluate import compile_numpy, fold
 from outspread.formula.interval import Interval, enclose
+from outspread.formula.linear import size
 from outspread.formula.parser import parse, parse_event
 from outspread.formula.text import to_text
 from outspread.formula.tree import Apply, Name, Node
@@ -104,6 +105,7 @@ def test_thousands_of_terms_and_shared_parts_are_computed_once_each() -> None:
     for _ in range(60):  # 2^60 nodes if shared parts were walked each time
         shared = Apply("add", (shared, shared))
     assert compile_numpy(shared, ("x",))(1.0) == 2.0**60
+    assert size(shared) == 2**61 - 1
     many = parse("+".join(["x*2"] * 3000))
     assert compile_numpy(many, ("x",))(0.5) == 3000.0
 

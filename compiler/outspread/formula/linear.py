@@ -64,3 +64,12 @@ def linearise(node: Node) -> list[Operation]:
         slot_of[id(part)] = slots[key]
     # A root equal to an earlier entry cannot occur: its arguments come before it and it comes last.
     return operations
+
+
+def size(node: Node) -> int:
+    """Number of nodes with every repetition counted, found in time linear in the distinct node objects."""
+    sizes: dict[int, int] = {}
+    for part in postorder(node):
+        inner = part.arguments if isinstance(part, Apply) else ()
+        sizes[id(part)] = 1 + sum(sizes[id(argument)] for argument in inner)
+    return sizes[id(node)]
