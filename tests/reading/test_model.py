@@ -7,6 +7,7 @@ import subprocess
 import sys
 from pathlib import Path
 
+import numpy as np
 import pytest
 import yaml
 
@@ -195,6 +196,29 @@ def test_places_of_a_mapping_are_key_paths() -> None:
         "model: transformation.outputs.s.formula: `c` is not defined; "
         "inputs, constants, steps and outputs: `a`, `b` and `s`\n    a + b + c\n            ^"
     )
+
+
+@pytest.mark.parametrize(
+    ("value", "message"),
+    [
+        (10**400, "this number is too large; the largest is 1.7e308"),
+        (float("inf"), "inf is no finite number; leave out a limit that does not exist"),
+        (1j, "a value of type `complex` cannot stand in a model; use numbers, text, lists and mappings"),
+        ({1, 2}, "a value of type `set` cannot stand in a model; use numbers, text, lists and mappings"),
+    ],
+)
+def test_python_values_that_no_file_could_hold(value: object, message: str) -> None:
+    with pytest.raises(ModelError) as caught:
+        read_mapping(small(accuracy={"seed": value}))
+    assert str(caught.value) == f"model: accuracy.seed: {message}"
+
+
+def test_numpy_values_and_tuples_are_taken() -> None:
+    """Arrays count as lists, numpy's numbers as numbers."""
+    readings = {"quantiles": np.array([0.1, 0.5]), "coverage": (np.float64(0.9),)}
+    model = read_mapping(small(readings=readings, accuracy={"digits": np.int64(6)}))
+    assert (model.readings.quantiles, model.readings.coverage) == ((0.1, 0.5), (0.9,))
+    assert model.accuracy.digits == 6
 
 
 def test_constants_as_parameters_are_converted_to_the_input_s_unit() -> None:

@@ -18,6 +18,7 @@ Path = tuple[str | int, ...]
 
 DEEPEST = 40  # levels of mappings and lists
 MOST_VALUES = 50_000
+LARGEST_WHOLE = 10**308
 
 
 @dataclass(frozen=True)
@@ -113,6 +114,8 @@ def read_plain(name: str, value: object) -> Document:
         if item is None or isinstance(item, str | bool):
             return item
         if isinstance(item, Integral):
+            if abs(int(item)) > LARGEST_WHOLE:
+                faults.append(Fault(place(path), "this number is too large; the largest is 1.7e308"))
             return int(item)
         if isinstance(item, Real):
             if not math.isfinite(real := float(item)):
