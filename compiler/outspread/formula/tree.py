@@ -101,7 +101,19 @@ def walk(node: Node) -> Iterator[Node]:
 
 def names(node: Node) -> tuple[str, ...]:
     """The names that occur, each once, in order of first occurrence."""
-    return tuple(dict.fromkeys(part.name for part in walk(node) if isinstance(part, Name)))
+    found: dict[str, None] = {}
+    seen: set[int] = set()  # parts that several places share are walked once
+    stack = [node]
+    while stack:
+        part = stack.pop()
+        if id(part) in seen:
+            continue
+        seen.add(id(part))
+        if isinstance(part, Name):
+            found.setdefault(part.name)
+        elif isinstance(part, Apply):
+            stack.extend(reversed(part.arguments))
+    return tuple(found)
 
 
 def occurrences(node: Node, name: str) -> int:
@@ -109,15 +121,30 @@ def occurrences(node: Node, name: str) -> int:
 
 
 def rebuild(node: Node, change: Callable[[Node], Node | None]) -> Node:
-    """A copy in which each node for which `change` returns a node is replaced by that (not walked again)."""
-    replacement = change(node)
-    if replacement is not None:
-        return replacement
-    if isinstance(node, Apply):
-        arguments = tuple(rebuild(argument, change) for argument in node.arguments)
-        if arguments != node.arguments:
-            return Apply(node.operator, arguments, node.span)
-    return node
+    """A copy in which each node for which `change` returns a node is replaced by that (not walked again).
+
+    Parts that several places share are rebuilt once and stay shared; depth is not limited by recursion.
+    """
+    done: dict[int, Node] = {}
+    stack: list[tuple[Node, bool]] = [(node, False)]
+    while stack:
+        part, ready = stack.pop()
+        if id(part) in done:
+            continue
+        if isinstance(part, Apply) and ready:
+            arguments = tuple(done[id(argument)] for argument in part.arguments)
+            same = all(new is old for new, old in zip(arguments, part.arguments, strict=True))
+            done[id(part)] = part if same else Apply(part.operator, arguments, part.span)
+            continue
+        replacement = change(part)
+        if replacement is not None:
+            done[id(part)] = replacement
+        elif isinstance(part, Apply):
+            stack.append((part, True))
+            stack.extend((argument, False) for argument in reversed(part.arguments))
+        else:
+            done[id(part)] = part
+    return done[id(node)]
 
 
 def substitute(node: Node, values: Mapping[str, Node]) -> Node:
