@@ -49,6 +49,7 @@ GAUSS[1:10:2] = _HALF_GAUSS
 GAUSS[11:20:2] = _HALF_GAUSS[::-1]
 _WEIGHTS = np.stack([KRONROD, GAUSS], axis=1)
 
+_NOISE = 5  # bisections in a row without gain after which a panel is taken for noise
 _CHUNK = 12_000  # panels evaluated at a time: bounds the memory
 
 
@@ -73,7 +74,7 @@ def integrate(
     relative: float = 1e-12,
     absolute: float = 0.0,
     rounds: int = 130,
-    most_panels: int = 4_000_000,
+    most_panels: int | None = None,
 ) -> Integrals:
     """Integrate `function(x, owner)` over the panels, summed by owner.
 
@@ -81,14 +82,18 @@ def integrate(
     (components, points). `lower`, `upper`, `owner` have one entry a panel; all limits are finite.
     A panel is accepted when its error is below relative * |integral| / 40 of its owner (for every component)
     or below absolute / 40; only the first `control` components (default: all) are so controlled. What is not accepted after `rounds` bisections or `most_panels` panels keeps its
-    error, so the error stated is always the sum over all panels; it never vanishes from the account.
+    error, so the error stated is always the sum over all panels; it never vanishes from the account. The
+    same holds for panels whose error both halves inherit over several bisections: that is rounding noise.
     """
+    most_panels = 40_000 + 2_000 * owners if most_panels is None else most_panels
     value = np.zeros((components, owners))
     error = np.zeros((components, owners))
     evaluations = 0
     panels = 0
     keep = upper > lower
     lower, upper, owner = lower[keep], upper[keep], owner[keep]
+    before = np.full((components, lower.size), np.inf)  # the parents' differences
+    stuck = np.zeros(lower.size, np.int64)
     for round_ in range(rounds + 1):
         if not lower.size:
             break
@@ -101,6 +106,11 @@ def integrate(
         done = (difference <= np.maximum(allowed, 4e-16 * size))[:control].all(axis=0)
         middle = 0.5 * (lower + upper)
         done |= (middle <= lower) | (middle >= upper) | (upper - lower <= 4e-16 * np.abs(middle))
+        if round_:
+            pairs = difference[:control].reshape(-1, 2, before.shape[1])
+            inherited = (pairs > 0.2 * before[:control, None, :]).all(axis=1).any(axis=0)
+            stuck = np.tile(np.where(inherited, stuck + 1, 0), 2)
+            done |= stuck >= _NOISE
         if round_ == rounds or panels > most_panels:
             done[:] = True
         value += _sum_by(owner[done], kronrod[:, done], owners)
@@ -111,6 +121,7 @@ def integrate(
             np.concatenate([middle[rest], upper[rest]]),
         )
         owner = np.concatenate([owner[rest], owner[rest]])
+        before, stuck = difference[:, rest], stuck[rest]
     return Integrals(value, error, evaluations)
 
 

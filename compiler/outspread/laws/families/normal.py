@@ -44,7 +44,11 @@ class Normal(ScaledLaw):
         return (0.0, 1.0, 0.0, 3.0)
 
     def between(self, lower: npt.ArrayLike, upper: npt.ArrayLike) -> Array:
-        return normal_between(*np.broadcast_arrays(self._standardise(lower), self._standardise(upper)))
+        low, high = np.broadcast_arrays(np.asarray(lower, float), np.asarray(upper, float))
+        with np.errstate(invalid="ignore"):
+            # the ends' own difference keeps the digits that standardising would round away
+            width = (high - low) / self.scale
+        return normal_between(self._standardise(low), self._standardise(high), width)
 
 
 class Lognormal(ScaledLaw):

@@ -19,17 +19,17 @@ from outspread.formula.tree import Node, names
 from outspread.laws.law import Array, Estimates
 from outspread.numerics.quadrature import integrate, panels_between
 from outspread.numerics.sets import Sets
-from outspread.routes.slices import cases
-from outspread.routes.slices.axis import Axis
-from outspread.routes.slices.inner import (
+from outspread.numerics.slices import cases
+from outspread.numerics.slices.axis import Axis
+from outspread.numerics.slices.inner import (
     ConditionalInner,
     IndependentInner,
     Inner,
     boundary,
     probability,
 )
-from outspread.routes.slices.problem import Combinations, Problem, combinations
-from outspread.routes.slices.solve import PARAMETER, Solver
+from outspread.numerics.slices.problem import Combinations, Problem, combinations
+from outspread.numerics.slices.solve import PARAMETER, Solver
 
 Index = npt.NDArray[np.int64]
 ROUNDING = 2.3e-16 * 4  # units in the last place lost on the way through a formula, relative to its terms
@@ -192,7 +192,7 @@ class PlaneMeasure:
             return np.stack([probability(where, inner, given) * weight, lost * weight])
 
         result = integrate(
-            integrand, lower, upper, owner, count, components=2, relative=self.relative, control=1
+            integrand, lower, upper, owner, count, components=2, relative=self.relative, absolute=1e-300, control=1
         )
         self.effort.evaluations += result.evaluations
         error = result.error[0] + np.abs(result.value[1]) + self._relative_error * result.value[0]

@@ -16,13 +16,14 @@ import numpy.typing as npt
 from outspread.formula.calculus import derivative
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.interval import Interval, enclose
-from outspread.formula.tree import Apply, Name, Node, Number, names, occurrences, subtract
+from outspread.formula.tree import Apply, Name, Node, Number, names, subtract
 from outspread.numerics import sets
 from outspread.numerics.sets import Array, Sets
-from outspread.routes.slices import cases, pullback
-from outspread.routes.slices.isolate import Isolator
-from outspread.routes.slices.polynomial import quadratic_program
+from outspread.numerics.slices import cases, pullback
+from outspread.numerics.slices.isolate import root_finder
+from outspread.numerics.slices.polynomial import quadratic_program
 
+BOUND = "outspread:bound"  # an end of a target, for formulas solved as a whole
 PARAMETER = "outspread:y"  # the value y in {g <= y}; cannot clash with an input's name
 
 
@@ -90,29 +91,58 @@ class Solver:
             return lambda environment, count: sets.nothing(count)
         if name in names(right) and name not in names(left):
             left, right, operator = right, left, cases.FLIPPED[operator]
-        if occurrences(event, name) == 1 and (peeled := self._peel(left)):
-            return _target(operator, right, peeled)
         if name in names(right):
+            quadratic = quadratic_program(left, right, operator, name, PARAMETER, _function)
+            if quadratic is not None:
+                return quadratic
             left, right = subtract(left, right), Number(0.0)
-        quadratic = quadratic_program(left, right, operator, name, PARAMETER, _function)
-        if quadratic is not None:
-            return quadratic
-        self.exact = False
-        isolator = Isolator(left, right, operator, self.frame.name, self.frame.grid, PARAMETER)
-        return isolator.solve
+        return _target(operator, right, self._peel(left))
 
-    def _peel(self, node: Node) -> Callable[[Sets, Environment], Sets] | None:
-        """The inverse image of a target under the whole formula, or None where an operation has none."""
+    def _peel(self, node: Node) -> Callable[[Sets, Environment], Sets]:
+        """The inverse image of a target under the whole formula: operation by operation as long as the
+        variable stands in one operand only, then by the solver of what is left."""
         if isinstance(node, Name):
             return lambda target, environment: target
         assert isinstance(node, Apply)
-        name = self.frame.name
-        where = next(i for i, argument in enumerate(node.arguments) if name in names(argument))
-        inner = self._peel(node.arguments[where])
-        step = self._step(node, where)
-        if inner is None or step is None:
-            return None
+        holders = [i for i, argument in enumerate(node.arguments) if self.frame.name in names(argument)]
+        step = self._step(node, holders[0]) if len(holders) == 1 else None
+        if step is None:
+            return self._core(node)
+        inner = self._peel(node.arguments[holders[0]])
         return lambda target, environment: inner(sets.compact(step(target, environment)), environment)
+
+    def _core(self, node: Node) -> Callable[[Sets, Environment], Sets]:
+        """The inverse image under a formula in which the variable stands in several operands."""
+        name, bound = self.frame.name, Name(BOUND)
+        sides: list[Program] = []
+        for operator in ("less_equal", "greater_equal"):
+            quadratic = quadratic_program(node, bound, operator, name, BOUND, _function)
+            if quadratic is None:
+                self.exact = False
+                quadratic = root_finder(node, bound, operator, name, self.frame.grid, BOUND)
+            sides.append(quadratic)
+        below, above = sides
+
+        def pull(target: Sets, environment: Environment) -> Sets:
+            rows = []
+            for row in range(target.lower.shape[0]):
+                ends = []
+                for program, end, rate in (
+                    (below, target.upper[row], target.upper_rate[row]),
+                    (above, target.lower[row], target.lower_rate[row]),
+                ):
+                    full = target.lower[row] < target.upper[row]
+                    if full.any() and np.isfinite(end[full]).any():
+                        part = program({**environment, BOUND: end}, target.count)
+                        ends.append(_slowed(part, rate, np.isinf(end), full))
+                    elif full.any():
+                        ends.append(sets.where(full, sets.everything(target.count)))
+                    else:
+                        ends.append(sets.nothing(target.count))
+                rows.append(sets.intersect(ends[0], ends[1]))
+            return sets.stack(rows)
+
+        return pull
 
     def _step(self, node: Apply, where: int) -> Callable[[Sets, Environment], Sets] | None:
         operator = node.operator
@@ -146,6 +176,13 @@ class Solver:
             return pull(target, lower, upper)
 
         return periodic
+
+
+def _slowed(part: Sets, rate: Array, infinite: npt.NDArray[np.bool_], full: npt.NDArray[np.bool_]) -> Sets:
+    """Chain rule: the ends move with the bound, the bound with y. An infinite bound holds everywhere."""
+    whole = sets.where(infinite & full, sets.everything(part.count))
+    moved = Sets(part.lower, part.upper, part.lower_rate * rate, part.upper_rate * rate)
+    return sets.stack([sets.where(~infinite & full, moved), whole]) if infinite.any() else sets.where(full, moved)
 
 
 Function = Callable[[Environment, int], npt.NDArray[np.float64]]

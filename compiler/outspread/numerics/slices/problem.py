@@ -16,7 +16,7 @@ from outspread.formula.evaluate import compile_numpy
 from outspread.formula.interval import Interval, enclose
 from outspread.formula.tree import Node, names
 from outspread.laws.law import Array, Law
-from outspread.routes.slices import cases
+from outspread.numerics.slices import cases
 
 MOST_COMBINATIONS = 2_000_000
 MOST_WHOLE_CASES = 2_000
@@ -82,15 +82,15 @@ class Problem:
         return cases.both(comparison, *outside)
 
 
-def take_apart(expression: Node, laws: Mapping[str, Law], scores: Scores | None) -> Problem:
-    """The problem of deriving `expression` from the laws of its inputs.
-
-    Raises DerivationError for an input that is partly continuous and partly discrete inside a formula whose
-    route cannot treat it (such inputs are first split by `parts`).
-    """
-    used = names(expression)
-    continuous = tuple(name for name in laws if name in used and laws[name].continuous_mass > 0)
-    discrete = tuple(name for name in laws if name in used and laws[name].continuous_mass == 0)
+def take_apart(
+    expression: Node,
+    laws: Mapping[str, Law],
+    scores: Scores | None,
+    continuous: tuple[str, ...],
+    discrete: tuple[str, ...],
+) -> Problem:
+    """The problem of deriving `expression`, with each of its inputs taken as continuous or as discrete
+    (`parts` lists the ways)."""
     try:
         constant = tuple(cases.constant_cases(expression, continuous, _whole_numbers(laws)))
         known = True

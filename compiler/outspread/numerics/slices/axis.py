@@ -10,8 +10,8 @@ from __future__ import annotations
 import numpy as np
 
 from outspread.laws.law import Array, Law
-from outspread.routes.slices.inner import normal_score
-from outspread.routes.slices.solve import Frame
+from outspread.numerics.slices.inner import normal_score
+from outspread.numerics.slices.solve import Frame
 
 _TAILS = (1e-300, 1e-200, 1e-120, 1e-70, 1e-40, 1e-22, 1e-12, 1e-7, 1e-4, 0.01, 0.12)
 _COARSE_TAILS = (1e-300, 1e-120, 1e-40, 1e-12, 1e-4, 0.05)

@@ -7,12 +7,12 @@ size is kept as a boundary of its own (a double root, a jump or a pole), at whic
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 
 import numpy as np
 import numpy.typing as npt
 
-from outspread.formula.calculus import derivative
+from outspread.formula.calculus import derivative, nonsmooth
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.interval import Interval, enclose
 from outspread.formula.tree import Node, Number, names, subtract
@@ -24,6 +24,97 @@ Index = npt.NDArray[np.int64]
 _CHUNK = 20_000
 _SMALLEST = 4e-15
 _DEPTH = 64
+
+
+Solve = Callable[[Mapping[str, Array], int], Sets]
+
+
+def root_finder(left: Node, right: Node, operator: str, name: str, grid: Array, parameter: str) -> Solve:
+    """A solver of `left operator right` for `name`: where the left side holds no other name, its monotone
+    branches are found once and each problem is a bracketed root on every branch; else by subdivision."""
+    if names(left) == (name,) and name not in names(right):
+        return Branches(left, right, operator, name, grid, parameter).solve
+    return Isolator(left, right, operator, name, grid, parameter).solve
+
+
+class Branches:
+    """`left operator right` where left is a formula of `name` alone: its monotone, continuous branches."""
+
+    def __init__(self, left: Node, right: Node, operator: str, name: str, grid: Array, parameter: str):
+        self.below = operator in ("less", "less_equal")
+        self.value = compile_numpy(left, (name,))
+        self.slope = compile_numpy(derivative(left, name), (name,))
+        self.right_arguments = names(right)
+        self.right = compile_numpy(right, self.right_arguments)
+        self.rate = compile_numpy(derivative(right, parameter), self.right_arguments)
+        points = [grid[[0, -1]]]
+        for node in (derivative(left, name), *nonsmooth(left, name)):
+            if names(node) == (name,):
+                isolator = Isolator(node, Number(0.0), "less_equal", name, grid, parameter)
+                points.append(isolator.boundaries({}, 1)[0])
+        self.ends = np.unique(np.concatenate(points))
+
+    def solve(self, environment: Mapping[str, Array], count: int) -> Sets:
+        bound = np.broadcast_to(
+            np.asarray(self.right(*(environment[n] for n in self.right_arguments)), float), (count,)
+        )
+        speed = np.broadcast_to(
+            np.asarray(self.rate(*(environment[n] for n in self.right_arguments)), float), (count,)
+        )
+        low, high = self._inside(self.ends[:-1], 1), self._inside(self.ends[1:], -1)
+        rows = []
+        for a, b, start, end in zip(low, high, self.ends[:-1], self.ends[1:], strict=True):
+            rows.append(self._branch(float(a), float(b), float(start), float(end), bound, speed))
+        return sets.compact(sets.stack(rows))
+
+    def _inside(self, ends: Array, side: int) -> Array:
+        """The end of a branch, moved in by the least amount that gives it a value (poles, jumps)."""
+        moved = np.nextafter(ends, side * np.inf)
+        with np.errstate(all="ignore"):
+            at = np.asarray(self.value(ends), float)
+        return np.where(np.isfinite(at), ends, moved)
+
+    def _branch(self, a: float, b: float, start: float, end: float, bound: Array, speed: Array) -> Sets:
+        """One branch on [start, end], its values taken at a and b just inside."""
+        count = bound.size
+        inner = 1e-9 * (end - start)
+        with np.errstate(all="ignore"):
+            first, last = float(self.value(np.float64(a))), float(self.value(np.float64(b)))
+            near, far = float(self.value(np.float64(a + inner))), float(self.value(np.float64(b - inner)))
+        # a jump at an end shows as a value that does not continue the branch: the inner one counts
+        if not np.isfinite(first) or abs(first - near) > 0.1 * abs(far - near) + 1e-6 * abs(near):
+            a, first = float(np.nextafter(a, b)), near if not np.isfinite(first) else first
+            with np.errstate(all="ignore"):
+                first = float(self.value(np.float64(a)))
+        if not np.isfinite(last) or abs(last - far) > 0.1 * abs(far - near) + 1e-6 * abs(far):
+            b = float(np.nextafter(b, a))
+            with np.errstate(all="ignore"):
+                last = float(self.value(np.float64(b)))
+        if np.isnan(first) or np.isnan(last):
+            return sets.nothing(count)
+        rising = last >= first
+        least, most = min(first, last), max(first, last)
+        inside = (bound > least) & (bound < most)
+        index = np.flatnonzero(inside)
+        root, _ = bracketed_root(
+            lambda x, i: np.asarray(self.value(x), float) - bound[index[i]],
+            np.full(index.size, a), np.full(index.size, b), first - bound[index], last - bound[index],
+        )  # fmt: skip
+        rate = np.zeros(count)
+        with np.errstate(all="ignore"):
+            rate[index] = speed[index] / np.asarray(self.slope(root), float)
+        rate = np.where(np.isfinite(rate), rate, 0.0)
+        cut = np.full(count, np.nan)
+        cut[index] = root
+        holds_all = bound >= most if self.below else bound <= least
+        from_start = self.below == rising
+        lower = np.where(inside & ~np.asarray(from_start), cut, start)
+        upper = np.where(inside & np.asarray(from_start), cut, end)
+        keep = inside | holds_all
+        return Sets(
+            np.where(keep, lower, np.inf)[None], np.where(keep, upper, -np.inf)[None],
+            np.where(inside & (not from_start), rate, 0.0)[None], np.where(inside & from_start, rate, 0.0)[None],
+        )  # fmt: skip
 
 
 class Isolator:
@@ -61,7 +152,7 @@ class Isolator:
             return np.broadcast_to(np.asarray(function(*values), float), x.shape)  # type: ignore[operator]
 
     def _solve(self, environment: Mapping[str, Array], count: int) -> Sets:
-        roots, owners, moving = self._boundaries(environment, count)
+        roots, owners, moving = self.boundaries(environment, count)
         order = np.lexsort((roots, owners))
         roots, owners, moving = roots[order], owners[order], moving[order]
         per = np.bincount(owners, minlength=count)
@@ -86,42 +177,50 @@ class Isolator:
             np.where(holds, rates[:-1], 0.0), np.where(holds, rates[1:], 0.0),
         ))  # fmt: skip
 
-    def _boundaries(
+    def boundaries(
         self, environment: Mapping[str, Array], count: int
     ) -> tuple[Array, Index, npt.NDArray[np.bool_]]:
         """All sign changes (and undecided spots): positions, problem, whether they move with the parameter."""
-        cells = self.grid.size - 1
-        low = np.repeat(self.grid[:-1], count)
-        high = np.repeat(self.grid[1:], count)
-        owner = np.tile(np.arange(count), cells)
+        first = np.zeros(count, np.int64)
+        last = np.full(count, self.grid.size - 1)
+        low, high, owner = self.grid[first], self.grid[last], np.arange(count)
         found: list[tuple[Array, Index, npt.NDArray[np.bool_]]] = []
-        for depth in range(_DEPTH):
+        for depth in range(_DEPTH + 12):
             if not low.size:
                 break
             box = {key: Interval(value[owner], value[owner]) for key, value in environment.items()}
             box[self.name] = Interval(low, high)
             span = enclose(self.difference, box)
             # an empty enclosure (NaN) lies outside the domain and holds no root
-            possible = (span.lower <= 0) & (span.upper >= 0)
-            possible = np.broadcast_to(possible, low.shape)
+            possible = np.broadcast_to((span.lower <= 0) & (span.upper >= 0), low.shape)
+            bounded = np.broadcast_to(np.isfinite(span.lower) & np.isfinite(span.upper), low.shape)[possible]
             low, high, owner = low[possible], high[possible], owner[possible]
+            first, last = first[possible], last[possible]
             box = {key: Interval(value[owner], value[owner]) for key, value in environment.items()}
             box[self.name] = Interval(low, high)
             rise = enclose(self.slope, box)
-            steady = np.broadcast_to((rise.lower > 0) | (rise.upper < 0), low.shape)
-            whole = enclose(self.difference, box)
-            steady = steady & np.isfinite(whole.lower) & np.isfinite(whole.upper)
+            steady = np.broadcast_to((rise.lower > 0) | (rise.upper < 0), low.shape) & bounded
             if steady.any():
                 found.append(self._brackets(environment, low[steady], high[steady], owner[steady]))
             low, high, owner = low[~steady], high[~steady], owner[~steady]
-            middle = 0.5 * (low + high)
-            tiny = (high - low <= _SMALLEST * np.maximum(np.abs(low), np.abs(high))) | (middle <= low) | (middle >= high)
-            if depth == _DEPTH - 1:
+            first, last = first[~steady], last[~steady]
+            # halve by grid points, which are graded by probability, then within a cell
+            graded = last - first > 1
+            half = (first + last) // 2
+            middle = np.where(graded, self.grid[half], 0.5 * (low + high))
+            tiny = ~graded & (
+                (high - low <= _SMALLEST * np.maximum(np.abs(low), np.abs(high))) | (middle <= low) | (middle >= high)
+            )
+            if depth == _DEPTH + 11:
                 tiny[:] = True
             if tiny.any():
                 found.append((middle[tiny], owner[tiny], np.zeros(int(tiny.sum()), bool)))
             low, high, middle, owner = low[~tiny], high[~tiny], middle[~tiny], owner[~tiny]
+            first, last, half, graded = first[~tiny], last[~tiny], half[~tiny], graded[~tiny]
+            left_last = np.where(graded, half, last)
+            right_first = np.where(graded, half, first)
             low, high = np.concatenate([low, middle]), np.concatenate([middle, high])
+            first, last = np.concatenate([first, right_first]), np.concatenate([left_last, last])
             owner = np.concatenate([owner, owner])
         if not found:
             return np.zeros(0), np.zeros(0, np.int64), np.zeros(0, bool)

@@ -1,0 +1,305 @@
+"""Laws that come out of a derivation: cdf, ccdf and pdf by a route, quantiles and moments from those.
+
+A route supplies `evaluate(kind, y)`; this module keeps what was computed, inverts, integrates moments and
+decides from the tails which moments exist. It knows nothing of formulas or inputs.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from outspread.laws.law import Array, Atoms, Estimates, Law
+from outspread.numerics.roots import bracketed_root
+
+Evaluate = Callable[[str, Array], Estimates]
+KINDS = ("pdf", "cdf", "ccdf")
+
+
+@dataclass(frozen=True)
+class Tail:
+    """How probability beyond y falls off: like y^-exponent (inf: faster than any power), or `ends`."""
+
+    exponent: float
+    ends: bool
+
+
+class DerivedLaw(Law):
+    """`nodes`: ascending values that grade the range of the result from tail to tail, atoms included."""
+
+    def __init__(
+        self,
+        evaluate: Evaluate,
+        support: tuple[float, float],
+        nodes: Array,
+        atoms: Atoms | None = None,
+        continuous_mass: float = 1.0,
+        support_error: tuple[float, float] = (0.0, 0.0),
+        tail_probability: float = 1e-295,
+        tails: tuple[Tail, Tail] | None = None,
+    ):
+        self._evaluate = evaluate
+        self._support = support
+        self.support_error = support_error
+        self._atoms = Atoms.none() if atoms is None else atoms
+        self._continuous_mass = continuous_mass
+        inside = nodes[(nodes >= support[0]) & (nodes <= support[1]) & np.isfinite(nodes)]
+        self.nodes = np.unique(np.concatenate([inside, self._atoms.values]))
+        self.tail_probability = tail_probability
+        self._given_tails = tails
+        self._seen: dict[str, dict[float, tuple[float, float]]] = {kind: {} for kind in KINDS}
+        self._moments: tuple[Estimates, Array] | None = None
+
+    # --- values with errors -------------------------------------------------------------------------
+
+    def estimate(self, kind: str, y: npt.ArrayLike) -> Estimates:
+        """pdf, cdf or ccdf at y with bounds on the absolute errors."""
+        points = np.asarray(y, float)
+        flat = points.ravel()
+        seen = self._seen[kind]
+        missing = np.array(list(dict.fromkeys(v for v in flat.tolist() if v not in seen and v == v)))
+        if missing.size:
+            value, error = self._compute(kind, missing)
+            seen.update(zip(missing.tolist(), zip(value.tolist(), error.tolist(), strict=True), strict=True))
+        pairs = [seen.get(v, (np.nan, np.nan)) for v in flat.tolist()]
+        both = np.array(pairs, float).reshape(-1, 2)
+        return Estimates(both[:, 0].reshape(points.shape), both[:, 1].reshape(points.shape))
+
+    def _compute(self, kind: str, y: Array) -> tuple[Array, Array]:
+        low, high = self._support
+        value = np.zeros(y.size)
+        error = np.zeros(y.size)
+        below, above = y < low, y >= high
+        if kind == "pdf":
+            inside = ~below & (y <= high) & (self._continuous_mass > 0)
+        else:
+            inside = ~below & ~above
+            value[above if kind == "cdf" else below] = 1.0
+        if inside.any() and self._continuous_mass > 0:
+            result = self._evaluate(kind, y[inside])
+            value[inside], error[inside] = result.value, result.error
+        if kind != "pdf" and self._atoms.values.size:
+            mass, doubt = self._atom_sum(kind, y[inside])
+            value[inside] += mass
+            error[inside] += doubt
+        if kind != "pdf":
+            value = np.clip(value, 0.0, 1.0)
+        return value, error
+
+    def _atom_sum(self, kind: str, y: Array) -> tuple[Array, Array]:
+        atoms = self._atoms
+        last = np.searchsorted(atoms.values, y, side="right")
+        sums = []
+        for terms in (atoms.masses, atoms.errors):
+            before = np.concatenate([[0.0], np.cumsum(terms)])
+            after = np.concatenate([np.cumsum(terms[::-1])[::-1], [0.0]])
+            sums.append(before[last] if kind == "cdf" else after[last])
+        return sums[0], sums[1] + 2e-16 * atoms.values.size**0.5 * sums[0]
+
+    def pdf(self, x: npt.ArrayLike) -> Array:
+        return self.estimate("pdf", x).value
+
+    def cdf(self, x: npt.ArrayLike) -> Array:
+        return self.estimate("cdf", x).value
+
+    def ccdf(self, x: npt.ArrayLike) -> Array:
+        return self.estimate("ccdf", x).value
+
+    def support(self) -> tuple[float, float]:
+        return self._support
+
+    def atoms(self) -> Atoms:
+        return self._atoms
+
+    @property
+    def continuous_mass(self) -> float:
+        return self._continuous_mass
+
+    @property
+    def error(self) -> float:
+        """Bound on |cdf error| over the nodes."""
+        worst = [float(np.max(self.estimate(kind, self.nodes).error, initial=0.0)) for kind in ("cdf", "ccdf")]
+        return max(worst)
+
+    # --- quantiles ----------------------------------------------------------------------------------
+
+    def icdf(self, p: npt.ArrayLike) -> Array:
+        return self.estimate_quantile(p).value
+
+    def iccdf(self, q: npt.ArrayLike) -> Array:
+        return self.estimate_quantile(q, upper=True).value
+
+    def estimate_quantile(self, p: npt.ArrayLike, upper: bool = False) -> Estimates:
+        """icdf(p), or iccdf(p) where `upper`, with a bound on the error: the bracket within which the cdf with
+        its stated error crosses p. Outside [0, 1]: NaN."""
+        levels = np.asarray(p, float)
+        flat = levels.ravel()
+        value = np.full(flat.size, np.nan)
+        error = np.zeros(flat.size)
+        low, high = self._support
+        if upper:
+            low, high = high, low
+        value[flat == 0], value[flat == 1] = low, high
+        inside = (flat > 0) & (flat < 1)
+        if inside.any():
+            value[inside], error[inside] = self._solve(flat[inside], upper)
+        return Estimates(value.reshape(levels.shape), error.reshape(levels.shape))
+
+    def _solve(self, p: Array, upper: bool) -> tuple[Array, Array]:
+        kind = "ccdf" if upper else "cdf"
+        # the tail that is small at the target keeps its relative accuracy
+        other = p > 0.5
+        target = np.where(other, 1 - p, p)
+
+        def gap(y: Array, index: npt.NDArray[np.int64]) -> Array:
+            """log of probability over target; rising with y."""
+            result = np.empty(y.size)
+            for flip in (False, True):
+                part = other[index] == flip
+                if part.any():
+                    wanted = kind if not flip else ("cdf" if upper else "ccdf")
+                    with np.errstate(divide="ignore"):
+                        log = np.log(self.cdf(y[part]) if wanted == "cdf" else self.ccdf(y[part]))
+                        gap_ = np.maximum(log, -1e4) - np.log(target[index][part])
+                    result[part] = gap_ if wanted == "cdf" else -gap_
+            return result
+
+        left, right = self._bracket(gap, p.size)
+        root, width = bracketed_root(gap, left, right)
+        unknown = np.isnan(root)
+        root[unknown] = np.where(gap(left[unknown], np.flatnonzero(unknown)) >= 0, left[unknown], right[unknown])
+        root = self._snap(root)
+        return root, self._quantile_error(root, width, target, other, upper)
+
+    def _bracket(self, gap: Callable[[Array, npt.NDArray[np.int64]], Array], count: int) -> tuple[Array, Array]:
+        nodes = self.nodes
+        low, high = self._support
+        ends_low = low if np.isfinite(low) else min(2 * nodes[0] - nodes[-1], nodes[0])
+        ends_high = high if np.isfinite(high) else max(2 * nodes[-1] - nodes[0], nodes[-1])
+        points = np.unique(np.concatenate([[ends_low], nodes, [ends_high]]))
+        left, right = np.zeros(count, np.int64), np.full(count, points.size - 1)
+        index = np.arange(count)
+        while True:
+            middle = (left + right) // 2
+            open_ = right - left > 1
+            if not open_.any():
+                return points[left], points[right]
+            above = gap(points[middle], index) >= 0
+            right = np.where(open_ & above, middle, right)
+            left = np.where(open_ & ~above, middle, left)
+
+    def _snap(self, y: Array) -> Array:
+        """The root finder stops within the last digits of an atom; the atom itself is the quantile."""
+        atoms = self._atoms.values
+        if not atoms.size:
+            return y
+        near = np.clip(np.searchsorted(atoms, y), 1, max(atoms.size - 1, 1))
+        candidates = atoms[np.stack([near - 1, np.minimum(near, atoms.size - 1)])]
+        best = np.argmin(np.abs(candidates - y), axis=0)
+        closest = candidates[best, np.arange(y.size)]
+        return np.where(np.abs(closest - y) <= 1e-14 * np.maximum(np.abs(closest), 1e-300), closest, y)
+
+    def _quantile_error(self, y: Array, width: Array, target: Array, other: Array, upper: bool) -> Array:
+        from_below = other == upper  # whether the cdf (not the ccdf) is the small one
+        estimate = [self.estimate(kind, y) for kind in ("cdf", "ccdf")]
+        doubt = np.where(from_below, estimate[0].error, estimate[1].error)
+        density = self.pdf(y) if self._continuous_mass > 0 else np.zeros_like(y)
+        with np.errstate(all="ignore"):
+            step = 1.5 * doubt / density + width + 4e-16 * np.abs(y)
+        if self._atoms.values.size:
+            at_atom = np.isin(y, self._atoms.values)
+            step[at_atom] = 0.0
+        return self._widened(y, step, target, from_below)
+
+    def _widened(self, y: Array, step: Array, target: Array, from_below: npt.NDArray[np.bool_]) -> Array:
+        """Widen the step until the cdf, its error included, is surely below and above the target."""
+        scale = max(float(self.nodes[-1] - self.nodes[0]), 1e-300)
+        step = np.where(np.isfinite(step), step, 1e-12 * scale)
+        open_ = np.flatnonzero(step > 0)
+        for _ in range(40):
+            if not open_.size:
+                break
+            sure = np.ones(open_.size, bool)
+            for side in (-1.0, 1.0):
+                at = y[open_] + side * step[open_]
+                below, above = self.estimate("cdf", at), self.estimate("ccdf", at)
+                small = np.where(from_below[open_], below.value, above.value)
+                doubt = np.where(from_below[open_], below.error, above.error)
+                rising = np.where(from_below[open_], side, -side)
+                passed = (small - target[open_]) * rising >= doubt
+                outside = (at <= self._support[0]) | (at >= self._support[1])
+                sure &= passed | outside
+            open_ = open_[~sure]
+            step[open_] *= 2
+        return step
+
+    # --- moments ------------------------------------------------------------------------------------
+
+    def tails(self) -> tuple[Tail, Tail]:
+        """How the lower and the upper tail fall off, from the local exponent y f(y) / P(beyond y) at
+        probabilities down to 1e-240; a power tail shows a constant exponent (Embrechts, Klüppelberg and
+        Mikosch 1997, Modelling Extremal Events, section 3.3: regular variation and moments)."""
+        if self._given_tails is None:
+            self._given_tails = (self._tail(-1), self._tail(1))
+        return self._given_tails
+
+    def _tail(self, side: int) -> Tail:
+        end = self._support[0 if side < 0 else 1]
+        if np.isfinite(end) or self._continuous_mass == 0:
+            return Tail(np.inf, True)
+        levels = np.array([1e-30, 1e-60, 1e-120, 1e-240])
+        levels = levels[levels > self.tail_probability]
+        y = self.iccdf(levels) if side > 0 else self.icdf(levels)
+        centre = float(self.icdf(0.5))
+        beyond = self.ccdf(y) if side > 0 else self.cdf(y)
+        with np.errstate(all="ignore"):
+            exponent = np.abs(y - centre) * self.pdf(y) / beyond
+        exponent = exponent[np.isfinite(exponent)]
+        if exponent.size < 3:
+            return Tail(np.inf, False)
+        first, second, third = exponent[-3:]
+        if third > 60 or abs(third - second) > 0.05 * third + 0.02:
+            return Tail(np.inf, False)
+        # logarithmic corrections fade like 1 / log y, which halves from level to level
+        limit = 2 * third - second
+        whole = round(limit)
+        return Tail(float(whole if abs(limit - whole) < 2e-3 else limit), False)
+
+    def moment_exists(self, order: int) -> bool:
+        return all(tail.exponent > order for tail in self.tails())
+
+    def central(self) -> tuple[Estimates, Array]:
+        """E[(Y - c)^k], k = 1..4, about c near the median, and c: by integrating k (y - c)^(k-1) P(beyond y)."""
+        if self._moments is None:
+            from outspread.laws.moments import central_moments
+
+            centre = float(self.icdf(0.5))
+            orders = [k for k in (1, 2, 3, 4) if self.moment_exists(k)]
+            self._moments = central_moments(self, centre, max(orders, default=0)), np.array(centre)
+        return self._moments
+
+    def moment_estimates(self) -> Estimates:
+        """Mean, standard deviation, skewness and kurtosis with error bounds; NaN where one does not exist,
+        inf where it diverges."""
+        from outspread.laws.moments import standardised
+
+        raw, centre = self.central()
+        return standardised(raw, float(centre))
+
+    def mean(self) -> float:
+        return float(self.moment_estimates().value[0])
+
+    def variance(self) -> float:
+        return float(self.moment_estimates().value[1]) ** 2
+
+    def standard_deviation(self) -> float:
+        return float(self.moment_estimates().value[1])
+
+    def skewness(self) -> float:
+        return float(self.moment_estimates().value[2])
+
+    def kurtosis(self) -> float:
+        return float(self.moment_estimates().value[3])

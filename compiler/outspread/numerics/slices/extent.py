@@ -1,0 +1,126 @@
+"""The smallest interval that holds all values of a formula, by branch and bound on interval enclosures."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from outspread.formula.evaluate import compile_numpy
+from outspread.formula.interval import Interval, enclose
+from outspread.formula.tree import Node
+from outspread.laws.law import Array, Law
+
+_MOST_BOXES = 4_000
+_ROUNDS = 60
+
+
+@dataclass(frozen=True)
+class Extent:
+    """Outer bounds that are sure, and how much further in the true ends may lie (0 where infinite)."""
+
+    lower: float
+    upper: float
+    lower_error: float = 0.0
+    upper_error: float = 0.0
+
+
+def extent(expression: Node, laws: Mapping[str, Law], used: Sequence[str]) -> Extent:
+    """The range of the formula over the supports of the inputs it uses."""
+    supports = [laws[name].support() for name in used]
+    grids = [_grid(laws[name]) for name in used]
+    upper, upper_error = _greatest(expression, used, supports, grids, 1.0)
+    lower, lower_error = _greatest(expression, used, supports, grids, -1.0)
+    return Extent(-lower, upper, lower_error, upper_error)
+
+
+def _grid(law: Law) -> Array:
+    """A starting partition of the support: ends and a few quantiles."""
+    low, high = law.support()
+    with np.errstate(all="ignore"):
+        inner = law.icdf([1e-12, 1e-3, 0.5, 1 - 1e-3, 1 - 1e-12])
+    inner = np.concatenate([inner, law.breaks(), [0.0]])
+    inner = inner[np.isfinite(inner) & (inner > low) & (inner < high)]
+    return np.unique(np.concatenate([[low], inner, [high]]))
+
+
+def _greatest(
+    expression: Node,
+    used: Sequence[str],
+    supports: Sequence[tuple[float, float]],
+    grids: Sequence[Array],
+    sign: float,
+) -> tuple[float, float]:
+    """(sure upper bound of sign * formula, gap to a value that is attained)."""
+    if not used:
+        value = sign * float(compile_numpy(expression, ())())
+        return value, 0.0
+    evaluate = compile_numpy(expression, used)
+    if len(used) > 3:
+        lows = np.array([[low for low, _ in supports]])
+        highs = np.array([[high for _, high in supports]])
+    else:
+        lows, highs = _cells(grids)
+    best = -np.inf
+    bound = np.inf
+    for _ in range(_ROUNDS):
+        with np.errstate(all="ignore"):
+            box = {n: Interval(lows[:, i], highs[:, i]) for i, n in enumerate(used)}
+            span = enclose(expression, box)
+            reach = np.broadcast_to(np.asarray(span.upper if sign > 0 else -span.lower, float), lows.shape[:1])
+            corner = _representative(lows, highs)
+            value = sign * np.asarray(evaluate(*corner.T), float) + 0.0
+        reach = np.where(np.isnan(reach), -np.inf, reach)
+        finite = value[~np.isnan(value)]
+        best = max(best, float(finite.max())) if finite.size else best
+        bound = float(reach.max())
+        if bound == np.inf or bound <= best or bound - best <= 1e-14 * max(abs(bound), abs(best)):
+            break
+        keep = reach > best
+        lows, highs, reach = lows[keep], highs[keep], reach[keep]
+        if lows.shape[0] > _MOST_BOXES or len(used) > 3:
+            break
+        lows, highs = _halved(lows, highs)
+    if np.isinf(bound):
+        return bound, 0.0
+    return bound, max(bound - best, 0.0) if np.isfinite(best) else 0.0
+
+
+def _cells(grids: Sequence[Array]) -> tuple[Array, Array]:
+    lower = np.meshgrid(*(grid[:-1] for grid in grids), indexing="ij")
+    upper = np.meshgrid(*(grid[1:] for grid in grids), indexing="ij")
+    return np.stack([a.ravel() for a in lower], 1), np.stack([a.ravel() for a in upper], 1)
+
+
+def _representative(lows: Array, highs: Array) -> Array:
+    """Points of the boxes: all corners (finite ones) and middles."""
+    middle = np.where(np.isinf(lows), highs - 1, np.where(np.isinf(highs), lows + 1, 0.5 * (lows + highs)))
+    middle = np.where(np.isinf(lows) & np.isinf(highs), 0.0, middle)
+    low = np.where(np.isinf(lows), middle, lows)
+    high = np.where(np.isinf(highs), middle, highs)
+    points = [middle]
+    dimensions = lows.shape[1]
+    for code in range(2 ** min(dimensions, 4)):
+        pick = np.array([(code >> i) & 1 for i in range(dimensions)], bool)
+        points.append(np.where(pick, high, low))
+    return np.concatenate(points)
+
+
+def _halved(lows: Array, highs: Array) -> tuple[Array, Array]:
+    """Halve each box along its widest side (an infinite side is cut at twice its finite end)."""
+    width = np.where(np.isinf(highs - lows), np.inf, highs - lows)
+    relative = width / np.maximum(np.abs(lows) + np.abs(highs), 1e-300)
+    relative = np.where(np.isinf(width), np.inf, relative)
+    axis = np.argmax(relative, axis=1)
+    row = np.arange(lows.shape[0])
+    low, high = lows[row, axis], highs[row, axis]
+    cut = np.where(
+        np.isinf(low) & np.isinf(high), 0.0,
+        np.where(np.isinf(high), 2 * np.abs(low) + 1, np.where(np.isinf(low), -2 * np.abs(high) - 1, 0.5 * (low + high))),
+    )  # fmt: skip
+    left_high, right_low = highs.copy(), lows.copy()
+    left_high[row, axis] = cut
+    right_low[row, axis] = cut
+    return np.concatenate([lows, right_low]), np.concatenate([left_high, highs])
+

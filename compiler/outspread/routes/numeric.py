@@ -1,0 +1,264 @@
+"""Derives the law of a formula of at most two continuous inputs (and any discrete ones) as a `DerivedLaw`.
+
+One continuous input: change of variables, every branch of the inverse. Two: the region integral. None:
+every combination of the discrete inputs. What has more continuous inputs is left to `sampling`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from outspread.errors import DerivationError
+from outspread.formula.evaluate import compile_numpy
+from outspread.formula.tree import Name, Node, Number, names
+from outspread.laws.derived import DerivedLaw
+from outspread.laws.law import Array, Atoms, Estimates, Law
+from outspread.numerics.slices import cases
+from outspread.numerics.slices.axis import Axis
+from outspread.numerics.slices.extent import Extent, extent
+from outspread.numerics.slices.measure import LineMeasure, PlaneMeasure
+from outspread.numerics.slices.problem import (
+    Combinations,
+    Problem,
+    Scores,
+    combinations,
+    evaluate_cases,
+    parts,
+    take_apart,
+)
+from outspread.numerics.slices.solve import PARAMETER
+
+Measure = LineMeasure | PlaneMeasure
+NO_PARAMETER = np.zeros(1)
+_SAME = 2e-13  # values of discrete results closer than this (relatively) are one value
+
+
+@dataclass(frozen=True)
+class Piece:
+    """One way to take the partly discrete inputs: a problem and how its probabilities are measured."""
+
+    problem: Problem
+    combos: Combinations
+    measure: Measure | None
+
+    @property
+    def evaluations(self) -> int:
+        return self.combos.count if self.measure is None else self.measure.effort.evaluations
+
+
+@dataclass(frozen=True)
+class NumericLaw:
+    law: DerivedLaw
+    pieces: tuple[Piece, ...]
+
+    @property
+    def evaluations(self) -> int:
+        return sum(piece.evaluations for piece in self.pieces)
+
+
+def derive(
+    expression: Node,
+    laws: Mapping[str, Law],
+    scores: Scores | None,
+    outer: tuple[str, ...] = (),
+    relative: float = 1e-12,
+) -> NumericLaw:
+    """The law of the expression. `outer` names the input to integrate over where there are two.
+
+    Raises DerivationError where the formula has more than two continuous inputs in some part, has no value
+    with a probability that matters, or is constant on infinitely many pieces.
+    """
+    pieces = []
+    for continuous, discrete in parts(expression, laws):
+        problem = take_apart(expression, laws, scores, continuous, discrete)
+        pieces.append(Piece(problem, combinations(problem), _measure(problem, outer, relative)))
+    atoms, continuous_mass = _all_atoms(pieces)
+    spread = extent(expression, laws, names(expression))
+    nodes = _nodes(pieces, spread)
+    law = DerivedLaw(
+        _evaluator(pieces), (spread.lower, spread.upper), nodes, atoms, continuous_mass,
+        (spread.lower_error, spread.upper_error),
+    )  # fmt: skip
+    result = NumericLaw(law, tuple(pieces))
+    _check_whole(result)
+    return result
+
+
+def _measure(problem: Problem, outer: tuple[str, ...], relative: float) -> Measure | None:
+    if not problem.constant_known:
+        raise DerivationError("the formula takes a constant value on too many pieces to go through one by one")
+    if not problem.continuous:
+        return None
+    if len(problem.continuous) == 1:
+        return LineMeasure(problem)
+    if len(problem.continuous) > 2:
+        raise DerivationError(f"{len(problem.continuous)} continuous inputs enter; two at most can be integrated")
+    first, second = problem.continuous
+    if outer and outer[0] == second:
+        first, second = second, first
+    return PlaneMeasure(problem, first, second, relative)
+
+
+def _evaluator(pieces: list[Piece]):  # type: ignore[no-untyped-def]
+    def evaluate(kind: str, y: Array) -> Estimates:
+        value, error = np.zeros(y.size), np.zeros(y.size)
+        for piece in pieces:
+            if piece.measure is None:
+                continue
+            operator = "greater" if kind == "ccdf" else "less_equal"
+            event = piece.problem.moving_event(
+                cases.comparison(operator, piece.problem.expression, Name(PARAMETER))
+            )
+            if event == cases.FALSE:
+                continue
+            method = piece.measure.rate if kind == "pdf" else piece.measure.event
+            part = method(event, y)
+            value += part.value
+            error += part.error
+        return Estimates(value, error)
+
+    return evaluate
+
+
+def _all_atoms(pieces: list[Piece]) -> tuple[Atoms, float]:
+    """The atoms of all pieces, equal values together, and the mass of the continuous part."""
+    values: list[Array] = []
+    masses: list[Array] = []
+    errors: list[Array] = []
+    covered = False
+    for piece in pieces:
+        for value, mass, error in _piece_atoms(piece):
+            values.append(value)
+            masses.append(mass)
+            errors.append(error)
+        covered = covered or piece.measure is not None
+    if not values:
+        return Atoms.none(), 1.0
+    atoms = merge_atoms(np.concatenate(values), np.concatenate(masses), np.concatenate(errors))
+    if not covered:
+        return atoms, 0.0
+    rest = 1.0 - float(atoms.masses.sum())
+    return atoms, rest if rest > 1e-13 else 0.0
+
+
+def _piece_atoms(piece: Piece) -> list[tuple[Array, Array, Array]]:
+    problem, combos = piece.problem, piece.combos
+    if piece.measure is None:
+        arguments = names(problem.expression)
+        with np.errstate(all="ignore"):
+            value = compile_numpy(problem.expression, arguments)(*(combos.values[n] for n in arguments))
+        value = np.broadcast_to(np.asarray(value, float), (combos.count,))
+        return [(value, combos.weights, 1e-15 * combos.weights)]
+    found = []
+    for condition, value in _disjoint(problem, evaluate_cases(problem, combos)):
+        if condition == cases.FALSE:
+            continue
+        mass = piece.measure.by_combination(condition, NO_PARAMETER)
+        found.append((value, mass.value[0] * combos.weights, mass.error[0] * combos.weights))
+    return found
+
+
+def _disjoint(problem: Problem, values: list[Array]) -> list[tuple[Node, Array]]:
+    """Constant cases with equal values joined by `or`; others, which may overlap, one outside the other."""
+    by_number: dict[float, list[Node]] = {}
+    rest: list[tuple[Node, Array]] = []
+    for (condition, value), numbers in zip(problem.constant, values, strict=True):
+        if isinstance(value, Number) or not names(value):
+            by_number.setdefault(float(numbers[0]), []).append(condition)
+        else:
+            rest.append((condition, numbers))
+    joined = [
+        (cases.either(*conditions), np.full(1, number).repeat(values[0].size))
+        for number, conditions in by_number.items()
+    ]
+    if not rest:
+        return joined
+    before: list[Node] = [condition for condition, _ in joined]
+    for condition, numbers in rest:
+        joined.append((cases.both(condition, *(cases.opposite(earlier) for earlier in before)), numbers))
+        before.append(condition)
+    return joined
+
+
+def merge_atoms(values: Array, masses: Array, errors: Array) -> Atoms:
+    """Sort, join values that differ by rounding only, and print each to its shortest equal decimal."""
+    if np.isnan(values[masses > 0]).any():
+        raise DerivationError("the formula has no value for some combinations of its discrete inputs")
+    keep = masses > 0
+    values, masses, errors = values[keep], masses[keep], errors[keep]
+    order = np.argsort(values, kind="stable")
+    values, masses, errors = values[order], masses[order], errors[order]
+    gap = np.diff(values) > _SAME * np.maximum(np.abs(values[1:]), np.abs(values[:-1]))
+    group = np.concatenate([[0], np.cumsum(gap)])
+    first = np.flatnonzero(np.concatenate([[True], gap]))
+    tidy = np.array([float(f"{value:.14g}") for value in values[first].tolist()])
+    return Atoms(tidy, np.bincount(group, masses), np.bincount(group, errors))
+
+
+def _nodes(pieces: list[Piece], spread: Extent) -> Array:
+    """Values that grade the result from tail to tail: the formula at a grid of graded inputs."""
+    found: list[Array] = []
+    for piece in pieces:
+        if piece.measure is None:
+            continue
+        problem = piece.problem
+        grids = [Axis(name, problem.laws[name]).grid for name in problem.continuous]
+        step = max(1, piece.combos.count // 24)
+        picks = np.arange(0, piece.combos.count, step)
+        mesh = np.meshgrid(*grids, picks, indexing="ij")
+        environment = {name: axis.ravel() for name, axis in zip(problem.continuous, mesh, strict=False)}
+        index = mesh[-1].ravel().astype(int)
+        environment.update({name: value[index] for name, value in piece.combos.values.items()})
+        arguments = names(problem.expression)
+        with np.errstate(all="ignore"):
+            value = compile_numpy(problem.expression, arguments)(*(environment[n] for n in arguments))
+        value = np.ravel(np.asarray(value, float))
+        found.append(np.unique(value[np.isfinite(value)]))
+    if not found:
+        return np.zeros(0)
+    points = np.unique(np.concatenate(found))
+    if points.size > 160:
+        points = points[np.unique(np.round(np.linspace(0, points.size - 1, 160)).astype(int))]
+    return np.unique(np.concatenate([points, _far(points, spread)]))
+
+
+def _far(points: Array, spread: Extent) -> Array:
+    """Ever further points towards infinite ends, ever closer ones towards finite ends."""
+    middle = float(np.median(points))
+    size = max(float(np.quantile(points, 0.75) - np.quantile(points, 0.25)), 1e-12 * abs(middle), 1e-300)
+    powers = 10.0 ** np.concatenate([np.arange(0, 20, 1.0), np.arange(20, 60, 4.0), np.arange(60, 300, 20.0)])
+    found: list[Array] = []
+    with np.errstate(over="ignore"):
+        for end, side in ((spread.lower, -1.0), (spread.upper, 1.0)):
+            if np.isinf(end):
+                found.append(middle + side * size * powers)
+            else:
+                reach = abs(end - middle)
+                found.append(np.append(end - side * reach / powers, end))
+    far = np.concatenate(found)
+    return far[np.isfinite(far)]
+
+
+def _check_whole(result: NumericLaw) -> None:
+    """cdf and ccdf must add up to 1; what is missing is where the formula has no value."""
+    law = result.law
+    if law.continuous_mass == 0:
+        total, doubt = float(law.atoms().masses.sum()), 1e-12
+    else:
+        inner = law.nodes[1:-1] if law.nodes.size > 2 else law.nodes
+        points = inner[np.unique(np.linspace(0, inner.size - 1, 5).astype(int))]
+        below, above = law.estimate("cdf", points), law.estimate("ccdf", points)
+        totals = below.value + above.value
+        worst = int(np.argmax(np.abs(totals - 1)))
+        total, doubt = float(totals[worst]), float(below.error[worst] + above.error[worst])
+    missing = 1.0 - total
+    if missing > 5 * doubt + 1e-12:
+        raise DerivationError(
+            f"the formula has no value with probability {missing:.3g} (a root or logarithm of a negative "
+            "number, for example); limit the inputs by `truncate`, or say with if(…) what holds there"
+        )
+    if missing < -(5 * doubt + 1e-12):
+        raise DerivationError(f"the derived probabilities add up to {total!r}; please report this model")
