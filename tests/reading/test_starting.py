@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import shutil
+import subprocess
+import sys
 from pathlib import Path
 
 import pytest
@@ -64,3 +67,22 @@ def test_shipped_files_are_found() -> None:
     assert resource("models").is_dir()
     with pytest.raises(FileNotFoundError, match="lacks its folder 'nothing'"):
         resource("nothing")
+
+
+def test_an_installed_package_carries_its_own_files(tmp_path: Path) -> None:
+    """In the layout of the wheel, away from the repository, the packaged schema is the one in use."""
+    root = Path(__file__).resolve().parents[2]
+    package = tmp_path / "outspread"
+    shutil.copytree(root / "compiler" / "outspread", package, ignore=shutil.ignore_patterns("__pycache__"))
+    shutil.copytree(root / "schema", package / "schema")
+    code = (
+        "import sys; from outspread.reading.build import read_model; "
+        "from outspread.resources import resource; "
+        "print(resource('schema'), read_model(sys.argv[1]).title)"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", code, str(MODELS[0])],
+        capture_output=True, text=True, check=True, cwd=tmp_path,
+        env={"PYTHONPATH": str(tmp_path), "HOME": str(tmp_path)},
+    )  # fmt: skip
+    assert done.stdout.startswith(f"{package / 'schema'} ")

@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Mapping
 
-from outspread.formula.tree import Node
+from outspread.errors import FormulaError
+from outspread.formula.tree import COMPARISONS, Apply, Node, Number, names, walk
 from outspread.reading.context import Context
 from outspread.reading.document import Path
 from outspread.reading.model import Accuracy, Readings, Requirement
@@ -92,8 +94,40 @@ def _event(context: Context, path: Path, outputs: tuple[str, ...]) -> Node | Non
     units = {name: context.units[name] for name in outputs if name in context.units}
     if len(units) < len(outputs):
         return None  # an output's unit is at fault, and that is reported
+    for part in walk(node):
+        compares = isinstance(part, Apply) and part.operator in COMPARISONS
+        if compares and _ambiguous(context, path, part, units):
+            return None
     found = context.resolved(path, node, None, units=units, numbers=True)
     return None if found is None else found[0]
+
+
+def _ambiguous(context: Context, path: Path, comparison: Node, units: Mapping[str, str]) -> bool:
+    """Whether a number in the comparison could be in the units of two outputs; if so, the fault is noted."""
+    from outspread.formula.units import resolve_units, same_dimension
+
+    used = names(comparison)
+    text = context.written(path)
+    pairs = [
+        (first, second)
+        for first in used
+        for second in used
+        if units[first] != units[second] and same_dimension(units[first], units[second])
+    ]
+    if not pairs or not any(isinstance(part, Number) for part in walk(comparison)):
+        return False
+    try:
+        resolve_units(comparison, units, None, text)  # numbers are factors only
+    except FormulaError:
+        first, second = pairs[0]
+        message = (
+            f"{quoted(first)} is in {units[first]} and {quoted(second)} in {units[second]}, so that the "
+            "number could be in either; give both outputs one unit, or compare them in an output of their own"
+        )
+        span = comparison.span if isinstance(comparison, Apply) else (0, len(text))
+        context.formula_fault(path, FormulaError(message, text, *span))
+        return True
+    return False
 
 
 def build_readings(context: Context, outputs: tuple[str, ...]) -> Readings:
