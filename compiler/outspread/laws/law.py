@@ -103,6 +103,15 @@ class Law(ABC):
         """Whether the absolute moment E|X|^order is finite."""
         return order <= 0 or order < self.moment_order
 
+    def tail_orders(self) -> tuple[float, float]:
+        """`moment_order` of the lower and of the upper tail alone: infinite at a finite end."""
+        low, high = self.support()
+        infinite = float("inf")
+        return (
+            self.moment_order if low == -infinite else infinite,
+            self.moment_order if high == infinite else infinite,
+        )
+
     def between(self, lower: npt.ArrayLike, upper: npt.ArrayLike) -> Array:
         """P(lower < X <= upper), accurate relative to itself except for cancellation within one tail;
         0 where upper <= lower."""

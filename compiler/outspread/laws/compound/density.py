@@ -40,14 +40,16 @@ class FormulaLaw(IntegralLaw):
             )
         self._compiled = compile_numpy(formula, ("x",))
         self._total = 1.0
+        self._tails = (INF, INF)
         self.ends = (lower, upper)
         grid = self._grid()
         self._check(grid)
         self.centre, self.spread = self._place(grid)
         self.corners = self._corners(formula, grid)
+        self._tails = (self._tail_order(-1), self._tail_order(1))
         self._normalise()
         self.relative_error = max(1e-12, 4 * self.panels.error)
-        self.moment_order = min(self._tail_order(-1), self._tail_order(1))
+        self.moment_order = min(self._tails)
 
     def standard_pdf(self, z: Array) -> Array:
         with np.errstate(all="ignore"):
@@ -123,13 +125,18 @@ class FormulaLaw(IntegralLaw):
         """Order below which moments of one side exist: infinite unless the density falls like a power."""
         if np.isfinite(self.ends[0 if side < 0 else 1]):
             return INF
-        x = side * self.spread * 10.0 ** np.array([20.0, 40.0, 60.0])
-        values = self.standard_pdf(x)
-        if not np.all((values > 0) & np.isfinite(values)):
-            return INF
-        first, second = -np.diff(np.log10(values)) / 20
-        # the same slope over forty decades is a power law; a slope that grows is not
-        return float(second - 1) if abs(first - second) < 0.05 else INF
+        for farthest in (1e45, 1e20, 1e9):
+            x = side * self.spread * farthest ** np.array([1 / 3, 2 / 3, 1.0])
+            values = self.standard_pdf(x)
+            if not np.all((values > 1e-290) & np.isfinite(values)):
+                continue
+            first, second = -np.diff(np.log(values)) / np.log(farthest) * 3
+            # one slope over many decades is a power law; a slope that grows is not
+            return float(round(second, 6) - 1) if abs(first - second) < 1e-5 * second else INF
+        return INF
+
+    def tail_orders(self) -> tuple[float, float]:
+        return self._tails
 
     def singular_ends(self) -> tuple[bool, bool]:
         first, last = (

@@ -83,12 +83,20 @@ class MixtureLaw(Law):
         values, index = np.unique(np.concatenate([atoms.values for atoms in each]), return_inverse=True)
         masses = np.concatenate([w * atoms.masses for w, atoms in zip(self.weights, each, strict=True)])
         errors = np.concatenate([w * atoms.errors for w, atoms in zip(self.weights, each, strict=True)])
-        return Atoms(values, np.asarray(np.bincount(index, masses), float), np.asarray(np.bincount(index, errors), float))
+        return Atoms(
+            values,
+            np.asarray(np.bincount(index, masses), float),
+            np.asarray(np.bincount(index, errors), float),
+        )
 
     @property
     def continuous_mass(self) -> float:
         parts = zip(self.weights, self.laws, strict=True)
         return float(min(1.0, sum(weight * law.continuous_mass for weight, law in parts)))
+
+    def tail_orders(self) -> tuple[float, float]:
+        firsts, lasts = zip(*(law.tail_orders() for law in self.laws), strict=True)
+        return (min(firsts), min(lasts))
 
     def breaks(self) -> tuple[float, ...]:
         low, high = self.support()

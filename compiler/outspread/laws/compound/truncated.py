@@ -54,16 +54,9 @@ class TruncatedLaw(Law):
         #: the point up to which probability is taken away: an atom on the limit itself stays
         self._open_lower = lower if base.continuous_mass == 1 else float(np.nextafter(lower, -INF))
         self.relative_error = 3 * base.relative_error + 1e-14
-        low, high = base.support()
-        cut = (np.isfinite(lower) or lower == low) and (np.isfinite(upper) or upper == high)
-        bounded = np.isfinite(lower) and np.isfinite(upper)
-        self.moment_order = INF if bounded else self._order(low, high) if cut else base.moment_order
-
-    def _order(self, low: float, high: float) -> float:
-        """A cut tail has all moments; the one that stays may not."""
-        open_side = 1 if np.isfinite(self.lower) else 0
-        tails = getattr(self.base, "tail_orders", None)
-        return tails[open_side] if tails else self.base.moment_order
+        # a tail that is cut has all moments
+        first, last = base.tail_orders()
+        self.moment_order = min(INF if np.isfinite(lower) else first, INF if np.isfinite(upper) else last)
 
     def support(self) -> tuple[float, float]:
         return (self.lower, self.upper)

@@ -141,18 +141,26 @@ class FisherF(ScaledLaw):
         u, v = self._fractions(z)
         return beta_lower(0.5 * self.d2, 0.5 * self.d1, v, u)
 
-    def _ratio(self, small: Array, large: Array) -> Array:
-        return np.asarray(self.d2 / self.d1 * small / large)
-
     def standard_icdf(self, p: Array) -> Array:
         a, b = 0.5 * self.d1, 0.5 * self.d2
         u, v = beta_lower_inverse(a, b, p), beta_lower_inverse(b, a, 1 - p)
-        return np.where(u < 0.5, self._ratio(u, 1 - u), self._ratio(1 - v, v))
+        start = self.d2 / self.d1 * np.where((p < 0.5) & (u < 0.999), u / (1 - u), (1 - v) / v)
+        return self._polish(start, p, upper=False)
 
     def standard_iccdf(self, q: Array) -> Array:
         a, b = 0.5 * self.d1, 0.5 * self.d2
         v, u = beta_lower_inverse(b, a, q), beta_lower_inverse(a, b, 1 - q)
-        return np.where(v < 0.5, self._ratio(1 - v, v), self._ratio(u, 1 - u))
+        start = self.d2 / self.d1 * np.where((q < 0.5) & (v < 0.999), (1 - v) / v, u / (1 - u))
+        return self._polish(start, q, upper=True)
+
+    def _polish(self, z: Array, tail: Array, *, upper: bool) -> Array:
+        """Newton steps on the logarithm: the beta quantile is short of digits where its fraction nears 1."""
+        for _ in range(3):
+            value = self.standard_ccdf(z) if upper else self.standard_cdf(z)
+            step = np.log(value / tail) * value / self.standard_pdf(z) * (-1 if upper else 1)
+            use = (tail <= 0.5) & np.isfinite(step) & (np.abs(step) < 0.1 * z)
+            z = np.where(use, z - step, z)
+        return z
 
     def singular_ends(self) -> tuple[bool, bool]:
         return (self.d1 < 2, False)

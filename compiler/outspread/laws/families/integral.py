@@ -17,28 +17,31 @@ from outspread.numerics.roots import bracketed_root
 
 Mask = npt.NDArray[np.bool_]
 NODES, WEIGHTS = (array.astype(float) for array in np.polynomial.legendre.leggauss(20))
-HALVED_NODES = np.concatenate((0.5 * (NODES - 1), 0.5 * (NODES + 1)))
-HALVED_WEIGHTS = np.concatenate((WEIGHTS, WEIGHTS)) / 2
 #: a panel is accepted where its rule and the same rule on its halves agree to this, relative to its mass
 AGREEMENT = 1e-14
 ROUNDING = 4e-16
 MOST_PANELS = 20_000
 #: a panel at a singular point other than 0 is not cut below this share of the point: x - point is rounded
 END_SHARE = 1e-8
+#: the lighter half of a panel holds at least this share of its mass
+STEEPEST = 1e-5
 #: masses below this carry no relative accuracy: doubles thin out below 1e-308
 NEGLIGIBLE = 1e-302
 CHUNK = 20_000
+Tail = tuple[float, float]
 
 
 class Panels:
     """Edges ascending; `below` and `above` are the masses on either side of each edge, `error` their
-    accumulated relative error."""
+    accumulated relative error; `tails`: mass beyond the outermost edges, and the order of its power law.
+    """
 
-    def __init__(self, edges: Array, masses: Array, differences: Array, ends: tuple[float, float]):
-        self.edges, self.masses = edges, masses
-        self.below = np.concatenate(([ends[0]], ends[0] + np.cumsum(masses)))
-        self.above = np.concatenate(((ends[1] + np.cumsum(masses[::-1]))[::-1], [ends[1]]))
-        self.total = float(self.below[-1] + ends[1])
+    def __init__(self, edges: Array, masses: Array, differences: Array, tails: tuple[Tail, Tail]):
+        self.edges, self.masses, self.tails = edges, masses, tails
+        first, last = tails[0][0], tails[1][0]
+        self.below = np.concatenate(([first], first + np.cumsum(masses)))
+        self.above = np.concatenate(((last + np.cumsum(masses[::-1]))[::-1], [last]))
+        self.total = float(self.below[-1] + last)
         left, right = np.cumsum(differences), np.cumsum(differences[::-1])[::-1]
         with np.errstate(all="ignore"):
             ratios = np.concatenate((left / self.below[1:], right / self.above[:-1]))
@@ -70,13 +73,22 @@ class IntegralLaw(ScaledLaw):
         count = 0
         for round_ in range(400):
             whole = self._rule(low, high)
-            halves = self._rule(low, high, halved=True)
+            first, second = (
+                self._rule(low, low + 0.5 * (high - low)),
+                self._rule(low + 0.5 * (high - low), high),
+            )
+            halves = first + second
             middle, near_end, exhausted = self._split(low, high)
-            # the exponent of a small density is itself rounded, so that its values scatter
+            # the exponent of a small density is itself rounded, so that its values scatter; so is the
+            # distance from a singular point
             scatter = ROUNDING * np.maximum(-np.log(np.maximum(halves, NEGLIGIBLE)), 0.0)
+            scatter += ROUNDING * np.maximum(np.abs(low), np.abs(high)) / (high - low)
             with np.errstate(invalid="ignore"):
                 difference = np.abs(whole - halves)
                 accepted = (difference <= (AGREEMENT + scatter) * halves) | (halves < NEGLIGIBLE)
+            # the rule must also hold from an edge to any point between, where the density may be far smaller
+            steep = np.minimum(first, second) < STEEPEST * halves
+            accepted &= ~steep | (halves < NEGLIGIBLE)
             for index in np.flatnonzero(~accepted & exhausted):
                 halves[index], difference[index] = self._next_to_end(low[index], high[index])
             accepted |= exhausted | (middle <= low) | (middle >= high)
@@ -133,15 +145,14 @@ class IntegralLaw(ScaledLaw):
         mass = float(width * far / exponent)
         return mass, mass * (END_SHARE if point else 1e-15)
 
-    def _rule(self, low: Array, high: Array, halved: bool = False) -> Array:
-        nodes, weights = (HALVED_NODES, HALVED_WEIGHTS) if halved else (NODES, WEIGHTS)
+    def _rule(self, low: Array, high: Array) -> Array:
         result = np.empty(low.shape)
         with np.errstate(invalid="ignore"):
             for start in range(0, low.size, CHUNK):
                 part = slice(start, start + CHUNK)
                 half = 0.5 * (high[part] - low[part])
-                z = (low[part] + half)[:, None] + half[:, None] * nodes
-                result[part] = half * (self._density(z) @ weights)
+                z = (low[part] + half)[:, None] + half[:, None] * NODES
+                result[part] = half * (self._density(z) @ WEIGHTS)
         return result
 
     def _first_edges(self) -> Array:
@@ -157,20 +168,20 @@ class IntegralLaw(ScaledLaw):
             else:
                 points = points[np.isfinite(points)]
                 # the density may vanish between two of its parts: what is 0 to the very end is left out
-                present = np.flatnonzero(self._density(points) * np.abs(points) > NEGLIGIBLE)
+                present = np.flatnonzero(self._density(points) * self.spread > NEGLIGIBLE)
                 points = points[: present[-1] + 2] if present.size else points[:2]
             edges.extend(points)
         return np.unique(np.concatenate((edges, self.corners)))
 
-    def _remainder(self, edge: float) -> float:
-        """Mass beyond the outermost edge: 0 at an end of the support, else that of the fitted power law."""
+    def _remainder(self, edge: float) -> Tail:
+        """Mass beyond the outermost edge and the order of its power law: 0 at an end of the support."""
         if edge in self.ends:
-            return 0.0
+            return (0.0, INF)
         inner, outer = self._density(np.array([edge / 2, edge]))
         if not (outer * abs(edge) > NEGLIGIBLE and inner > outer):
-            return 0.0
-        exponent = np.log2(inner / outer)
-        return float(abs(edge) * outer / (exponent - 1)) if exponent > 1 else 0.0
+            return (0.0, INF)
+        order = float(np.log2(inner / outer)) - 1
+        return (float(abs(edge) * outer / order), order) if order > 0 else (INF, 0.0)
 
     def _panel_of(self, z: Array) -> npt.NDArray[np.int64]:
         panels = self.panels
@@ -180,13 +191,24 @@ class IntegralLaw(ScaledLaw):
     def _tail(self, z: Array, upper: bool) -> Array:
         """P(Z > z) or P(Z <= z): summed from its own side, or as the rest where that is the shorter way."""
         panels = self.panels
+        given, outside = z, (z < panels.edges[0]) | (z > panels.edges[-1])
         z = np.clip(z, panels.edges[0], panels.edges[-1])
         index = self._panel_of(z)
         from_above = (panels.above[index + 1] < 0.5) if upper else (panels.below[index] >= 0.5)
         start = np.where(from_above, z, panels.edges[index])
         end = np.where(from_above, panels.edges[index + 1], z)
         mass = np.where(from_above, panels.above[index + 1], panels.below[index]) + self._rule(start, end)
-        return np.asarray(np.where(from_above == upper, mass, 1 - mass))
+        mass = np.where(from_above == upper, mass, 1 - mass)
+        return np.asarray(np.where(outside, self._far_tail(given, upper), mass))
+
+    def _far_tail(self, z: Array, upper: bool) -> Array:
+        """The tail beyond the outermost edges, by the power law fitted there (0 or 1 without one)."""
+        (first, first_order), (last, last_order) = self.panels.tails
+        low, high = self.panels.edges[0], self.panels.edges[-1]
+        with np.errstate(all="ignore"):
+            below = first * (z / low) ** -first_order if first > 0 else np.zeros_like(z)
+            above = last * (z / high) ** -last_order if last > 0 else np.zeros_like(z)
+        return np.where(z < low, 1 - below if upper else below, above if upper else 1 - above)
 
     def standard_cdf(self, z: Array) -> Array:
         return self._tail(z, False)
@@ -220,7 +242,12 @@ class IntegralLaw(ScaledLaw):
         everything = np.arange(goal.size)
         at_low, at_high = np.minimum(excess(low, everything), 0.0), np.maximum(excess(high, everything), 0.0)
         root, _ = bracketed_root(excess, low, high, at_low, at_high)
-        return np.asarray(np.where(np.isnan(root), np.where(at_low == 0, low, high), root))
+        root = np.where(np.isnan(root), np.where(at_low == 0, low, high), root)
+        beyond, order = panels.tails[1 if upper else 0]
+        if beyond > 0:
+            far = panels.edges[-1 if upper else 0] * (goal / beyond) ** (-1 / order)
+            root = np.where(goal < beyond, far, root)
+        return np.asarray(root)
 
     def between(self, lower: npt.ArrayLike, upper: npt.ArrayLike) -> Array:
         low, high = np.broadcast_arrays(self._standardise(lower), self._standardise(upper))
@@ -258,5 +285,9 @@ class IntegralLaw(ScaledLaw):
         half = 0.5 * (edges[1:] - edges[:-1])
         z = (edges[:-1] + half)[:, None] + half[:, None] * NODES
         with np.errstate(all="ignore"):
-            values = np.nan_to_num(self._density(z) * (z - about) ** order, posinf=0.0, neginf=0.0)
-        return float(np.sum(half * (values @ WEIGHTS)))
+            density = self._density(z)
+            values = np.nan_to_num(density * (z - about) ** order, posinf=0.0, neginf=0.0)
+            # next to a singular end the panel's mass is known better than by the rule
+            share = np.nan_to_num(self.panels.masses / (half * (density @ WEIGHTS)), nan=1.0, posinf=1.0)
+        share = np.where(self.panels.masses > NEGLIGIBLE, share, 1.0)
+        return float(np.sum(half * (values @ WEIGHTS) * share))

@@ -18,7 +18,6 @@ from outspread.laws.functions.normal import (
     ROOT_TWO,
     ROOT_TWO_PI,
     exp_minus_half_square,
-    normal_between,
     normal_ccdf,
     normal_cdf,
     normal_icdf,
@@ -75,9 +74,6 @@ class FoldedNormal(IntegralLaw):
 
     def standard_pdf(self, z: Array) -> Array:
         return normal_pdf(z - self.ratio) + normal_pdf(z + self.ratio)
-
-    def standard_cdf(self, z: Array) -> Array:
-        return normal_between(-z - self.ratio, z - self.ratio)
 
     def standard_ccdf(self, z: Array) -> Array:
         return normal_ccdf(z - self.ratio) + normal_ccdf(z + self.ratio)
