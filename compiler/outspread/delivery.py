@@ -135,7 +135,7 @@ def _write(order: Order, derivation: Derivation, progress: Callable[[str], None]
     for row in disagreements:
         note = f" ({row.note})" if row.note else ""
         complaints += (
-            f"{order.file}: {row.output}: the derivation disagrees with the {row.against}: the difference is"
+            f"{order.file}: {row.output}: the derivation disagrees with {row.against}: the difference is"
             f" {row.largest_difference:.3g} where {row.allowed:.3g} is allowed{note}\n"
         )
     if complaints and status in (0, 1) and not disagreements:

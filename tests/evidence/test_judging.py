@@ -207,9 +207,9 @@ def test_all_comparisons_of_an_output_come_in_a_fixed_order() -> None:
     rows = judge_output(derived, sample)
     assert [row.against for row in rows] == [
         LABEL,
-        "integral of the density",
+        "the integral of the density",
         "the numeric law, for the closed form",
-        "symbolic density",
+        "the symbolic density",
     ]
     assert all(row.agrees for row in rows)
     assert judge_event("a and b", 0.2515, 1e-4, sample).agrees

@@ -205,7 +205,7 @@ def judge_atoms(output: str, law: Law, draws: Array, label: str) -> list[Compari
     return [
         Comparison(
             output,
-            f"relative frequencies of the atoms in {label}",
+            f"the relative frequencies of the atoms in {label}",
             int(heavy.size),
             float(away[worst]),
             float(allowed[worst]),
@@ -220,12 +220,12 @@ def judge_density(output: str, law: Law) -> Comparison:
     panels = integrate_density(law)
     if panels.difference.size == 0:
         return Comparison(
-            output, "integral of the density", 0, 0.0, 0.0, True, note="no panel holds probability"
+            output, "the integral of the density", 0, 0.0, 0.0, True, note="no panel holds probability"
         )
     worst = int(np.argmax(panels.difference - panels.allowed))
     return Comparison(
         output,
-        "integral of the density",
+        "the integral of the density",
         int(panels.difference.size),
         float(panels.difference[worst]),
         float(panels.allowed[worst]),
@@ -283,7 +283,7 @@ def judge_symbolic(derived: DerivedOutput) -> Comparison:
     # a closed formula evaluated in double precision: rounding only, relative to its value
     allowed = (rows.error + 1e-10 * np.abs(rows.value))[finite]
     return _worst(
-        derived.output, "symbolic density", points.size, [np.zeros(1), away], [np.zeros(1), allowed]
+        derived.output, "the symbolic density", points.size, [np.zeros(1), away], [np.zeros(1), allowed]
     )
 
 
@@ -304,5 +304,5 @@ def judge_event(text: str, probability: float, error: float, sample: Sample) -> 
     away = abs(sample.events[text] - probability)
     allowed = band(sample.count) + error
     return Comparison(
-        text, f"relative frequency in {sample.label}", 1, away, allowed, away <= allowed, CONFIDENCE
+        text, f"the relative frequency in {sample.label}", 1, away, allowed, away <= allowed, CONFIDENCE
     )
