@@ -135,8 +135,8 @@ def _write(order: Order, derivation: Derivation, progress: Callable[[str], None]
     for row in disagreements:
         note = f" ({row.note})" if row.note else ""
         complaints += (
-            f"{order.file}: {row.output}: the derivation disagrees with {row.against}: the difference is"
-            f" {row.largest_difference:.3g} where {row.allowed:.3g} is allowed{note}\n"
+            f"{order.file}: {row.output}: the derivation disagrees with {row.against}: the difference"
+            f" is {row.largest_difference:.3g} where {row.allowed:.3g} is allowed{note}\n"
         )
     if complaints and status in (0, 1) and not disagreements:
         status = MISSING_LIBRARY
@@ -163,7 +163,7 @@ def status_of(results: Results) -> int:
 
 
 def summary(results: Results) -> list[str]:
-    """What came out, in a few lines: each output's figures, each requirement in one sentence, the evidence."""
+    """What came out: each output's figures, each requirement in one sentence, the evidence."""
     lines = [results.title]
     lines += [f"  {_figures(output)}" for output in results.outputs]
     for row in results.requirements:

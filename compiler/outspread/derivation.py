@@ -268,7 +268,7 @@ def time_limit(seconds: float | None, progress: Progress | None) -> Iterator[Pro
         start = time.monotonic()
 
         def watched(words: str) -> None:
-            if time.monotonic() - start > seconds:
+            if time.monotonic() - start >= seconds:
                 raise overdue
             say(words)
 

@@ -164,7 +164,8 @@ def test_register_of_assumptions() -> None:
         " probability 1.",
         "compiler: a and b are independent: the model says nothing else.",
         "compiler: The second derivation by 1,000,000 draws is compared in a band in which a right answer"
-        " stays with a probability of at least 99.99 %; agreement does not show that the model itself is right.",
+        " stays with a probability of at least 99.99 %; agreement does not show that the model itself is"
+        " right.",
     ]
 
 
