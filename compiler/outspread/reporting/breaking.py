@@ -22,12 +22,15 @@ def lines(row: Row, width: float, hanging: float, measure: Measure) -> tuple[Row
         return (row,)
     finished: list[list[Part]] = []
     current: list[Part] = []
+    used = 0.0
     for piece in _pieces(row.parts, width - hanging, measure):
         room = width - (hanging if finished else 0.0)
-        if current and measure(Row((*current, *piece))) > room:
+        wide = measure(Row((_NOTHING, *piece)))
+        if current and used + wide > room:
             finished.append(current)
-            current = [_NOTHING]  # an empty atom: an operator at the start of a line keeps its space
+            current, used = [_NOTHING], 0.0  # an empty atom: an operator at the start keeps its space
         current.extend(piece)
+        used += wide
     finished.append(current)
     return tuple(Row(tuple(_trimmed(parts))) for parts in finished)
 

@@ -74,6 +74,21 @@ def height(part: Part) -> float:
     return max(0.9, part.size) if isinstance(part, Symbol) else 0.9
 
 
+def count(part: Part) -> int:
+    """Symbols side by side, scripts counted as half: a row is hardly narrower than 0.3 em for each."""
+    if isinstance(part, Row):
+        return sum(count(inner) for inner in part.parts)
+    if isinstance(part, Fraction):
+        return max(count(part.above), count(part.below))
+    if isinstance(part, Scripts):
+        return count(part.base) + max(count(row) if row else 0 for row in (part.below, part.above)) // 2
+    if isinstance(part, (Fence, Root, Mark)):
+        return count(part.body)
+    if isinstance(part, Table):
+        return max((sum(count(cell) for cell in cells) for cells in part.rows), default=0)
+    return 1
+
+
 def delimiter_size(part: Part) -> float:
     """Height in em of delimiters around the part; 0 where the plain character will do."""
     tall = height(part)
@@ -91,6 +106,11 @@ def flat(parts: tuple[Part, ...]) -> list[Part]:
             found.extend(flat(part.body.parts))
             if part.right:
                 found.append(Symbol(part.right, "close", size=size))
+        elif isinstance(part, Table) and (part.left or part.right):
+            size = delimiter_size(part)
+            found += [Symbol(part.left, "open", size=size)] if part.left else []
+            found.append(Table("", part.rows, "", part.align))
+            found += [Symbol(part.right, "close", size=size)] if part.right else []
         else:
             found.append(part)
     return found
@@ -125,11 +145,17 @@ def _is_sum(row: Row) -> bool:
 
 def mathml(row: Row) -> str:
     """A `math` element for one line of a formula."""
-    return f'<math display="block">{_row(row, False)}</math>'
+    return f'<math display="block">{"".join(_inside(row, False))}</math>'
 
 
 def _row(row: Row, script: bool) -> str:
-    """The row's parts in one mrow, or the only one without."""
+    """The row's parts in one mrow, or the only one without: each mrow doubles the time that ziamath takes."""
+    pieces = _inside(row, script)
+    return pieces[0] if len(pieces) == 1 else f"<mrow>{''.join(pieces)}</mrow>"
+
+
+def _inside(row: Row, script: bool) -> list[str]:
+    """The row's parts and the spaces between them."""
     pieces: list[str] = []
     before = "open"
     for part in flat(row.parts):
@@ -142,9 +168,7 @@ def _row(row: Row, script: bool) -> str:
         pieces.append(_draw(part, script))
         if kind:
             before = kind
-    if len(pieces) == 1:
-        return pieces[0]
-    return f"<mrow>{''.join(pieces)}</mrow>"
+    return pieces
 
 
 @singledispatch
@@ -221,17 +245,11 @@ def _(part: Mark, script: bool) -> str:
 
 @_draw.register
 def _(part: Table, script: bool) -> str:
-    size = f'{delimiter_size(part):.2f}em'
-    sides = [
-        f'<mo stretchy="false" minsize="{size}" maxsize="{size}" {_TIGHT}>{escape(side)}</mo>' if side else ""
-        for side in (part.left, part.right)
-    ]
     rows = "".join(
-        "<mtr>" + "".join(f"<mtd>{_row(cell, script)}</mtd>" for cell in cells) + "</mtr>"
+        "<mtr>" + "".join(f"<mtd>{''.join(_inside(cell, script))}</mtd>" for cell in cells) + "</mtr>"
         for cells in part.rows
     )
-    table = f'<mtable columnalign="{part.align}" columnspacing="1em" rowspacing="0.35em">{rows}</mtable>'
-    return f"<mrow>{sides[0]}{table}{sides[1]}</mrow>"
+    return f'<mtable columnalign="{part.align}" columnspacing="1em" rowspacing="0.35em">{rows}</mtable>'
 
 
 _SUPERSCRIPT = str.maketrans("0123456789+−-()n", "⁰¹²³⁴⁵⁶⁷⁸⁹⁺⁻⁻⁽⁾ⁿ")
@@ -270,7 +288,8 @@ def _words(part: Part) -> str:
     if isinstance(part, Fraction):
         if not part.line:
             return f"{plain(part.above)} over {plain(part.below)}"
-        return f"{_grouped(part.above)}/{_grouped(part.below)}"
+        above = plain(part.above)
+        return f"{f'({above})' if _is_sum(part.above) else above}/{_grouped(part.below)}"
     if isinstance(part, Root):
         radical = "√" if part.index is None else f"{plain(part.index).translate(_SUPERSCRIPT)}√"
         return f"{radical}{_grouped(part.body)}"

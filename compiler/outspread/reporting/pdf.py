@@ -8,6 +8,7 @@ from __future__ import annotations
 import contextlib
 import hashlib
 import io
+import warnings
 from collections.abc import Iterator
 from datetime import UTC, datetime
 from importlib.resources import files
@@ -32,7 +33,14 @@ def render_pdf(html: str, report: ReportData) -> bytes:
     weasyprint = _weasyprint()
     fonts = _fonts()
     fetcher = _fetcher(weasyprint, frozenset(path.as_uri() for _, path, _ in fonts))
-    style = weasyprint.CSS(string=_font_faces(fonts) + _page_margins(report), url_fetcher=fetcher)
+    page = _page_margins(report)
+    with warnings.catch_warnings():  # the library leaves its own colour profile to the collector to close
+        warnings.simplefilter("ignore", ResourceWarning)
+        return _written(weasyprint, html, report, _font_faces(fonts) + page, fetcher)
+
+
+def _written(weasyprint: Any, html: str, report: ReportData, css: str, fetcher: Any) -> bytes:
+    style = weasyprint.CSS(string=css, url_fetcher=fetcher)
     document = weasyprint.HTML(string=html, url_fetcher=fetcher)
     return bytes(
         document.write_pdf(

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import base64
 import re
+import warnings
 from dataclasses import dataclass
 from functools import lru_cache
 
@@ -15,7 +16,7 @@ from markupsafe import Markup, escape
 
 from outspread.reporting.breaking import lines
 from outspread.reporting.latex import LatexError, Row, read
-from outspread.reporting.mathml import mathml, plain
+from outspread.reporting.mathml import count, mathml, plain
 
 #: width that a displayed formula may take, in em of the text around it: the narrowest column (A4 print),
 #: less its indent and its number
@@ -40,9 +41,10 @@ class Drawing:
 @lru_cache(maxsize=8192)
 def draw(row: Row) -> Drawing:
     """One line of a formula as SVG."""
-    from ziamath.config import config
-    from ziamath.zmath import Math
-
+    with warnings.catch_warnings():  # ziamath finds its font by a call that the library marks as old
+        warnings.simplefilter("ignore", DeprecationWarning)
+        from ziamath.config import config
+        from ziamath.zmath import Math
     config.svg2 = False
     config.precision = 2
     picture = Math(mathml(row), size=_DRAWN_AT, margin=0.6)
@@ -89,15 +91,21 @@ def display(latex: str, number: str = "") -> Markup:
 
 def _fitted(row: Row) -> list[tuple[Row, float]]:
     """Lines with the scale at which they fit: a little smaller first, then broken."""
-    width = draw(row).width
+    width = _width(row)
     if width <= COLUMN / SMALLEST_SCALE:
         return [(row, min(1.0, COLUMN / width) if width else 1.0)]
-    broken = lines(row, COLUMN, HANGING, lambda part: draw(part).width)
+    broken = lines(row, COLUMN, HANGING, _width)
     fitted = []
     for index, line in enumerate(broken):
         room = COLUMN - (HANGING if index else 0.0)
         fitted.append((line, min(1.0, room / max(draw(line).width, 1e-9))))
     return fitted
+
+
+def _width(row: Row) -> float:
+    """Width in em; of a row that is far wider than the column only a lower bound, without drawing it."""
+    least = 0.3 * count(row)
+    return least if least > 3 * COLUMN else draw(row).width
 
 
 _MATHEMATICS = re.compile(r"(?<!\\)\$([^$]+)\$")
