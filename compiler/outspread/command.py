@@ -182,7 +182,12 @@ def _derive(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> in
     statuses: list[int] = []
     workers = min(arguments.jobs, len(orders))
     if workers > 1:
-        statuses = [_report(outcome, stdout, stderr) for outcome in deliver_all(orders, workers)]
+        with _Line(stderr, f"{len(orders)} models") as line:
+            line.say("none is derived yet")
+            for outcome in deliver_all(orders, workers):
+                line.clear()
+                statuses.append(_report(outcome, stdout, stderr))
+                line.say(f"{len(statuses)} derived")
     else:
         for order in orders:
             with _Line(stderr, order.file) as line:
@@ -213,10 +218,13 @@ class _Line:
             self.stream.write(f"\r\x1b[K{self.file}: {words}")
             self.stream.flush()
 
-    def __exit__(self, *exception: object) -> None:
+    def clear(self) -> None:
         if self.shown:
             self.stream.write("\r\x1b[K")
             self.stream.flush()
+
+    def __exit__(self, *exception: object) -> None:
+        self.clear()
 
 
 def _check(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:

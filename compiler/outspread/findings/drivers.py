@@ -86,19 +86,26 @@ class Shares:
         for name, output in wanted:
             if name not in order:
                 x = values[name][:size]
-                order[name] = (
-                    np.argsort(x, kind="stable"),
-                    np.argsort(x[: x.size // 2], kind="stable"),
-                )
+                order[name] = (_order(x), _order(x[: x.size // 2]))
             if output not in measured:
                 y = values[output][:size]
                 ranks = np.empty(y.size)
-                ranks[np.argsort(y, kind="stable")] = np.arange(y.size)
+                ranks[_order(y)] = np.arange(y.size)
                 measured[output] = {"values": y, "ranks": ranks / y.size}
             whole, half = order[name]
             for kind, y in measured[output].items():
                 pair = (_neighbours(y, whole), _neighbours(y[: y.size // 2], half))
                 self.estimates.setdefault((output, name, kind), []).append(pair)
+
+
+def _order(x: Array) -> Order:
+    """The order of ascending x, equal ones as they were drawn: the same on every machine.
+
+    The fast sort leaves the order of equal values to the processor, so it serves only where none are equal.
+    """
+    order = np.argsort(x)
+    ordered = x[order]
+    return np.argsort(x, kind="stable") if bool(np.any(ordered[1:] == ordered[:-1])) else order
 
 
 def _neighbours(y: Array, order: Order) -> float:
