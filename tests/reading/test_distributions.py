@@ -178,6 +178,13 @@ def test_truncation_that_leaves_nothing(written: object, limits: object) -> None
     assert "the limits leave probability 0" in fault(written, truncate=limits)
 
 
+def test_truncation_of_a_distribution_that_is_wrong_itself() -> None:
+    """Only the cause is reported."""
+    assert fault({"normal": {"mean": 0, "sd": -1}}, truncate={"lower": 0}) == (
+        "distribution.normal.sd: sd is -1, and a number above 0 would be right"
+    )
+
+
 def test_truncation_to_one_atom() -> None:
     """A count can be cut to its smallest value."""
     assert read({"poisson": {"mean": 1}}, unit="1", truncate={"upper": 0}).upper == 0.0

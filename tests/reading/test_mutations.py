@@ -31,7 +31,38 @@ record: {number: SK-1}
 cautions: [Calm water only.]
 """
 )
-TEXTS = [RICH, starting_model("spring")]
+RICH = RICH.replace("sd: 0.005}}", "sd: 0.005}}\n    truncate: {lower: 41.9, upper: 42.1}")
+WIDE = """\
+outspread: 1
+title: Every way to state a distribution
+constants: {k: 2}
+inputs:
+  a:
+    distribution:
+      mixture: {weights: [0.5, 0.5], distributions: [{gamma: {shape: 2, scale: 1}}, {poisson: {mean: 3}}]}
+  b: {distribution: {density: {formula: k*x, lower: 0, upper: 1}}}
+  c: {distribution: {table: {x: [0, 1, 2], pdf: [0, 1, 0]}}}
+  d: {distribution: {histogram: {edges: [0, 1, 3], counts: [1, 2]}}, truncate: {upper: k}}
+  e: {distribution: {sample: {file: a.csv, column: gap}}}
+  f: {distribution: {normal: {mean: 2*a + 1, sd: exp(b)}}}
+  g: {distribution: {observations: {mean: 1, sd: 2, count: 4}}}
+  h: {distribution: {lognormal: {quantiles: {"0.05": 1, "0.95": 3}}}}
+  i: {}
+  j: {}
+dependence:
+  - inputs: [c, g, h]
+    copula: {gaussian: {kendall: [[1, 0.1, 0.2], [0.1, 1, 0.3], [0.2, 0.3, 1]]}}
+  - inputs: [i, j]
+    joint_density: {density: 4*i*j, support: "0 < i and i < 1 and 0 < j and j < 1"}
+transformation:
+  where: {t: a + b*c, u: {formula: t - d/e, unit: "1"}}
+  outputs: {y: {formula: "if(u > 0, f + g, h)*i/j", route: sampling}, z: {formula: y^2}}
+requirements:
+  - {name: One, event: y > 0 and not (z < 1), probability: {at_least: 0.1, at_most: 0.9}}
+  - {name: Two, quantile: {output: z, at: 0.5, at_least: 0, at_most: 9}}
+readings: {coverage: [0.9], quantiles: [0.5], probabilities: ["y < z"], values: {y: [0, 1]}}
+"""
+TEXTS = [RICH, WIDE, starting_model("spring")]
 PIECES = [
     "{", "}", "[", "]", ":", ": ", ",", "-", "- ", "\n", "\n  ", "\t", "'", '"', "#", "&a ", "*a", "!t ",
     "|", ">", "?", "%", "@", "~", "null", "true", "1e999", "-1", "0", "1e-3", "012", ".nan", "mm", "kg",
@@ -129,6 +160,11 @@ def test_mapping_with_values_and_keys_replaced(data: st.DataObject) -> None:
             break
     result = outcome(lambda: read_mapping(model))
     assert isinstance(result, Model) or result.faults
+
+
+@pytest.mark.parametrize("text", TEXTS)
+def test_the_undamaged_texts_are_right(text: str) -> None:
+    assert isinstance(read(text.encode()), Model)
 
 
 def test_a_mapping_that_contains_itself() -> None:

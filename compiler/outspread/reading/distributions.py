@@ -35,9 +35,9 @@ def build_distribution(context: Context, path: Path, unit: str, own: str) -> Dis
         distribution = Distribution(family, columns, place=context.place(inner)) if columns else None
     else:
         distribution = _family(context, inner, family, unit, own)
-    if distribution is not None and not is_conditional(distribution):
-        _check(context, inner, distribution)
-    return distribution
+    if distribution is None or is_conditional(distribution):
+        return distribution
+    return distribution if _check(context, inner, distribution) else None
 
 
 def is_conditional(distribution: Distribution) -> bool:
