@@ -29,6 +29,7 @@ from outspread.routes.jacobian.construct import (
     replace,
     square_root,
     subtract,
+    tidy,
 )
 
 
@@ -218,7 +219,7 @@ def _undo_quotient(others: Sequence[Node], position: int, target: Node) -> list[
 def _undo_power(others: Sequence[Node], position: int, target: Node) -> list[Undone] | None:
     if position == 1:
         return _real(divide(apply("log", target), apply("log", others[0])), _positive(target))
-    exponent = known_number(others[0])
+    exponent = known_number(tidy(others[0]))
     if exponent is None:
         return _real(Apply("power", (target, divide(ONE, others[0]))), _at_least(target, 0.0))
     if exponent == 0.0:

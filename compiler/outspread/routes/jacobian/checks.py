@@ -16,6 +16,7 @@ from outspread.formula.evaluate import compile_numpy
 from outspread.formula.interval import Interval, enclose
 from outspread.formula.tree import Node, names
 from outspread.laws.law import Array, Law
+from outspread.routes.jacobian.construct import tidy
 from outspread.routes.jacobian.smooth import SmoothMap
 from outspread.routes.jacobian.symbolic import reach
 
@@ -79,7 +80,7 @@ def singular(smooth: SmoothMap, inputs: Mapping[str, Array]) -> bool:
     matrix = np.empty((*np.shape(next(iter(inputs.values()))), order, order))
     for i, row in enumerate(smooth.jacobian):
         for j, entry in enumerate(row):
-            matrix[..., i, j] = compile_numpy(entry, tuple(inputs))(*inputs.values())
+            matrix[..., i, j] = compile_numpy(tidy(entry), tuple(inputs))(*inputs.values())
     usable = np.all(np.isfinite(matrix), axis=(-2, -1))
     if not np.any(usable):
         return False

@@ -10,7 +10,7 @@ Interval Analysis (SIAM 2009), chapter 8.
 from __future__ import annotations
 
 import itertools
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -18,7 +18,10 @@ import numpy.typing as npt
 
 from outspread.formula.interval import Interval, enclose
 from outspread.formula.interval_arithmetic import add, multiply, negate
+from outspread.formula.tree import Apply, Name, Node, Number, rebuild, walk
+from outspread.formula.tree import names as tree_names
 from outspread.laws.law import Array, Law
+from outspread.routes.jacobian.construct import is_integer, known_number, tidy
 from outspread.routes.jacobian.precise import Precise
 from outspread.routes.jacobian.smooth import Candidates, Mask, SmoothMap
 from outspread.routes.jacobian.symbolic import parameter_ranges, reach
@@ -27,7 +30,8 @@ LARGEST_EFFORT = 20_000  # boxes looked at for one point
 CHUNK = 256  # points worked on together
 SMALLEST = 1e-13  # width at which an undecided box is given up, relative to its size and scale
 _INFLATION = 0.1
-_POLISHING = 8
+_POLISHING = 200
+_MOST_POLES = 6
 
 Index = npt.NDArray[np.int64]
 
@@ -63,6 +67,10 @@ class SearchedInverse:
         self.ranges = parameter_ranges(smooth.piece.parameters, laws, meanings)
         reaches = np.array([reach(law) for law in laws.values()])
         self.start = self._widened(reaches)
+        outputs = smooth.piece.outputs
+        tidied = tuple(_tidied(output) for output in outputs)
+        self.forms = (outputs,) if tidied == outputs else (outputs, tidied)
+        self.poles = _poles(outputs)
         self.centre = np.array([float(law.icdf(0.5)) for law in laws.values()])
         spread = [float(law.iccdf(0.25)) - float(law.icdf(0.25)) for law in laws.values()]
         self.scale = np.array([max(one, 1e-300) for one in spread])
@@ -106,7 +114,7 @@ class SearchedInverse:
             proven.append(_Boxes(image.lower, image.upper, boxes.column).take(unique))
             boxes, changed = _intersected(boxes.take(~unique), image.take(~unique))
             small = self._small(boxes) | (effort[boxes.column] > LARGEST_EFFORT)
-            given_up.append(boxes.column[small])
+            given_up.append(self._without_poles(boxes.take(small), points, parameters).column)
             boxes, changed = boxes.take(~small), changed[~small]
             boxes = _joined([boxes.take(changed), *self._halves(boxes.take(~changed))])
         found = self._polished(_joined(proven), points, parameters)
@@ -118,19 +126,42 @@ class SearchedInverse:
         return named | {name: Interval.of(np.full(size, value)) for name, value in parameters.items()}
 
     def _pruned(self, boxes: _Boxes, points: Array, parameters: Mapping[str, float]) -> _Boxes:
-        for index, output in enumerate(self.smooth.piece.outputs):
-            forward = enclose(output, self._named(boxes, parameters))
-            value = points[index, boxes.column]
-            boxes = boxes.take(forward.contains(value))
+        for form in self.forms:
+            for index, output in enumerate(form):
+                forward = enclose(output, self._named(boxes, parameters))
+                boxes = boxes.take(forward.contains(points[index, boxes.column]))
         for condition in self.smooth.piece.conditions:
             held = enclose(condition, self._named(boxes, parameters))
             boxes = boxes.take(held.upper == 1.0)
         return boxes
 
+    def _without_poles(self, boxes: _Boxes, points: Array, parameters: Mapping[str, float]) -> _Boxes:
+        """The boxes that stay possible when every denominator in them is taken with one sign at a time."""
+        if not boxes.column.size or not self.poles or len(self.poles) > _MOST_POLES:
+            return boxes
+        names = {pole: f" pole {i}" for i, pole in enumerate(self.poles)}
+        outputs = [_put(output, names) for output in self.smooth.piece.outputs]
+        named = self._named(boxes, parameters)
+        ranges = {name: enclose(pole, named) for pole, name in names.items()}
+        possible = np.zeros(boxes.column.size, dtype=bool)
+        for signs in itertools.product((False, True), repeat=len(names)):
+            sided = dict(named)
+            for (name, part), above in zip(ranges.items(), signs, strict=True):
+                low = np.maximum(part.lower, 0.0) if above else part.lower
+                high = part.upper if above else np.minimum(part.upper, 0.0)
+                none = ~(low <= high)
+                sided[name] = Interval(np.where(none, np.nan, low), np.where(none, np.nan, high))
+            here = np.ones(boxes.column.size, dtype=bool)
+            for index, output in enumerate(outputs):
+                here &= enclose(output, sided).contains(points[index, boxes.column])
+            possible |= here
+        return boxes.take(possible)
+
     def _inflated(self, boxes: _Boxes) -> _Boxes:
         width = boxes.upper - boxes.lower
         size = np.maximum(np.abs(boxes.lower), np.abs(boxes.upper))
-        margin = _INFLATION * width + 4e-16 * size + 1e-300
+        # enough to hold what rounding adds to the image of a box that is already small
+        margin = _INFLATION * width + 1e-9 * size + 1e-12 * self.scale[:, None]
         return _Boxes(boxes.lower - margin, boxes.upper + margin, boxes.column)
 
     def _krawczyk(self, boxes: _Boxes, points: Array, parameters: Mapping[str, float]) -> _Boxes:
@@ -176,6 +207,7 @@ class SearchedInverse:
             middle = centre + scale * np.sinh(0.5 * low + 0.5 * high)
         inside = (middle > boxes.lower) & (middle < boxes.upper)
         middle = np.where(inside, middle, 0.5 * boxes.lower + 0.5 * boxes.upper)
+        middle = np.where((boxes.lower < 0.0) & (boxes.upper > 0.0), 0.0, middle)  # where poles often are
         side = np.argmax(np.where(boxes.upper > boxes.lower, high - low, -1.0), axis=0)
         at = (side, np.arange(side.size))
         first_upper, second_lower = boxes.upper.copy(), boxes.lower.copy()
@@ -186,11 +218,17 @@ class SearchedInverse:
         ]
 
     def _polished(self, boxes: _Boxes, points: Array, parameters: Mapping[str, float]) -> _Boxes:
+        """Each box, which holds exactly one solution, shrunk until it shrinks no further."""
         for _ in range(_POLISHING if boxes.column.size else 0):
             image = self._krawczyk(boxes, points, parameters)
+            lower, upper = np.maximum(boxes.lower, image.lower), np.minimum(boxes.upper, image.upper)
+            usable = np.all(lower <= upper, axis=0)  # else the last rounding has crossed them: keep the box
+            shrunk = np.any(upper - lower < 0.9 * (boxes.upper - boxes.lower), axis=0) & usable
             boxes = _Boxes(
-                np.maximum(boxes.lower, image.lower), np.minimum(boxes.upper, image.upper), boxes.column
+                np.where(usable, lower, boxes.lower), np.where(usable, upper, boxes.upper), boxes.column
             )
+            if not np.any(shrunk):
+                break
         return boxes
 
     def _as_candidates(self, found: _Boxes, parameters: Mapping[str, float], first: int) -> Candidates:
@@ -208,6 +246,36 @@ class SearchedInverse:
         named = {name: Interval(found.lower[i], found.upper[i]) for i, name in enumerate(self.smooth.inputs)}
         constant = {name: np.full(columns.size, value) for name, value in parameters.items()}
         return Candidates(columns, named, constant, np.zeros(columns.size, dtype=bool), precise)
+
+
+def _poles(outputs: Sequence[Node]) -> tuple[Node, ...]:
+    """Denominators, and bases of negative powers, that depend on an input."""
+    found: dict[Node, None] = {}
+    for output in outputs:
+        for node in walk(output):
+            if isinstance(node, Apply) and node.operator in ("divide", "power"):
+                exponent = known_number(tidy(node.arguments[1]))
+                negative = exponent is not None and exponent < 0.0
+                part = node.arguments[1] if node.operator == "divide" else node.arguments[0]
+                if (node.operator == "divide" or negative) and tree_names(part):
+                    found[part] = None
+    return tuple(found)
+
+
+def _put(node: Node, names: Mapping[Node, str]) -> Node:
+    return rebuild(node, lambda part: Name(names[part]) if part in names else None)
+
+
+def _tidied(node: Node) -> Node:
+    """The tidied form, which often encloses better; `node` itself where folding may have rounded a number."""
+    found = tidy(node)
+    before, after = _numbers(node), _numbers(found)
+    exact = after <= before or all(is_integer(value * 1024.0) for value in before | after)
+    return found if exact else node
+
+
+def _numbers(node: Node) -> set[float]:
+    return {abs(part.value) for part in walk(node) if isinstance(part, Number)}
 
 
 def _approximate_inverse(slopes: list[list[Interval]], order: int, count: int) -> Array:

@@ -65,7 +65,8 @@ def _split(piece: Piece, corner: Apply) -> list[Piece]:
             _with(piece, corner, values[1], [Apply("less", (first, ZERO))]),
         )
     if corner.operator in ("min", "max"):
-        return _kept(*(_chosen(piece, corner, index) for index in range(len(corner.arguments))))
+        different = tuple(dict.fromkeys(corner.arguments))
+        return _kept(*(_chosen(piece, corner, different, index) for index in range(len(different))))
     if corner.operator == "if":
         condition, yes, no = corner.arguments
         return _kept(_with(piece, corner, yes, [condition]), _with(piece, corner, no, [opposite(condition)]))
@@ -76,13 +77,13 @@ def _kept(*pieces: Piece) -> list[Piece]:
     return [piece for piece in pieces if not _contradicts_itself(piece.below)]
 
 
-def _chosen(piece: Piece, corner: Apply, index: int) -> Piece:
-    """min or max taken by its argument `index`; of equal arguments the first counts."""
-    value = corner.arguments[index]
+def _chosen(piece: Piece, corner: Apply, arguments: Sequence[Node], index: int) -> Piece:
+    """min or max taken by `arguments[index]`; of equal ones the first counts."""
+    value = arguments[index]
     strict, loose = ("less", "less_equal") if corner.operator == "min" else ("greater", "greater_equal")
     conditions: list[Node] = [
         Apply(strict if other_index < index else loose, (value, other))
-        for other_index, other in enumerate(corner.arguments)
+        for other_index, other in enumerate(arguments)
         if other_index != index
     ]
     return _with(piece, corner, value, conditions)

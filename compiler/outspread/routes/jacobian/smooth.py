@@ -186,7 +186,10 @@ class SmoothMap:
             if found is None:
                 return None
             constants = {name: mpmath.mpf(float(p[index])) for name, p in candidates.parameters.items()}
-            values = {**self.polished(found, at, constants), **constants}
+            widths = [
+                float(candidates.box[n].upper[index] - candidates.box[n].lower[index]) for n in self.inputs
+            ]
+            values = {**self.polished(found, at, constants, widths), **constants}
             if not self._holds_precisely(values, at):
                 return None
             entries = evaluate_precisely([entry for row in self.jacobian for entry in row], values)
@@ -194,19 +197,23 @@ class SmoothMap:
                 return None
             order = len(self.inputs)
             rows = [entries[i * order : (i + 1) * order] for i in range(order)]
-            size = mpmath.fabs(mpmath.det(mpmath.matrix(rows)))
+            size = abs(_determinant(rows))
             if size < _determinant_scale(rows) * mpmath.mpf(PRECISELY_NEAR):
                 size = mpmath.mpf(0)
             return np.array([float(values[name]) for name in self.inputs]), float(size)
 
     def polished(
-        self, start: Mapping[str, Precise], at: Array, constants: Mapping[str, Precise]
+        self,
+        start: Mapping[str, Precise],
+        at: Array,
+        constants: Mapping[str, Precise],
+        widths: Sequence[float],
     ) -> Mapping[str, Precise]:
         """The solution by Newton's method from `start`; `start` itself where that does not settle near it."""
         import mpmath
 
         order = len(self.inputs)
-        x = mpmath.matrix([start[name] for name in self.inputs])
+        x = [start[name] for name in self.inputs]
         entries = [entry for row in self.jacobian for entry in row]
         for _ in range(_NEWTON_STEPS):
             values = {**dict(zip(self.inputs, x, strict=True)), **constants}
@@ -214,16 +221,20 @@ class SmoothMap:
             slopes = evaluate_precisely(entries, values)
             if any(value is None for value in (*forward, *slopes)):
                 return start
-            residual = mpmath.matrix(forward) - mpmath.matrix([float(y) for y in at])
-            matrix = mpmath.matrix([slopes[i * order : (i + 1) * order] for i in range(order)])
-            if mpmath.fabs(mpmath.det(matrix)) <= 1e-45 * _determinant_scale(matrix.tolist()):
+            residual = [value - float(y) for value, y in zip(forward, at, strict=True) if value is not None]
+            step = _solved([slopes[i * order : (i + 1) * order] for i in range(order)], residual)
+            if step is None:
                 return start
-            step = mpmath.lu_solve(matrix, residual)
-            x = x - step
-            if all(abs(step[i]) <= mpmath.mpf(10) ** -52 * abs(x[i]) for i in range(order)):
+            x = [value - part for value, part in zip(x, step, strict=True)]
+            if all(
+                abs(part) <= mpmath.mpf(10) ** -52 * abs(value) for part, value in zip(step, x, strict=True)
+            ):
                 break
         found = dict(zip(self.inputs, x, strict=True))
-        near = all(abs(found[name] - start[name]) <= 1e-6 * (abs(start[name]) + 1e-6) for name in self.inputs)
+        near = all(
+            abs(found[name] - start[name]) <= 1e-6 * (abs(start[name]) + 1e-6) + 2.0 * width
+            for name, width in zip(self.inputs, widths, strict=True)
+        )
         return found if near else start
 
     def _holds_precisely(self, values: Mapping[str, Precise], at: Array) -> bool:
@@ -247,13 +258,38 @@ class SmoothMap:
 
 
 def _determinant_scale(rows: Sequence[Sequence[Precise]]) -> Precise:
-    """Hadamard's bound: the product of the lengths of the rows."""
-    import mpmath
+    """The products in the determinant added without their signs: what rounding is relative to."""
+    if len(rows) == 1:
+        return abs(rows[0][0])
+    return sum(
+        abs(entry) * _determinant_scale([[*row[:column], *row[column + 1 :]] for row in rows[1:]])
+        for column, entry in enumerate(rows[0])
+        if entry
+    )
 
-    scale = mpmath.mpf(1)
-    for row in rows:
-        scale *= mpmath.sqrt(mpmath.fsum(entry * entry for entry in row))
-    return scale
+
+def _determinant(rows: Sequence[Sequence[Precise]]) -> Precise:
+    """Expansion along the first row: unlike elimination it does not mind rows of very different size."""
+    if len(rows) == 1:
+        return rows[0][0]
+    terms = (
+        (-1) ** column * entry * _determinant([[*row[:column], *row[column + 1 :]] for row in rows[1:]])
+        for column, entry in enumerate(rows[0])
+        if entry
+    )
+    return sum(terms)
+
+
+def _solved(rows: Sequence[Sequence[Precise]], right: Sequence[Precise]) -> list[Precise] | None:
+    """The solution of rows · s = right by Cramer's rule; None where the determinant vanishes to rounding."""
+    whole = _determinant(rows)
+    if abs(whole) <= 1e-45 * _determinant_scale(rows):
+        return None
+    replaced = (
+        [[*row[:i], value, *row[i + 1 :]] for row, value in zip(rows, right, strict=True)]
+        for i in range(len(rows))
+    )
+    return [_determinant(one) / whole for one in replaced]
 
 
 def _middle(part: Interval) -> Array:
@@ -277,4 +313,4 @@ def absolute(part: Interval) -> Interval:
     with np.errstate(invalid="ignore"):
         larger = np.maximum(np.abs(part.lower), np.abs(part.upper))
         smaller = np.minimum(np.abs(part.lower), np.abs(part.upper))
-        return Interval(np.where(part.lower * part.upper <= 0.0, 0.0, smaller), larger)
+        return Interval(np.where((part.lower <= 0.0) & (part.upper >= 0.0), 0.0, smaller), larger)

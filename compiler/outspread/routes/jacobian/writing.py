@@ -155,7 +155,7 @@ class Writer:
         return result
 
     def _derivatives(self, entries: Sequence[Sequence[Node]], where: str) -> list[Statement]:
-        """The Jacobian as a matrix, or row by row where it is large: formulas in a matrix are slow to typeset."""
+        """The Jacobian as a matrix, or row by row where it is large: formulas in a matrix are slow to set."""
         if sum(size(entry) for row in entries for entry in row) <= LARGEST_MATRIX:
             matrix = _matrix([[self.entry(entry) for entry in row] for row in entries])
             rows, columns = self.names(self.outputs), self.names(self.inputs)
