@@ -235,9 +235,8 @@ def _finding(answer: Any) -> Finding:
     """What the engine says, as a finding: it answers with a value and an error, or with a reason."""
     if isinstance(answer, Figure | Absent):
         return answer
-    because = getattr(answer, "because", None)
-    if because is not None:
-        return Absent(str(because))
+    if isinstance(answer, str):
+        return Absent(answer)
     return Figure(float(np.asarray(answer.value)), float(np.asarray(answer.error)))
 
 

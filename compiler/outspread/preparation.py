@@ -12,6 +12,7 @@ from outspread.planning.choose import make_plan
 from outspread.planning.plan import Plan
 from outspread.reading.distributions import is_conditional
 from outspread.reading.model import Model
+from outspread.routes.closed_form.scored import recognise_with_scores
 
 
 def plan_model(model: Model) -> tuple[Plan, dict[str, Law]]:
@@ -20,7 +21,7 @@ def plan_model(model: Model) -> tuple[Plan, dict[str, Law]]:
     Raises ModelError where a parameter is out of range, DerivationError where no route leads through.
     """
     laws = build_laws(model)
-    return make_plan(model, laws), laws
+    return make_plan(model, laws, recognise_with_scores), laws
 
 
 def build_laws(model: Model) -> dict[str, Law]:

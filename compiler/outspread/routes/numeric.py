@@ -141,7 +141,7 @@ def _all_atoms(pieces: list[Piece]) -> tuple[Atoms, float]:
     if not covered:
         return atoms, 0.0
     rest = 1.0 - float(atoms.masses.sum())
-    return atoms, rest if rest > 1e-13 else 0.0
+    return atoms, rest if rest > 1e-13 + 5 * float(atoms.errors.sum()) else 0.0
 
 
 def _piece_atoms(piece: Piece) -> list[tuple[Array, Array, Array]]:

@@ -42,10 +42,11 @@ Program = Callable[[Environment, int], Sets]
 class Solver:
     """Solves one event for one variable. `exact` tells whether every comparison was solved by formula."""
 
-    def __init__(self, event: Node, frame: Frame):
+    def __init__(self, event: Node, frame: Frame, structure_only: bool = False):
+        """`structure_only`: only find out whether the event can be solved by formula; never called."""
         self.frame = frame
+        self.structure_only = structure_only
         self.exact = True
-        self.unresolved: float = 0.0
         self._program = self._compile(cases.split(event, frame.name))
 
     def __call__(self, environment: Environment, count: int) -> Sets:
@@ -119,6 +120,8 @@ class Solver:
             quadratic = quadratic_program(node, bound, operator, name, BOUND, _function)
             if quadratic is None:
                 self.exact = False
+                if self.structure_only:
+                    return lambda target, environment: target
                 quadratic = root_finder(node, bound, operator, name, self.frame.grid, BOUND)
             sides.append(quadratic)
         below, above = sides

@@ -1,0 +1,205 @@
+"""Carries out a plan: derives every output by its route, joint laws, and probabilities of joint events."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+
+import numpy as np
+
+from outspread.errors import DerivationError
+from outspread.formula.tree import Apply, Name, Node, Number, add, multiply, names, substitute
+from outspread.laws.law import Estimates, Law
+from outspread.planning.dependence import normal_scores
+from outspread.planning.plan import Plan, PlanStep
+from outspread.reading.model import Model, Output
+from outspread.routes import numeric, writing
+from outspread.routes.closed_form.scored import recognise_with_scores
+from outspread.routes.derived import DerivedOutput, JointLaw, SymbolicDensity
+from outspread.routes.jacobian import NotPossible, derive_joint, input_density
+from outspread.routes.sampling import derive_sampled
+
+Progress = Callable[[str], None]
+
+
+class Engine:
+    """Derives what a plan says; everything is computed once and kept."""
+
+    def __init__(self, model: Model, laws: Mapping[str, Law], plan: Plan):
+        self.model, self.plan = model, plan
+        self.laws = {item.name: laws[item.name] for item in model.inputs if item.name in laws}
+        self.scores = normal_scores(model, laws)
+        self.symbols = writing.symbols(model)
+        self._outputs: dict[str, DerivedOutput] = {}
+
+    def derive(self, progress: Progress | None = None) -> tuple[DerivedOutput, ...]:
+        """Every output in the model's order. Raises DerivationError with the output's name."""
+        for output in self.model.outputs:
+            if progress is not None:
+                progress(f"deriving {output.name}")
+            if output.name not in self._outputs:
+                try:
+                    self._outputs[output.name] = self._derive(output)
+                except DerivationError as error:
+                    raise DerivationError(error.message, error.output or output.name) from error
+        return tuple(self._outputs[output.name] for output in self.model.outputs)
+
+    def _used(self, expression: Node) -> dict[str, Law]:
+        return {name: law for name, law in self.laws.items() if name in names(expression)}
+
+    def _derive(self, output: Output) -> DerivedOutput:
+        step = self.plan.step(output.name)
+        if step.route == "closed_form":
+            return self._closed_form(output, step)
+        if step.route == "sampling":
+            law, evaluations = derive_sampled(
+                output.expression, self._used(output.expression), self.scores, step.inner, self.model.accuracy.seed
+            )
+            text = writing.sampling(output, step, self.symbols)
+            return DerivedOutput(output.name, step.route, law, text, evaluations=evaluations)
+        result = numeric.derive(output.expression, self._used(output.expression), self.scores, step.outer)
+        text, symbolic = writing.numeric(output, step, self.laws, self.symbols, result)
+        return DerivedOutput(
+            output.name, step.route, result.law, text, symbolic, evaluations=result.evaluations
+        )
+
+    def _closed_form(self, output: Output, step: PlanStep) -> DerivedOutput:
+        laws = self._used(output.expression)
+        found = recognise_with_scores(output.expression, laws, self.scores)
+        if found is None:
+            raise DerivationError("the closed form that was planned is not recognised", output.name)
+        confirmed = dict(step.details).get("confirmed by")
+        check = None
+        if confirmed is not None:
+            check = numeric.derive(output.expression, laws, self.scores)
+        symbolic = SymbolicDensity(found.density_latex, found.density, found.name, found.source)
+        return DerivedOutput(
+            output.name, step.route, found.law, found.derivation, symbolic,
+            None if check is None else check.law, 0 if check is None else check.evaluations,
+        )  # fmt: skip
+
+    # --- several outputs ----------------------------------------------------------------------------
+
+    def joint(self) -> tuple[JointLaw, ...]:
+        """The joint law of all outputs, where the plan has one and the inverse can be found."""
+        if not self.plan.joint:
+            return ()
+        used = self.plan.joint[0].inputs
+        laws = {name: self.laws[name] for name in used}
+        matrix = None
+        if self.scores is not None and any(self.scores.touches(name) for name in used):
+            scores = self.scores
+            matrix = [[1.0 if a == b else scores.between(a, b) for b in used] for a in used]
+        outputs = {output.name: output.expression for output in self.model.outputs}
+        found = derive_joint(outputs, laws, input_density(laws, matrix), self.symbols)
+        return () if isinstance(found, NotPossible) else (found,)
+
+    def probability(self, event: Node) -> Estimates:
+        """P(event) for an event over outputs, with a bound on the error: derived jointly in the inputs."""
+        involved = names(event)
+        if len(involved) == 1:
+            simple = self._simple(event)
+            if simple is not None:
+                return simple
+        expressions = {output.name: output.expression for output in self.model.outputs}
+        return self._event_in_inputs(substitute(event, expressions))
+
+    def _simple(self, event: Node) -> Estimates | None:
+        """Events like `clearance > 0.002` are read off the output's own law."""
+        if not isinstance(event, Apply) or event.operator not in ("less", "less_equal", "greater", "greater_equal"):
+            return None
+        left, right = event.arguments
+        operator = event.operator
+        if isinstance(left, Number) and isinstance(right, Name):
+            flipped = {"less": "greater", "less_equal": "greater_equal", "greater": "less", "greater_equal": "less_equal"}
+            left, right, operator = right, left, flipped[operator]
+        if not (isinstance(left, Name) and isinstance(right, Number)):
+            return None
+        return self._side(left.name, operator, right.value)
+
+    def _side(self, output: str, operator: str, limit: float) -> Estimates:
+        law = next(item.law for item in self.derive() if item.output == output)
+        kind = "cdf" if operator in ("less", "less_equal") else "ccdf"
+        estimate = stated(law, kind, limit)
+        value, error = float(estimate.value), float(estimate.error)
+        # cdf counts an atom at the limit, ccdf does not
+        atoms = law.atoms()
+        at = np.flatnonzero(atoms.values == limit)
+        if at.size and operator in ("less", "greater_equal"):
+            mass = float(atoms.masses[at[0]])
+            value += mass if operator == "greater_equal" else -mass
+            error += float(atoms.errors[at[0]])
+        return Estimates(np.asarray(min(max(value, 0.0), 1.0)), np.asarray(error))
+
+    def _event_in_inputs(self, event: Node) -> Estimates:
+        laws = self._used(event)
+        indicator = Apply("if", (event, Number(1.0), Number(0.0)))
+        route = _numeric_or_sampling(laws, self.scores, indicator)
+        if route:
+            atoms = numeric.derive(indicator, laws, self.scores).law.atoms()
+            at = np.flatnonzero(atoms.values == 1.0)
+            value = float(atoms.masses[at[0]]) if at.size else 0.0
+            error = float(atoms.errors[at[0]]) if at.size else 1e-300
+            return Estimates(np.asarray(value), np.asarray(error))
+        from outspread.routes.sampling import sampled_probability
+
+        value, error = sampled_probability(event, laws, self.scores, self.model.accuracy.seed)
+        return Estimates(np.asarray(value), np.asarray(error))
+
+    def correlation(self, a: str, b: str) -> Estimates | str:
+        """Pearson's correlation of two outputs, or why there is none; from Var(A/s + B/t) = 2 + 2 rho with s, t their deviations."""
+        outputs = {item.output: item.law for item in self.derive()}
+        deviations = []
+        for name in (a, b):
+            deviation = outputs[name].standard_deviation()
+            if not np.isfinite(deviation):
+                return f"{name} has no variance, so there is no correlation"
+            if deviation == 0:
+                return f"{name} does not vary, so there is no correlation"
+            deviations.append(deviation)
+        expressions = {output.name: output.expression for output in self.model.outputs}
+        total = add(*(
+            multiply(Number(1 / deviation), expressions[name])
+            for name, deviation in zip((a, b), deviations, strict=True)
+        ))  # fmt: skip
+        doubt = sum(_relative_deviation_error(outputs[name]) for name in (a, b))
+        return self._half_variance(total, doubt)
+
+    def _half_variance(self, total: Node, doubt: float) -> Estimates:
+        laws = self._used(total)
+        known = recognise_with_scores(total, laws, self.scores)
+        if known is not None:
+            variance = known.law.variance()
+            return Estimates(np.asarray(variance / 2 - 1), np.asarray(2 * doubt + 1e-14))
+        if _numeric_or_sampling(laws, self.scores, total):
+            estimates = numeric.derive(total, laws, self.scores).law.moment_estimates()
+        else:
+            estimates = derive_sampled(total, laws, self.scores, "", self.model.accuracy.seed)[0].moment_estimates()
+        deviation, error = float(estimates.value[1]), float(estimates.error[1])
+        return Estimates(np.asarray(deviation**2 / 2 - 1), np.asarray(deviation * error + 2 * doubt + 1e-14))
+
+
+def stated(law: Law, kind: str, y: float) -> Estimates:
+    """cdf or ccdf at a point with its error, for derived and given laws alike."""
+    estimate = getattr(law, "estimate", None)
+    if estimate is not None:
+        result: Estimates = estimate(kind, y)
+        return result
+    value = law.cdf(y) if kind == "cdf" else law.ccdf(y)
+    return Estimates(value, np.abs(value) * max(law.relative_error, 1e-14))
+
+
+def _relative_deviation_error(law: Law) -> float:
+    moments = getattr(law, "moment_estimates", None)
+    if moments is None:
+        return 4 * max(law.relative_error, 1e-14)
+    estimates: Estimates = moments()
+    return float(estimates.error[1] / estimates.value[1])
+
+
+def _numeric_or_sampling(laws: Mapping[str, Law], scores: object, expression: Node) -> bool:
+    """Whether the numeric routes reach: at most two continuous inputs, discrete ones independent."""
+    continuous = [name for name, law in laws.items() if law.continuous_mass > 0]
+    discrete = [name for name, law in laws.items() if law.continuous_mass < 1]
+    dependent = any(scores.touches(name) for name in discrete) if hasattr(scores, "touches") else False
+    return len(continuous) <= 2 and not dependent
+

@@ -1,0 +1,283 @@
+"""Writes out the mathematics of the numeric routes for the report: region, inverse, integral, density.
+
+It typesets what was done; where the inverse can be written as a formula, the density that follows from it is
+also returned as a function, so that it can be held against the numeric law before it is shown.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+
+import numpy as np
+
+from outspread.formula.calculus import derivative
+from outspread.formula.evaluate import compile_numpy
+from outspread.formula.latex import estimated_width, symbol_for, to_latex
+from outspread.formula.latex_lines import breakable
+from outspread.formula.tree import Name, Node, names
+from outspread.laws.law import Array, Law
+from outspread.planning.plan import PlanStep
+from outspread.reading.model import Model, Output
+from outspread.routes.derived import Statement, SymbolicDensity
+from outspread.routes.jacobian.branches import Branch, branches_for
+from outspread.routes.numeric import NumericLaw
+
+VALUE = "y"
+MOST_BRANCHES = 4
+PAGE = 62.0  # width of a formula, in characters of `estimated_width`
+
+
+def symbols(model: Model) -> dict[str, str]:
+    """LaTeX for every name of the model."""
+    found: dict[str, str] = {}
+    for item in (*model.constants, *model.inputs, *model.outputs):
+        found[item.name] = item.symbol or symbol_for(item.name)
+    for step in model.steps:
+        found[step.name] = symbol_for(step.name)
+    return found
+
+
+def numeric(
+    output: Output, step: PlanStep, laws: Mapping[str, Law], symbols: Mapping[str, str], result: NumericLaw
+) -> tuple[tuple[Statement, ...], SymbolicDensity | None]:
+    """The statements of a derivation by enumeration, change of variables or region integral."""
+    writer = _Writer(output, laws, symbols)
+    statements: list[Statement] = [writer.definition()]
+    symbolic = None
+    if step.route == "enumeration":
+        statements += writer.enumeration(step)
+    elif step.route == "change_of_variables":
+        more, symbolic = writer.one_input(step.inner, step)
+        statements += more
+    else:
+        statements += writer.region(step.inner, step.outer[0], step, result)
+    statements += writer.atoms(result.law.atoms().values.size if result.law.continuous_mass else 0)
+    return tuple(statements), symbolic
+
+
+def sampling(output: Output, step: PlanStep, symbols: Mapping[str, str]) -> tuple[Statement, ...]:
+    """The statements of a derivation by sampling."""
+    writer = _Writer(output, {}, symbols)
+    statements = [writer.definition()]
+    if step.inner:
+        x = symbols[step.inner]
+        others = r",\,".join(symbols[name] for name in step.outer[:6]) + (r",\,\ldots" if len(step.outer) > 6 else "")
+        statements += writer.limits(step.inner)
+        statements.append(
+            Statement(
+                f"Given all other inputs, the probability of the region is known exactly from the law of ${x}$. "
+                "Its mean over the others is taken over scrambled Sobol' points, in independent replicates "
+                "whose scatter gives the error.",
+                rf"F_{{{writer.y}}}(y)=\mathrm{{E}}\left[P\left({writer.formula_short()}\leq y\,\mid\,{others}\right)\right]"
+                rf"\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}P\left({writer.formula_short()}\leq y\,\mid\,i\right)",
+                "cdf",
+            )
+        )
+    else:
+        statements.append(
+            Statement(
+                "The formula is evaluated at scrambled Sobol' points in independent replicates, whose scatter "
+                "gives the error.",
+                rf"F_{{{writer.y}}}(y)\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}\mathbf{{1}}\left\{{y_i\leq y\right\}}",
+                "cdf",
+            )
+        )
+    return tuple(statements)
+
+
+class _Writer:
+    def __init__(self, output: Output, laws: Mapping[str, Law], symbols: Mapping[str, str]):
+        self.output, self.laws = output, laws
+        self.expression = output.expression
+        self.symbols = {**symbols, VALUE: VALUE, "k": "k"}
+        self.y = symbols[output.name]
+        clash = VALUE in names(self.expression)
+        self.value = "outspread:value" if clash else VALUE
+        self.symbols["outspread:value"] = VALUE
+
+    def latex(self, node: Node) -> str:
+        return to_latex(node, self.symbols)
+
+    def wrapped(self, head: str, node: Node) -> str:
+        text = self.latex(node)
+        if estimated_width(head + text) <= PAGE:
+            return head + text
+        lines = breakable(node, self.symbols, PAGE - 8)
+        return (head + lines[0]) + "".join(rf"\\ \quad {line}" for line in lines[1:])
+
+    def formula_short(self) -> str:
+        text = self.latex(self.expression)
+        return text if estimated_width(text) < 24 else "g"
+
+    def definition(self) -> Statement:
+        arguments = ",".join(self.symbols[name] for name in names(self.expression)[:8])
+        more = r",\ldots" if len(names(self.expression)) > 8 else ""
+        return Statement(
+            "With constants, steps and unit factors put in, the result is a function of the uncertain inputs:",
+            self.wrapped(rf"{self.y}=g({arguments}{more})=", self.expression),
+            "note",
+        )
+
+    def enumeration(self, step: PlanStep) -> list[Statement]:
+        xs = r",\,".join(self.symbols[name] for name in step.inputs)
+        return [
+            Statement(
+                "All inputs are discrete: the probability of a value is the sum over the combinations that lead to it.",
+                rf"P({self.y}=y)=\sum_{{g({xs})=y}}\;\prod_i p_i",
+                "cdf",
+            )
+        ]
+
+    def branches(self, name: str) -> tuple[Branch, ...] | None:
+        found = branches_for(self.expression, name, Name(self.value))
+        if found is None or not 0 < len(found) <= MOST_BRANCHES:
+            return None
+        return found
+
+    def limits(self, name: str) -> list[Statement]:
+        """The region solved for one input."""
+        x = self.symbols[name]
+        found = self.branches(name)
+        if found is None:
+            return [
+                Statement(
+                    f"The region is solved for ${x}$: its end points are the roots of $g=y$ in ${x}$, all isolated "
+                    "by interval arithmetic and bracketed to the last digit.",
+                    rf"g=y,\qquad \frac{{\partial g}}{{\partial {x}}}=" + self._clipped(derivative(self.expression, name)),
+                    "region",
+                )
+            ]
+        text = r"\\ ".join(self.wrapped(rf"{x}=", branch.value) for branch in found)
+        one = "The limit" if len(found) == 1 else "The limits"
+        return [Statement(f"{one} of the region in ${x}$, from solving $g=y$:", text, "inverse")]
+
+    def _clipped(self, node: Node) -> str:
+        text = self.latex(node)
+        return text if estimated_width(text) <= PAGE - 14 else r"\ldots"
+
+    def one_input(self, name: str, step: PlanStep) -> tuple[list[Statement], SymbolicDensity | None]:
+        x = self.symbols[name]
+        beside = [other for other in step.inputs if other != name]
+        statements = [
+            Statement(
+                "The distribution function is the probability of the region in which the formula stays below a value:",
+                rf"F_{{{self.y}}}(y)=P\left(\left\{{{x}:\,g({x})\leq y\right\}}\right)",
+                "region",
+            )
+        ]
+        found = self.branches(name)
+        statements += self.limits(name)
+        if found is None:
+            statements.append(Statement(
+                "Change of variables over all roots $x_k(y)$ of $g(x)=y$ (every branch of the inverse):",
+                rf"f_{{{self.y}}}(y)=\sum_k \frac{{f_{{{x}}}(x_k)}}{{\left|g'(x_k)\right|}}", "density",
+            ))  # fmt: skip
+            return statements, None
+        slopes = [derivative(branch.value, self.value) for branch in found]
+        jacobian = r"\\ ".join(
+            self.wrapped(r"\frac{\mathrm{d}" + x + r"}{\mathrm{d}y}=", slope) for slope in slopes
+        )
+        statements.append(Statement("The derivative of each branch is its Jacobian:", jacobian, "jacobian"))
+        statements.append(Statement(
+            "Change of variables, summed over the branches:",
+            rf"f_{{{self.y}}}(y)=\sum_k f_{{{x}}}\left({x}_k(y)\right)"
+            rf"\left|\frac{{\mathrm{{d}}{x}_k}}{{\mathrm{{d}}y}}\right|", "density",
+        ))  # fmt: skip
+        if beside or any(branch.parameters for branch in found) or self.laws[name].continuous_mass < 1:
+            return statements, None
+        function = _density_function(found, slopes, name, self.laws[name], self.expression, self.value)
+        latex = rf"f_{{{self.y}}}(y)=" + "+".join(
+            rf"f_{{{x}}}\left({self.latex(branch.value)}\right)\left|{self.latex(slope)}\right|"
+            for branch, slope in zip(found, slopes, strict=True)
+        )
+        if estimated_width(latex) > PAGE:
+            return statements, None
+        return statements, SymbolicDensity(latex, function, "change of variables")
+
+    def region(self, inner: str, outer: str, step: PlanStep, result: NumericLaw) -> list[Statement]:
+        x, z = self.symbols[outer], self.symbols[inner]
+        law = f"f_{{{z}\\mid {x}}}" if _dependent(result) else f"f_{{{z}}}"
+        mass = f"P\\left({z}\\in S(y,{x})\\mid {x}\\right)" if _dependent(result) else f"P\\left({z}\\in S(y,{x})\\right)"
+        low, high = _limits(self.laws[outer])
+        found = self.branches(inner)
+        statements = [
+            Statement(
+                f"The region in which the formula stays below $y$, cut at a fixed ${x}$, is a set of values of ${z}$:",
+                rf"S(y,{x})=\left\{{{z}:\,g\leq y\right\}}", "region",
+            ),
+            *self.limits(inner),
+            Statement(
+                f"The distribution function is the probability of the region: exact in ${z}$, integrated over ${x}$.",
+                rf"F_{{{self.y}}}(y)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})\;{mass}\;\mathrm{{d}}{x}", "cdf",
+            ),
+        ]  # fmt: skip
+        slope = rf"\left|\frac{{\partial {z}_k}}{{\partial y}}\right|"
+        statements.append(Statement(
+            "The density follows by differentiating under the integral sign; the limits move with $y$ (Leibniz rule).",
+            rf"f_{{{self.y}}}(y)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})\sum_k {law}\left({z}_k(y,{x})\right){slope}\;\mathrm{{d}}{x}",
+            "density",
+        ))  # fmt: skip
+        if found is not None and len(found) <= 2:
+            text = r"\\ ".join(
+                self.wrapped(rf"\frac{{\partial {z}}}{{\partial y}}=", derivative(branch.value, self.value))
+                for branch in found
+            )
+            statements.append(Statement("with the derivative of each limit", text, "jacobian"))
+        if step.inputs and len(step.inputs) > 2:
+            rest = r",\,".join(self.symbols[name] for name in step.inputs if name not in (inner, outer))
+            statements.append(Statement(f"This is done for each combination of ${rest}$ and weighted with its probability."))
+        return statements
+
+    def atoms(self, count: int) -> list[Statement]:
+        if not count:
+            return []
+        number = "one value carries" if count == 1 else f"{count} values carry"
+        return [
+            Statement(
+                f"Where the formula is constant on a set of positive probability, {number} probability by itself; "
+                "these sets are measured exactly and the density describes the rest.",
+                rf"P({self.y}=c)=P\left(\{{g=c\}}\right)", "note",
+            )
+        ]  # fmt: skip
+
+
+def _limits(law: Law) -> tuple[str, str]:
+    return tuple(_number(end) for end in law.support())  # type: ignore[return-value]
+
+
+def _number(value: float) -> str:
+    if np.isinf(value):
+        return r"\infty" if value > 0 else r"-\infty"
+    return f"{value:.6g}" if "e" not in f"{value:.6g}" else rf"{value:.3e}".replace("e", r"\cdot 10^{") + "}"
+
+
+def _dependent(result: NumericLaw) -> bool:
+    return any(piece.problem.correlated() for piece in result.pieces)
+
+
+def _density_function(
+    found: tuple[Branch, ...], slopes: list[Node], name: str, law: Law, expression: Node, value: str
+) -> Callable[[Array], Array]:
+    """The written density as a function of y, coded from the inverse formulas alone."""
+    parts = [
+        (compile_numpy(branch.value, (value,)), compile_numpy(slope, (value,)))
+        for branch, slope in zip(found, slopes, strict=True)
+    ]
+    forward = compile_numpy(expression, (name,))
+
+    def density(y: Array) -> Array:
+        total = np.zeros(np.shape(y))
+        seen: list[Array] = []
+        with np.errstate(all="ignore"):
+            for inverse, slope in parts:
+                x = np.broadcast_to(np.asarray(inverse(y), float), np.shape(y))
+                back = np.asarray(forward(x), float)
+                holds = np.isfinite(x) & (np.abs(back - y) <= 1e-7 * (np.abs(y) + np.abs(back)) + 1e-300)
+                for earlier in seen:  # two branches that give one root count once
+                    holds &= ~(np.abs(x - earlier) <= 1e-13 * np.abs(x))
+                seen.append(np.where(holds, x, np.nan))
+                term = law.pdf(np.where(holds, x, 0.0)) * np.abs(np.asarray(slope(y), float))
+                total = total + np.where(holds, term, 0.0)
+        return total
+
+    return density
