@@ -70,10 +70,13 @@ def output_results(name, unit, route, law, quantiles=(0.001, 0.5, 0.999), values
             for end, side in ((lower, "below"), (upper, "above"))
         ),
         atoms=tuple(
-            AtomFigure(float(atoms.values[k]), Figure(float(atoms.masses[k]), float(atoms.errors[k]))) for k in shown
+            AtomFigure(float(atoms.values[k]), Figure(float(atoms.masses[k]), float(atoms.errors[k])))
+            for k in shown
         ),
         atom_count=int(atoms.values.size),
-        atom_mass=Figure(1.0, 0.0) if discrete else Figure(float(atoms.masses.sum()), 1e-14 * atoms.values.size),
+        atom_mass=Figure(1.0, 0.0)
+        if discrete
+        else Figure(float(atoms.masses.sum()), 1e-14 * atoms.values.size),
         mean=_moment(law.mean(), spread),
         standard_deviation=_moment(math.sqrt(law.variance()), spread),
         skewness=_moment(law.skewness(), 1),
@@ -82,7 +85,9 @@ def output_results(name, unit, route, law, quantiles=(0.001, 0.5, 0.999), values
         mode=Absent("the density is unbounded at both ends") if any(law.singular_ends()) else at(0.5),
         quantiles=tuple((p, at(p)) for p in quantiles),
         coverage=tuple(
-            Coverage(p, kind, at((1 - p) / 2), at((1 + p) / 2)) for p in (0.95, 0.99) for kind in ("symmetric", "shortest")
+            Coverage(p, kind, at((1 - p) / 2), at((1 + p) / 2))
+            for p in (0.95, 0.99)
+            for kind in ("symmetric", "shortest")
         ),
         values=tuple(
             ValueRow(
@@ -108,7 +113,9 @@ def sampling_evidence(name, law, agrees=True, n=1_000_000):
     largest = max(abs(d) for _, d in curve)
     return (
         Evidence(name, "plain sampling of 1,000,000 draws", n, largest, allowed, agrees, 0.9999, curve),
-        Evidence(name, "integral of the density", 201, 4.1e-13, 2e-11, True, note="panel by panel against the cdf"),
+        Evidence(
+            name, "integral of the density", 201, 4.1e-13, 2e-11, True, note="panel by panel against the cdf"
+        ),
     )
 
 
@@ -153,7 +160,9 @@ def results_for(model, outputs, **changes):
         drivers=(),
         assumptions=(
             Assumption("A1", "The inputs follow the distributions stated in the model.", "model"),
-            Assumption("A2", "Inputs that no entry of `dependence` names together are independent.", "compiler"),
+            Assumption(
+                "A2", "Inputs that no entry of `dependence` names together are independent.", "compiler"
+            ),
         ),
     )
     return replace(base, **changes)
@@ -167,16 +176,27 @@ def clearance():
     """Two continuous inputs, region and integral, a closed form beside; one requirement not met."""
     law = NormalLaw(0.02, math.hypot(0.004, 0.005))
     bore = normal_input(
-        "bore", "D", 42.02, 0.004, description="Bearing bore, as delivered", basis="Capability study, 125 parts, 2025-03"
+        "bore",
+        "D",
+        42.02,
+        0.004,
+        description="Bearing bore, as delivered",
+        basis="Capability study, 125 parts, 2025-03",
     )
-    shaft = normal_input("shaft", "d", 42.0, 0.005, description="Shaft diameter", basis="Inspection record SK-IR-3")
+    shaft = normal_input(
+        "shaft", "d", 42.0, 0.005, description="Shaft diameter", basis="Inspection record SK-IR-3"
+    )
     written = subtract(Name("bore"), Name("shaft"))
-    output = Output("clearance", "bore - shaft", written, written, "mm", r"\Delta", "Diametral clearance at assembly")
+    output = Output(
+        "clearance", "bore - shaft", written, written, "mm", r"\Delta", "Diametral clearance at assembly"
+    )
     the_model = model(
         inputs=(bore, shaft),
         outputs=(output,),
         constants=(Constant("expansion", 11.5e-6, "1/K", r"\alpha", "", "Handbook value for carbon steel"),),
-        dependence=(Dependence(("bore", "shaft"), "copula", "gaussian", "pearson", ((1.0, 0.3), (0.3, 1.0))),),
+        dependence=(
+            Dependence(("bore", "shaft"), "copula", "gaussian", "pearson", ((1.0, 0.3), (0.3, 1.0))),
+        ),
         steps=(Step("gap", "bore - shaft", written, "mm"),),
         requirements=(
             Requirement(
@@ -195,7 +215,7 @@ def clearance():
                 "clearance",
                 "the distribution of the clearance from two inputs",
                 "region_integral",
-                "Two inputs, a formula that is monotone in each: the limits of the region are found exactly in one.",
+                "Two inputs, a formula that is monotone in each: the limits of the region are found in one.",
                 ("bore", "shaft"),
                 inner="shaft",
                 outer=("bore",),
@@ -285,12 +305,22 @@ def clearance():
 def overspill():
     """A law with an atom: max(x, 0)."""
     law = ClippedNormalLaw(0.4, 1.0)
-    level = normal_input("level", "h", 0.4, 1.0, "cm", description="Wave level above the rim", basis="Tank trial")
+    level = normal_input(
+        "level", "h", 0.4, 1.0, "cm", description="Wave level above the rim", basis="Tank trial"
+    )
     written = Apply("max", (Name("level"), Number(0.0, "0")))
     output = Output("spill", "max(level, 0)", written, written, "cm", "s", "Height of water over the rim")
     the_model = model(title="Water over the rim of the battery well", inputs=(level,), outputs=(output,))
     plan = Plan(
-        (PlanStep("spill", "the distribution of the spill", "change_of_variables", "One input enters.", ("level",)),)
+        (
+            PlanStep(
+                "spill",
+                "the distribution of the spill",
+                "change_of_variables",
+                "One input enters.",
+                ("level",),
+            ),
+        )
     )
     mathematics = (
         Statement("Below the rim the formula is flat, which gives an atom:", r"P(s=0)=F_h(0)", "inverse"),
@@ -306,27 +336,53 @@ def missed():
     """A discrete law."""
     law = PoissonLaw(5.2)
     lost = Input("lost", Distribution("poisson", {"mean": 3.5}), "1", "B", "Shaded messages", "Ship passages")
-    corrupt = Input("corrupt", Distribution("poisson", {"mean": 1.7}), "1", "C", "Wrong checksum", "Receiver log")
+    corrupt = Input(
+        "corrupt", Distribution("poisson", {"mean": 1.7}), "1", "C", "Wrong checksum", "Receiver log"
+    )
     written = add(Name("lost"), Name("corrupt"))
     output = Output("missed", "lost + corrupt", written, written, "1", "N", "Messages missed in one week")
     the_model = model(title="Messages missed in one week", inputs=(lost, corrupt), outputs=(output,))
-    plan = Plan((PlanStep("missed", "the sum of two counts", "closed_form", "Poisson sums.", ("lost", "corrupt")),))
+    plan = Plan(
+        (PlanStep("missed", "the sum of two counts", "closed_form", "Poisson sums.", ("lost", "corrupt")),)
+    )
     derived = DerivedOutput(
-        "missed", "closed_form", law, (Statement("The sum of independent Poisson counts is Poisson:", r"N\sim\mathrm{Poisson}(\lambda_B+\lambda_C)", "closed_form"),)
+        "missed",
+        "closed_form",
+        law,
+        (
+            Statement(
+                "The sum of independent Poisson counts is Poisson:",
+                r"N\sim\mathrm{Poisson}(\lambda_B+\lambda_C)",
+                "closed_form",
+            ),
+        ),
     )
     findings = output_results("missed", "1", "closed_form", law, values=(0.0, 5.0, 14.0))
     verdict = Verdict(
-        "The bulletin has its data", "met", "P(missed <= 14) is at least 0.995", Figure(float(law.cdf(14)), 1e-13), 0.995, "at_least"
+        "The bulletin has its data",
+        "met",
+        "P(missed <= 14) is at least 0.995",
+        Figure(float(law.cdf(14)), 1e-13),
+        0.995,
+        "at_least",
     )
-    results = results_for(the_model, (findings,), requirements=(verdict,), evidence=sampling_evidence("missed", law))
-    return build(the_model, plan, (derived,), (), results, {"lost": PoissonLaw(3.5), "corrupt": PoissonLaw(1.7)})
+    results = results_for(
+        the_model, (findings,), requirements=(verdict,), evidence=sampling_evidence("missed", law)
+    )
+    return build(
+        the_model, plan, (derived,), (), results, {"lost": PoissonLaw(3.5), "corrupt": PoissonLaw(1.7)}
+    )
 
 
 def tilt():
     """Two outputs of two inputs with a joint density."""
     inputs = (
-        normal_input("along", "a", -0.2, 0.85, "deg", description="Reading along the arm", basis="Ten days at anchor"),
-        normal_input("across", "c", 0.15, 0.76, "deg", description="Reading across the arm", basis="The same days"),
+        normal_input(
+            "along", "a", -0.2, 0.85, "deg", description="Reading along the arm", basis="Ten days at anchor"
+        ),
+        normal_input(
+            "across", "c", 0.15, 0.76, "deg", description="Reading across the arm", basis="The same days"
+        ),
     )
     roll = add(Name("along"), Name("across"))
     pitch = subtract(Name("along"), Name("across"))
@@ -361,18 +417,36 @@ def tilt():
             ),
         ),
     )
-    findings = tuple(output_results(name, "deg", "jacobian", law, values=(0.0, 2.0)) for name, law in laws.items())
+    findings = tuple(
+        output_results(name, "deg", "jacobian", law, values=(0.0, 2.0)) for name, law in laws.items()
+    )
     event = "roll > -3 and roll < 3 and pitch > -3 and pitch < 3"
     plan = Plan(
-        tuple(PlanStep(name, f"the marginal of {name}", "jacobian", "As many outputs as inputs.", ("along", "across")) for name in laws),
-        (PlanStep("roll, pitch", "the joint law", "jacobian", "Two outputs of two inputs.", ("along", "across")),),
+        tuple(
+            PlanStep(
+                name, f"the marginal of {name}", "jacobian", "As many outputs as inputs.", ("along", "across")
+            )
+            for name in laws
+        ),
+        (
+            PlanStep(
+                "roll, pitch", "the joint law", "jacobian", "Two outputs of two inputs.", ("along", "across")
+            ),
+        ),
     )
     results = results_for(
         the_model,
         findings,
         joint=Joint((("roll", "pitch", Figure(0.11147, 1e-9)),), ((event, Figure(0.98812345, 3e-7)),)),
         requirements=(
-            Verdict("The vane stays within its class", "not met", f"P({event}) is at least 0.995", Figure(0.98812345, 3e-7), 0.995, "at_least"),
+            Verdict(
+                "The vane stays within its class",
+                "not met",
+                f"P({event}) is at least 0.995",
+                Figure(0.98812345, 3e-7),
+                0.995,
+                "at_least",
+            ),
         ),
         evidence=(*sampling_evidence("roll", laws["roll"]), *sampling_evidence("pitch", laws["pitch"])),
         drivers=tuple(
@@ -388,8 +462,23 @@ def mooring():
     """Safety: cautions in full; one requirement undecided, its probability close to the limit."""
     law = NormalLaw(68.0, 11.5)
     inputs = (
-        Input("strength", Distribution("normal", {"mean": 110.0, "sd": 10.2}, lower=60.0), "kN", "R", "Breaking strength", "Twelve pull tests"),
-        normal_input("load", "Q", 42.0, 5.4, "kN", description="Largest line load of one year", basis="Hindcast of 22 winters"),
+        Input(
+            "strength",
+            Distribution("normal", {"mean": 110.0, "sd": 10.2}, lower=60.0),
+            "kN",
+            "R",
+            "Breaking strength",
+            "Twelve pull tests",
+        ),
+        normal_input(
+            "load",
+            "Q",
+            42.0,
+            5.4,
+            "kN",
+            description="Largest line load of one year",
+            basis="Hindcast of 22 winters",
+        ),
     )
     written = subtract(Name("strength"), Name("load"))
     output = Output("margin", "strength - load", written, written, "kN", "M", "Strength less load")
@@ -401,14 +490,33 @@ def mooring():
         inputs=inputs,
         outputs=(output,),
     )
-    plan = Plan((PlanStep("margin", "strength less load", "sampling", "No exact route in this version.", ("strength", "load")),))
-    derived = DerivedOutput("margin", "sampling", law, assumptions=("Sobol' points are scrambled.",), notes=("16 randomisations",))
+    plan = Plan(
+        (
+            PlanStep(
+                "margin",
+                "strength less load",
+                "sampling",
+                "No exact route in this version.",
+                ("strength", "load"),
+            ),
+        )
+    )
+    derived = DerivedOutput(
+        "margin", "sampling", law, assumptions=("Sobol' points are scrambled.",), notes=("16 randomisations",)
+    )
     findings = output_results("margin", "kN", "sampling", law, values=(0.0, 20.0))
     results = results_for(
         the_model,
         (findings,),
         requirements=(
-            Verdict("The line holds through one year", "undecided", "P(margin <= 0) is at most 1e-06", Figure(1.02e-6, 0.3e-6), 1e-6, "at_most"),
+            Verdict(
+                "The line holds through one year",
+                "undecided",
+                "P(margin <= 0) is at most 1e-06",
+                Figure(1.02e-6, 0.3e-6),
+                1e-6,
+                "at_most",
+            ),
         ),
         evidence=sampling_evidence("margin", law, agrees=False),
     )
@@ -422,25 +530,38 @@ def ratio():
     written = Apply("divide", (Name("first"), Name("second")))
     output = Output("quotient", "first / second", written, written, "1")
     the_model = model(title="Ratio of two centred errors", purpose="", inputs=inputs, outputs=(output,))
-    plan = Plan((PlanStep("quotient", "ratio of two normals", "closed_form", "Known: Cauchy.", ("first", "second")),))
-    symbolic = SymbolicDensity(r"\frac{1}{\pi\left(1+y^2\right)}", law.pdf, "Cauchy distribution", "Marsaglia 1965")
+    plan = Plan(
+        (PlanStep("quotient", "ratio of two normals", "closed_form", "Known: Cauchy.", ("first", "second")),)
+    )
+    symbolic = SymbolicDensity(
+        r"\frac{1}{\pi\left(1+y^2\right)}", law.pdf, "Cauchy distribution", "Marsaglia 1965"
+    )
     derived = DerivedOutput("quotient", "closed_form", law, (), symbolic, NormalLaw(0, 1))
     findings = output_results("quotient", "1", "closed_form", law, values=(0.0, 10.0))
     results = results_for(the_model, (findings,), evidence=sampling_evidence("quotient", law))
-    return build(the_model, plan, (derived,), (), results, {"first": NormalLaw(0, 1), "second": NormalLaw(0, 1)})
+    return build(
+        the_model, plan, (derived,), (), results, {"first": NormalLaw(0, 1), "second": NormalLaw(0, 1)}
+    )
 
 
 def bearing_angle():
     """A density that is unbounded at both ends of a bounded support."""
     law = ArcsineLaw()
-    phase = Input("phase", Distribution("uniform", {"lower": 0, "upper": 1}), "1", r"\phi", "Phase", "Free running")
+    phase = Input(
+        "phase", Distribution("uniform", {"lower": 0, "upper": 1}), "1", r"\phi", "Phase", "Free running"
+    )
     written = Apply("power", (Apply("sin", (Name("phase"),)), Number(2.0, "2")))
     output = Output("share", "sin(phase)^2", written, written, "1", "q", "Share of the carrier")
     the_model = model(title="Share of the carrier at a free phase", inputs=(phase,), outputs=(output,))
-    plan = Plan((PlanStep("share", "a function of one input", "change_of_variables", "One input.", ("phase",)),))
+    plan = Plan(
+        (PlanStep("share", "a function of one input", "change_of_variables", "One input.", ("phase",)),)
+    )
     derived = DerivedOutput("share", "change_of_variables", law)
     findings = output_results("share", "1", "change_of_variables", law, values=(0.0, 0.5))
-    findings = replace(findings, values=(replace(findings.values[0], pdf=Absent("the density is unbounded here")), findings.values[1]))
+    findings = replace(
+        findings,
+        values=(replace(findings.values[0], pdf=Absent("the density is unbounded here")), findings.values[1]),
+    )
     results = results_for(the_model, (findings,), evidence=sampling_evidence("share", law))
     return build(the_model, plan, (derived,), (), results, {})
 

@@ -1,4 +1,4 @@
-"""Laws for the report's fixtures, from the standard library alone: the report must not depend on the engine."""
+"""Laws for the report's fixtures, from the standard library alone: no engine is needed."""
 
 from __future__ import annotations
 

@@ -72,7 +72,11 @@ def test_what_is_not_known_is_shown_as_text(latex):
 
 
 def test_depth_and_size_are_capped():
-    for text in ("{" * 5000 + "x" + "}" * 5000, r"\begin{cases}" * 3 + "x" + r"\end{cases}" * 3, "x" * 30_000):
+    for text in (
+        "{" * 5000 + "x" + "}" * 5000,
+        r"\begin{cases}" * 3 + "x" + r"\end{cases}" * 3,
+        "x" * 30_000,
+    ):
         with pytest.raises(LatexError):
             read(text)
 

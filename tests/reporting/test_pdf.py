@@ -1,4 +1,4 @@
-"""The PDF: the same bytes, the attachments inside, nothing read from elsewhere, a clear word where it fails."""
+"""The PDF: the same bytes, its attachments, nothing read from elsewhere, a clear word where it fails."""
 
 from __future__ import annotations
 
@@ -28,7 +28,9 @@ def document(page, report):
 
 def test_it_is_a_tagged_pdf_a_document(document):
     assert document.startswith(b"%PDF-1.7")
-    metadata = b"".join(zlib.decompress(part) for part in re.findall(rb"stream\n(x.*?)\nendstream", document, re.S))
+    metadata = b"".join(
+        zlib.decompress(part) for part in re.findall(rb"stream\n(x.*?)\nendstream", document, re.S)
+    )
     assert b'pdfaid:part="3" pdfaid:conformance="A"' in metadata
     assert b"/StructTreeRoot" in metadata + document
 
@@ -43,7 +45,11 @@ def test_the_bytes_are_the_same_in_another_process(document):
     )
     environment = {**os.environ, "PYTHONHASHSEED": "99", "PYTHONPATH": os.pathsep.join(sys.path)}
     run = subprocess.run(
-        [sys.executable, "-c", program, str(HERE)], env=environment, capture_output=True, text=True, check=True
+        [sys.executable, "-c", program, str(HERE)],
+        env=environment,
+        capture_output=True,
+        text=True,
+        check=True,
     )
     assert run.stdout.strip() == hashlib.sha256(document).hexdigest()
     assert run.stderr == ""
@@ -81,7 +87,11 @@ def test_nothing_outside_the_report_is_read(page, report, tmp_path, caplog):
     html = "<html lang='en'><title>t</title><body><p>text</p>" + planted
     written = render_pdf(html, report("overspill"))
     assert b"secret.txt" not in written
-    refused = [record.getMessage() for record in caplog.records if "reads no address but its own" in record.getMessage()]
+    refused = [
+        record.getMessage()
+        for record in caplog.records
+        if "reads no address but its own" in record.getMessage()
+    ]
     assert len(refused) >= 3
 
 

@@ -108,7 +108,7 @@ def test_every_link_has_its_target(parsed, name):
 
 @pytest.mark.parametrize("name", KINDS)
 def test_readers_who_cannot_see_are_served(parsed, page, name):
-    """Alternative text for every picture, captions and scopes for every table, no level of heading skipped."""
+    """Every picture has its words, every table a caption and scopes, no level of heading is skipped."""
     found = parsed(name)
     assert '<html lang="en">' in page(name)
     assert all(image.get("alt", "").strip() for image in found.images)
@@ -120,7 +120,9 @@ def test_readers_who_cannot_see_are_served(parsed, page, name):
 def figures(output):
     """All figures of an output with the scale by which the results file rounds each."""
     scale = scale_of(output)
-    yield from ((found, scale) for found in (output.mean, output.standard_deviation, output.median, output.mode))
+    yield from (
+        (found, scale) for found in (output.mean, output.standard_deviation, output.median, output.mode)
+    )
     yield from ((found, 1.0) for found in (output.skewness, output.kurtosis))
     yield from ((found, scale) for found in output.support)
     yield from ((found, scale) for _, found in output.quantiles)
@@ -151,7 +153,9 @@ _PLAIN = str.maketrans("⁰¹²³⁴⁵⁶⁷⁸⁹⁻", "0123456789-")
 def test_the_first_section_answers_in_words_and_numbers(parsed, report):
     text = parsed("clearance").text
     assert "One of two requirements is not met: “The parts can be assembled”." in text
-    assert "With probability 0.95, clearance lies between 0.007450 and 0.03255\xa0mm" in text.replace(" mm", "\xa0mm")
+    assert "With probability 0.95, clearance lies between 0.007450 and 0.03255\xa0mm" in text.replace(
+        " mm", "\xa0mm"
+    )
     assert "at least 0.999" in text
 
 
@@ -188,7 +192,9 @@ def test_hostile_text_stays_text():
         title=nasty,
         purpose=nasty,
         record={"number": nasty, "revision": nasty},
-        inputs=tuple(replace(item, basis=nasty, description=nasty, symbol=nasty) for item in data.model.inputs),
+        inputs=tuple(
+            replace(item, basis=nasty, description=nasty, symbol=nasty) for item in data.model.inputs
+        ),
         outputs=tuple(replace(item, unit=nasty, symbol=nasty, text=nasty) for item in data.model.outputs),
         cautions=(nasty,),
     )
@@ -211,7 +217,11 @@ def test_the_page_is_the_same_under_another_hash_seed(page):
 
     environment = {**os.environ, "PYTHONHASHSEED": "4711", "PYTHONPATH": os.pathsep.join(sys.path)}
     run = subprocess.run(
-        [sys.executable, "-c", program, str(HERE)], env=environment, capture_output=True, text=True, check=True
+        [sys.executable, "-c", program, str(HERE)],
+        env=environment,
+        capture_output=True,
+        text=True,
+        check=True,
     )
     assert run.stdout.strip() == hashlib.sha256(page("overspill").encode()).hexdigest()
 

@@ -9,8 +9,8 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from outspread.reporting.latex import Fence, Fraction, Part, Root, Row, Scripts, Space, Symbol
 from outspread.reporting.mathml import atom_class, delimiter_size
+from outspread.reporting.parts import Fence, Fraction, Part, Root, Row, Scripts, Space, Symbol
 
 Measure = Callable[[Row], float]
 _NOTHING = Row(())

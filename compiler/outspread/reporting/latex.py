@@ -7,10 +7,10 @@ Unknown macros and environments raise LatexError: drawn literally they would be 
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
 from functools import lru_cache
 
 from outspread.reporting import symbols
+from outspread.reporting.parts import Fence, Fraction, Mark, Part, Root, Row, Scripts, Space, Symbol, Table
 
 #: caps that keep drawing time and size bounded, whatever the text
 MOST_CHARACTERS = 20_000
@@ -21,78 +21,6 @@ LARGEST_TABLE = 100
 
 class LatexError(ValueError):
     """The text is not LaTeX that a report can typeset; the caller shows it as plain text instead."""
-
-
-@dataclass(frozen=True, slots=True)
-class Part:
-    """One piece of a formula."""
-
-
-@dataclass(frozen=True, slots=True)
-class Symbol(Part):
-    """A character, number or word. `kind` is its class in TeX's sense, which sets the space around it:
-    letter, number, ordinary, binary, relation, open, close, punctuation, large, function, text.
-    `size` is a delimiter's height in em (0: as the text)."""
-
-    text: str
-    kind: str
-    variant: str = ""
-    size: float = 0.0
-    limits: bool = False
-
-
-@dataclass(frozen=True, slots=True)
-class Space(Part):
-    width: float
-
-
-@dataclass(frozen=True, slots=True)
-class Row(Part):
-    parts: tuple[Part, ...]
-
-
-@dataclass(frozen=True, slots=True)
-class Fraction(Part):
-    above: Row
-    below: Row
-    line: bool = True
-
-
-@dataclass(frozen=True, slots=True)
-class Root(Part):
-    body: Row
-    index: Row | None = None
-
-
-@dataclass(frozen=True, slots=True)
-class Scripts(Part):
-    base: Part
-    below: Row | None
-    above: Row | None
-
-
-@dataclass(frozen=True, slots=True)
-class Fence(Part):
-    left: str
-    body: Row
-    right: str
-
-
-@dataclass(frozen=True, slots=True)
-class Mark(Part):
-    """An accent or a line over (or under) its body."""
-
-    mark: str
-    body: Row
-    under: bool = False
-
-
-@dataclass(frozen=True, slots=True)
-class Table(Part):
-    left: str
-    rows: tuple[tuple[Row, ...], ...]
-    right: str
-    align: str
 
 
 _TOKEN = re.compile(r"\\[A-Za-z]+\*?|\\.|\d+(?:\.\d+)?|\s+|.", re.DOTALL)

@@ -9,7 +9,7 @@ from __future__ import annotations
 from functools import singledispatch
 from xml.sax.saxutils import escape
 
-from outspread.reporting.latex import Fence, Fraction, Mark, Part, Root, Row, Scripts, Space, Symbol, Table
+from outspread.reporting.parts import Fence, Fraction, Mark, Part, Root, Row, Scripts, Space, Symbol, Table
 
 _THIN, _MEDIUM, _THICK = 3 / 18, 4 / 18, 5 / 18
 #: behind these, a + or - is a sign, not an operation

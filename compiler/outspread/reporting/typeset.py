@@ -15,8 +15,9 @@ from functools import lru_cache
 from markupsafe import Markup, escape
 
 from outspread.reporting.breaking import lines
-from outspread.reporting.latex import LatexError, Row, read
+from outspread.reporting.latex import LatexError, read
 from outspread.reporting.mathml import count, mathml, plain
+from outspread.reporting.parts import Row
 
 #: width that a displayed formula may take, in em of the text around it: the narrowest column (A4 print),
 #: less its indent and its number

@@ -21,8 +21,9 @@ from outspread.planning.plan import PlanStep
 from outspread.reading.model import Output
 from outspread.reporting import curves, plots, setup, tables, words
 from outspread.reporting.data import ReportData
-from outspread.reporting.latex import LatexError, Symbol, read
+from outspread.reporting.latex import LatexError, read
 from outspread.reporting.numbers import error_text, exact, grouped, rounded, unit_suffix
+from outspread.reporting.parts import Symbol
 from outspread.reporting.setup import Numbering, symbol
 from outspread.reporting.typeset import coded, display, sentence
 from outspread.routes.derived import DerivedOutput, JointLaw, Statement
