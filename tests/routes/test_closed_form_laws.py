@@ -264,3 +264,34 @@ def test_moments_that_do_not_exist_are_said_not_to() -> None:
     assert power.mean() == np.inf
     product_law = derived("m*n", {"m": lognormal(0, 0.5), "n": lognormal(0.2, 0.8)})
     assert product_law.mean() == pytest.approx(np.exp(0.2 + 0.89 / 2), rel=1e-12)
+
+
+@pytest.mark.parametrize("y", [-1500.0, -800.0, -41.5, -39.0, -3.0, 0.7])
+def test_logarithms_of_gammas_keep_their_lower_tail(y: float) -> None:
+    """P(ln G <= y) for shape 1/2 against mpmath's incomplete gamma, where e^y underflows too."""
+    own = derived("log(g)", {"g": gamma(0.5, 1)})
+    mpmath.mp.dps = 30
+    exact = float(mpmath.gammainc(0.5, 0, mpmath.exp(y), regularized=True))
+    mpmath.mp.dps = 15
+    assert float(own.cdf(y)) == pytest.approx(exact, rel=1e-12)
+    if exact > 1e-300:
+        assert float(own.icdf(exact)) == pytest.approx(y, rel=1e-11)
+
+
+@pytest.mark.parametrize("y", [-900.0, -45.0, -42.0, -1.0, 2.0, 41.0, 44.0, 700.0])
+def test_logarithms_of_quotients_keep_both_tails(y: float) -> None:
+    """P(ln(A/B) <= y) and its complement against mpmath's incomplete beta (A: 1, B: 3 degrees of freedom)."""
+    own = derived("log(a/b)", {"a": chi_square(1), "b": chi_square(3)})
+    mpmath.mp.dps = 700
+    v = mpmath.exp(y)
+    below = mpmath.betainc(0.5, 1.5, 0, v / (1 + v), regularized=True)
+    assert float(own.cdf(y)) == pytest.approx(float(below), rel=1e-12)
+    assert float(own.ccdf(y)) == pytest.approx(float(1 - below), rel=1e-11)
+    mpmath.mp.dps = 15
+
+
+def test_moments_of_logarithms_are_polygamma_values() -> None:
+    """E ln G = digamma(a), variance trigamma(a) (JKB vol. 2, ch. 22; from memory), shape 1/2."""
+    own = derived("log(g)", {"g": gamma(0.5, 1)})
+    assert own.mean() == pytest.approx(float(mpmath.digamma(0.5)), rel=1e-11)
+    assert own.variance() == pytest.approx(float(mpmath.polygamma(1, 0.5)), rel=1e-11)

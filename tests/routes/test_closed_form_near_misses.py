@@ -228,7 +228,7 @@ def test_random_formulas_agree_with_sampling_where_a_form_is_claimed(text: str) 
     assert not np.isnan(sample).any(), f"{text} is undefined with positive probability"
     sample = np.sort(sample[np.isfinite(sample)])
     sample = np.where(np.abs(sample) < 1e300, sample, np.sign(sample) * 1e300)
-    rounding = 1e-9 * np.abs(sample) + 1e-300
+    rounding = 1e-9 * np.abs(sample) + 1e-12
     band = sqrt(log(2 / 1e-9) / (2 * count))
     above = np.searchsorted(sample, sample, side="right") / count
     below = np.searchsorted(sample, sample, side="left") / count

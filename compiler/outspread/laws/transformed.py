@@ -240,3 +240,68 @@ class Transformed(Law):
 
     def kurtosis(self) -> float:
         return self._moments[3]
+
+
+@dataclass(frozen=True)
+class PowerTail:
+    """P(X <= x) is exp(constant) x^exponent near 0, or P(X > x) is exp(constant) x^-exponent far out."""
+
+    exponent: float
+    constant: float
+
+
+class LogLaw(Transformed):
+    """The law of ln X for X > 0 with a power law at 0, and perhaps at infinity.
+
+    Beyond `far` on the logarithmic scale the power law holds to rounding; it carries the tails on where X
+    itself would underflow or overflow.
+    """
+
+    def __init__(self, base: Law, lower: PowerTail, upper: PowerTail | None = None, far: float = 40.0):
+        super().__init__(base, LOG_MAP, (-INF, INF))
+        self._lower, self._upper, self._far = lower, upper, far
+
+    def _joined(
+        self, y: npt.ArrayLike, middle: Function, below: Function | None, above: Function | None
+    ) -> Array:
+        """`middle` between -far and far, `below` and `above` (where given) beyond."""
+        y = np.asarray(y, float)
+        value = np.asarray(middle(y))
+        with np.errstate(all="ignore"):
+            if below is not None:
+                value = np.where(y < -self._far, below(y), value)
+            if above is not None:
+                value = np.where(y > self._far, above(y), value)
+        return np.asarray(value)
+
+    def _tail(self, tail: PowerTail | None, factor: bool = False) -> Function | None:
+        if tail is None:
+            return None
+        scale = tail.exponent if factor else 1.0
+        return lambda y: np.asarray(scale * np.exp(tail.constant - tail.exponent * np.abs(y)))
+
+    def pdf(self, x: npt.ArrayLike) -> Array:
+        return self._joined(x, super().pdf, self._tail(self._lower, True), self._tail(self._upper, True))
+
+    def cdf(self, x: npt.ArrayLike) -> Array:
+        return self._joined(x, super().cdf, self._tail(self._lower), None)
+
+    def ccdf(self, x: npt.ArrayLike) -> Array:
+        return self._joined(x, super().ccdf, None, self._tail(self._upper))
+
+    def _quantile(self, p: npt.ArrayLike, middle: Function, tail: PowerTail | None) -> Array:
+        """|y| from the power law where it is beyond `far`, else `middle`."""
+        p = np.asarray(p, float)
+        value = np.asarray(middle(p))
+        if tail is None:
+            return value
+        with np.errstate(all="ignore"):
+            distance = (tail.constant - np.log(p)) / tail.exponent
+        sign = -1.0 if tail is self._lower else 1.0
+        return np.asarray(np.where(distance > self._far, sign * distance, value))
+
+    def icdf(self, p: npt.ArrayLike) -> Array:
+        return self._quantile(p, super().icdf, self._lower)
+
+    def iccdf(self, q: npt.ArrayLike) -> Array:
+        return self._quantile(q, super().iccdf, self._upper)

@@ -7,12 +7,12 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from fractions import Fraction
-from math import sqrt
+from math import lgamma, log, sqrt
 
 from outspread.laws.law import Law
 from outspread.laws.normal_product import LARGEST_CORRELATION, NormalProduct
 from outspread.laws.registry import FAMILIES
-from outspread.laws.transformed import EXP_MAP, LOG_MAP, AffineLaw, Transformed, power_map
+from outspread.laws.transformed import EXP_MAP, AffineLaw, LogLaw, PowerTail, Transformed, power_map
 from outspread.laws.uniform_sum import UniformSum
 from outspread.routes.closed_form import exact as ex
 from outspread.routes.closed_form.forms import Form
@@ -53,7 +53,9 @@ def moved(law: Law, name: str, scale: Fraction, shift: Fraction) -> Named:
     if scale == 1 and shift == 0:
         return law, name
     words = [word for word, applies in (("scaled", scale != 1), ("shifted", shift != 0)) if applies]
-    return AffineLaw(law, float(scale), float(shift)), f"{name}, {' and '.join(words)}"
+    result = AffineLaw(law, float(scale), float(shift))
+    result.name = f"{name}, {' and '.join(words)}"
+    return result, result.name
 
 
 def _rest(form: Form) -> tuple[float, Fraction]:
@@ -123,7 +125,10 @@ def _log_gamma(form: Form) -> Named:
     if form.shape == (ex.ONE,):
         side, key = ("minima", "gumbel_min") if form.scale > 0 else ("maxima", "gumbel_max")
         return family(key, location=float(form.shift), scale=size), f"Gumbel distribution for {side}"
-    base = Transformed(family("gamma", shape=float(form.shape[0]), scale=1.0), LOG_MAP, (-INF, INF))
+    a = float(form.shape[0])
+    base = LogLaw(
+        family("gamma", shape=a, scale=1.0), PowerTail(a, -lgamma(a + 1)), far=40 + log(1 + a)
+    )
     law, _ = moved(base, "", form.scale, form.shift)
     return law, "Log-gamma distribution"
 
@@ -191,9 +196,13 @@ def _f(form: Form) -> Named:
 
 
 def _log_f(form: Form) -> Named:
-    a, b = form.shape
-    base = Transformed(_ratio_law(a, b), LOG_MAP, (-INF, INF))
-    shift = form.shift + form.scale * ex.logarithm(a / b)
+    a, b = (float(value) for value in form.shape)
+    log_beta = lgamma(a) + lgamma(b) - lgamma(a + b)
+    ratio = log(a / b)  # of the F variable to the quotient of the gamma variables
+    lower = PowerTail(a, a * ratio - log(a) - log_beta)
+    upper = PowerTail(b, -b * ratio - log(b) - log_beta)
+    base = LogLaw(_ratio_law(*form.shape), lower, upper, far=40 + log(1 + a + b) + abs(ratio))
+    shift = form.shift + form.scale * ex.logarithm(form.shape[0] / form.shape[1])
     return AffineLaw(base, float(form.scale), float(shift)), "Fisher z distribution, scaled and shifted"
 
 

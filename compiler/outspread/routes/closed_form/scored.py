@@ -1,4 +1,4 @@
-"""Recognition of closed forms under the model's Gaussian dependence, as the planner and the engine ask for it."""
+"""Recognition of closed forms under the dependence of the model, as the planner and the engine ask for it."""
 
 from __future__ import annotations
 
