@@ -90,7 +90,9 @@ def _point(law: Law, probability: float, lower: float, guess: float) -> _Point |
         step = (float(above.value) - left) / float(density.value)
         # half-way at most to where the tail would be used up, so that a bad guess cannot run away
         upper += float(np.clip(step, -0.5 * abs(upper - lower), 0.5 * abs(upper - lower)))
-        if abs(step) <= 4e-15 * max(abs(upper), abs(upper - lower)):
+        # no step below the error of the probability itself means anything
+        enough = max(4e-15 * max(abs(upper), abs(upper - lower)), 0.1 * float(above.error) / float(density.value))
+        if abs(step) <= enough:
             break
     doubt = (float(above.error) + float(below.error)) / float(density.value)
     start = stated(law, "pdf", lower)

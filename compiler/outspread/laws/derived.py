@@ -51,6 +51,8 @@ class DerivedLaw(Law):
         self.tail_probability = tail_probability
         self._given_tails = tails
         self._seen: dict[str, dict[float, tuple[float, float]]] = {kind: {} for kind in KINDS}
+        self._quantiles: dict[bool, dict[float, tuple[float, float]]] = {False: {}, True: {}}
+        self._table: tuple[Array, Array, Array] | None = None
         self._moments: tuple[Estimates, Array] | None = None
 
     # --- values with errors -------------------------------------------------------------------------
@@ -137,59 +139,102 @@ class DerivedLaw(Law):
         its stated error crosses p. Outside [0, 1]: NaN."""
         levels = np.asarray(p, float)
         flat = levels.ravel()
-        value = np.full(flat.size, np.nan)
-        error = np.zeros(flat.size)
         low, high = self._support
         if upper:
             low, high = high, low
-        value[flat == 0], value[flat == 1] = low, high
-        inside = (flat > 0) & (flat < 1)
-        if inside.any():
-            value[inside], error[inside] = self._solve(flat[inside], upper)
-        return Estimates(value.reshape(levels.shape), error.reshape(levels.shape))
+        seen = self._quantiles[upper]
+        missing = np.array([v for v in dict.fromkeys(flat.tolist()) if v not in seen and 0 < v < 1])
+        if missing.size:
+            value, error = self._solve(missing, upper)
+            seen.update(zip(missing.tolist(), zip(value.tolist(), error.tolist(), strict=True), strict=True))
+        ends = {0.0: (low, 0.0), 1.0: (high, 0.0)}
+        pairs = [seen.get(v) or ends.get(v, (np.nan, np.nan)) for v in flat.tolist()]
+        both = np.array(pairs, float).reshape(-1, 2)
+        return Estimates(both[:, 0].reshape(levels.shape), both[:, 1].reshape(levels.shape))
+
+    def _grid(self) -> tuple[Array, Array, Array]:
+        """The nodes with the ends of the support, and cdf and ccdf there."""
+        if self._table is None:
+            low, high = self._support
+            nodes = self.nodes
+            spread = nodes[-1] - nodes[0]
+            first = low if np.isfinite(low) else nodes[0] - spread
+            last = high if np.isfinite(high) else nodes[-1] + spread
+            points = np.unique(np.concatenate([[first], nodes, [last]]))
+            self._table = points, self.cdf(points), self.ccdf(points)
+        return self._table
+
+    def rough_quantile(self, p: Array, upper: bool = False) -> Array:
+        """Quantiles interpolated between the nodes: to grade a grid, not to be stated."""
+        points, below, above = self._grid()
+        tail = above[::-1] if upper else below
+        along = points[::-1] if upper else points
+        tail = np.maximum.accumulate(tail)
+        with np.errstate(divide="ignore"):
+            result = np.interp(np.log(p), np.maximum(np.log(tail), -1e4), along)
+        return np.asarray(result)
 
     def _solve(self, p: Array, upper: bool) -> tuple[Array, Array]:
-        kind = "ccdf" if upper else "cdf"
-        # the tail that is small at the target keeps its relative accuracy
+        """Newton's method between nodes, kept in a bracket; what it does not settle is bisected."""
         other = p > 0.5
         target = np.where(other, 1 - p, p)
+        from_below = other == upper  # whether the cdf (not the ccdf) is small at the target
+        y, left, right = self._start(target, from_below)
+        width = right - left
+        open_ = np.arange(p.size)
+        for _ in range(14):
+            gap, density, doubt = self._gap(y[open_], target[open_], from_below[open_])
+            left[open_] = np.where(gap < 0, y[open_], left[open_])
+            right[open_] = np.where(gap >= 0, y[open_], right[open_])
+            with np.errstate(all="ignore"):
+                step = -gap / density
+                small = np.abs(step) <= np.maximum(4e-16 * np.abs(y[open_]), 0.05 * doubt / density)
+            settled = (small & np.isfinite(step)) | (left[open_] == right[open_])
+            width[open_[settled]] = np.abs(step[settled])
+            moved = y[open_] + step
+            inside = (moved > left[open_]) & (moved < right[open_])
+            y[open_] = np.where(settled, y[open_], np.where(inside, moved, 0.5 * (left[open_] + right[open_])))
+            open_ = open_[~settled]
+            if not open_.size:
+                break
+        if open_.size:
+            y[open_], width[open_] = bracketed_root(
+                lambda x, i: self._gap(x, target[open_[i]], from_below[open_[i]])[0], left[open_], right[open_]
+            )
+            lost = open_[np.isnan(y[open_])]
+            y[lost], width[lost] = right[lost], 0.0
+        y = self._snap(y)
+        return y, self._quantile_error(y, width, target, from_below)
 
-        def gap(y: Array, index: npt.NDArray[np.int64]) -> Array:
-            """log of probability over target; rising with y."""
-            result = np.empty(y.size)
-            for flip in (False, True):
-                part = other[index] == flip
-                if part.any():
-                    wanted = kind if not flip else ("cdf" if upper else "ccdf")
-                    with np.errstate(divide="ignore"):
-                        log = np.log(self.cdf(y[part]) if wanted == "cdf" else self.ccdf(y[part]))
-                        gap_ = np.maximum(log, -1e4) - np.log(target[index][part])
-                    result[part] = gap_ if wanted == "cdf" else -gap_
-            return result
+    def _gap(self, y: Array, target: Array, from_below: npt.NDArray[np.bool_]) -> tuple[Array, Array, Array]:
+        """cdf - p (or p' - ccdf), rising with y; the density; the error of the probability."""
+        value, doubt = np.empty(y.size), np.empty(y.size)
+        for flag, kind in ((True, "cdf"), (False, "ccdf")):
+            part = from_below == flag
+            if part.any():
+                estimate = self.estimate(kind, y[part])
+                value[part] = (estimate.value - target[part]) * (1 if flag else -1)
+                doubt[part] = estimate.error
+        density = self.pdf(y) if self._continuous_mass > 0 else np.zeros_like(y)
+        return value, density, doubt
 
-        left, right = self._bracket(gap, p.size)
-        root, width = bracketed_root(gap, left, right)
-        unknown = np.isnan(root)
-        root[unknown] = np.where(gap(left[unknown], np.flatnonzero(unknown)) >= 0, left[unknown], right[unknown])
-        root = self._snap(root)
-        return root, self._quantile_error(root, width, target, other, upper)
-
-    def _bracket(self, gap: Callable[[Array, npt.NDArray[np.int64]], Array], count: int) -> tuple[Array, Array]:
-        nodes = self.nodes
-        low, high = self._support
-        ends_low = low if np.isfinite(low) else min(2 * nodes[0] - nodes[-1], nodes[0])
-        ends_high = high if np.isfinite(high) else max(2 * nodes[-1] - nodes[0], nodes[-1])
-        points = np.unique(np.concatenate([[ends_low], nodes, [ends_high]]))
-        left, right = np.zeros(count, np.int64), np.full(count, points.size - 1)
-        index = np.arange(count)
-        while True:
-            middle = (left + right) // 2
-            open_ = right - left > 1
-            if not open_.any():
-                return points[left], points[right]
-            above = gap(points[middle], index) >= 0
-            right = np.where(open_ & above, middle, right)
-            left = np.where(open_ & ~above, middle, left)
+    def _start(self, target: Array, from_below: npt.NDArray[np.bool_]) -> tuple[Array, Array, Array]:
+        """A first guess and the nodes around it: cdf(left) < p <= cdf(right)."""
+        points, below, above = self._grid()
+        below, above = np.maximum.accumulate(below), np.maximum.accumulate(above[::-1])[::-1]
+        right = np.where(
+            from_below,
+            np.searchsorted(below, target, side="left"),
+            points.size - np.searchsorted(above[::-1], target, side="right"),
+        )
+        right = np.clip(right, 1, points.size - 1)
+        left = right - 1
+        with np.errstate(all="ignore"):
+            tail = np.where(from_below, below[left], above[left]), np.where(from_below, below[right], above[right])
+            one, two = (np.log(np.maximum(t, 1e-305)) for t in tail)
+            share = (np.log(target) - one) / (two - one)
+        share = np.where(np.isfinite(share), np.clip(share, 0.02, 0.98), 0.5)
+        return points[left] + share * (points[right] - points[left]), points[left], points[right]
 
     def _snap(self, y: Array) -> Array:
         """The root finder stops within the last digits of an atom; the atom itself is the quantile."""
@@ -202,8 +247,9 @@ class DerivedLaw(Law):
         closest = candidates[best, np.arange(y.size)]
         return np.where(np.abs(closest - y) <= 1e-14 * np.maximum(np.abs(closest), 1e-300), closest, y)
 
-    def _quantile_error(self, y: Array, width: Array, target: Array, other: Array, upper: bool) -> Array:
-        from_below = other == upper  # whether the cdf (not the ccdf) is the small one
+    def _quantile_error(
+        self, y: Array, width: Array, target: Array, from_below: npt.NDArray[np.bool_]
+    ) -> Array:
         estimate = [self.estimate(kind, y) for kind in ("cdf", "ccdf")]
         doubt = np.where(from_below, estimate[0].error, estimate[1].error)
         density = self.pdf(y) if self._continuous_mass > 0 else np.zeros_like(y)
@@ -252,7 +298,7 @@ class DerivedLaw(Law):
             return Tail(np.inf, True)
         levels = np.array([1e-30, 1e-60, 1e-120, 1e-240])
         levels = levels[levels > self.tail_probability]
-        y = self.iccdf(levels) if side > 0 else self.icdf(levels)
+        y = self.rough_quantile(levels, upper=side > 0)
         centre = float(self.icdf(0.5))
         beyond = self.ccdf(y) if side > 0 else self.cdf(y)
         with np.errstate(all="ignore"):

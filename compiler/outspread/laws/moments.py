@@ -66,7 +66,7 @@ def _points(law: DerivedLaw, centre: float, side: int) -> Array:
     levels = _LEVELS[_LEVELS > law.tail_probability]
     total = float(law.ccdf(centre)) if side > 0 else float(law.cdf(centre))
     levels = levels[levels < total]
-    inside = law.iccdf(levels) if side > 0 else law.icdf(levels)
+    inside = law.rough_quantile(levels, upper=side > 0)
     own = law.nodes if np.isfinite(end) else law.atoms().values
     marks = np.concatenate([inside, own[:2000], law.breaks()])
     distance = side * (marks - centre)
