@@ -14,7 +14,7 @@ import numpy as np
 from outspread.evidence.comparison import Comparison
 from outspread.evidence.drawing import Sample
 from outspread.evidence.integrating import integrate_density
-from outspread.evidence.stating import Graded, StatesErrors, stated
+from outspread.evidence.stating import Graded, StatesErrors, central_nodes, stated
 from outspread.laws.law import Array, Law
 from outspread.routes.derived import DerivedOutput
 
@@ -240,9 +240,7 @@ def comparison_points(law: Law, count: int = COMPARED_POINTS) -> Array:
     Quantiles, or for a law whose quantiles are costly points spread between those that grade it.
     """
     if isinstance(law, Graded):
-        nodes = np.asarray(law.nodes, float)
-        central = (stated(law, "cdf", nodes).value > 1e-6) & (stated(law, "ccdf", nodes).value > 1e-6)
-        nodes = nodes[central]
+        nodes = central_nodes(law, 1e-6)
         if nodes.size < 2:
             return nodes
         points = np.interp(np.linspace(0, nodes.size - 1, count), np.arange(nodes.size), nodes)

@@ -30,7 +30,7 @@ class StatesErrors(Protocol):
 
 @runtime_checkable
 class Graded(Protocol):
-    """A law that keeps its values at ascending `nodes`, where asking for them costs nothing more."""
+    """A law with ascending `nodes` that grade it from tail to tail; it keeps the values it has computed."""
 
     nodes: Array
 
@@ -66,15 +66,35 @@ def stated_quantile(law: Law, p: npt.ArrayLike, upper: bool = False) -> Estimate
 
 
 def grid_points(law: Law, count: int = 401) -> Array:
-    """Ascending distinct points from tail to tail: the law's own nodes, else quantiles to 1e-6."""
+    """Ascending distinct points from 1e-7 in one tail to 1e-7 in the other: a law's own nodes, else quantiles."""
     if isinstance(law, Graded):
-        points = np.asarray(law.nodes, float)
-    else:
-        inner = np.linspace(0.0, 1.0, count)[1:-1]
-        tail = np.geomspace(1e-6, inner[0], 9)[:-1]
-        with np.errstate(all="ignore"):
-            lower = law.icdf(np.concatenate([tail, inner[inner <= 0.5]]))
-            upper = law.iccdf(np.concatenate([tail, np.sort(1.0 - inner[inner > 0.5])]))
-        points = np.concatenate([np.asarray(lower, float), np.asarray(upper, float)])
+        return central_nodes(law)
+    inner = np.linspace(0.0, 1.0, count)[1:-1]
+    tail = np.geomspace(1e-6, inner[0], 9)[:-1]
+    with np.errstate(all="ignore"):
+        lower = law.icdf(np.concatenate([tail, inner[inner <= 0.5]]))
+        upper = law.iccdf(np.concatenate([tail, np.sort(1.0 - inner[inner > 0.5])]))
+    points = np.concatenate([np.asarray(lower, float), np.asarray(upper, float)])
     distinct: Array = np.unique(points[np.isfinite(points)])
     return distinct
+
+
+def central_nodes(law: Law, tail: float = 1e-7) -> Array:
+    """The nodes of a graded law that leave at least `tail` on either side, found by bisection.
+
+    Values far out in a tail are costly, because they are accurate relative to themselves.
+    """
+    assert isinstance(law, Graded)
+    nodes = np.unique(np.asarray(law.nodes, float))
+    low, high = 0, nodes.size - 1  # the first node with cdf >= tail lies in (low, high]
+    while high - low > 1:
+        middle = (low + high) // 2
+        low, high = (low, middle) if float(law.cdf(nodes[middle])) >= tail else (middle, high)
+    first = low
+    low, high = first, nodes.size - 1
+    while high - low > 1:
+        middle = (low + high) // 2
+        low, high = (middle, high) if float(law.ccdf(nodes[middle])) >= tail else (low, middle)
+    last = high
+    chosen: Array = nodes[first : last + 1]
+    return chosen
