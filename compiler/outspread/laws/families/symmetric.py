@@ -35,7 +35,7 @@ class Laplace(ScaledLaw):
     def between(self, lower: npt.ArrayLike, upper: npt.ArrayLike) -> Array:
         low, high = np.broadcast_arrays(self._standardise(lower), self._standardise(upper))
         with np.errstate(invalid="ignore"):
-            inner = np.where(low > 0, low, -high)  # distance of the nearer end, where both lie on one side
+            inner = np.where(low >= 0, low, -high)  # distance of the nearer end, where both lie on one side
             one_side = -0.5 * np.exp(-inner) * np.expm1(-(high - low))
             both = -0.5 * (np.expm1(low) + np.expm1(-high))
         value = np.where((low < 0) & (high > 0), both, one_side)
