@@ -77,12 +77,12 @@ _DENSITIES: dict[str, tuple[str, tuple[str, ...]]] = {
     "exp_normal": (r"\frac{1}{v\sqrt{2\pi}}\,e^{-(\ln v)^2/2}", ()),
     "gamma": (r"\frac{v^{a-1}e^{-v}}{\Gamma(a)}", ("a",)),
     "log_gamma": (r"\frac{e^{a v - e^{v}}}{\Gamma(a)}", ("a",)),
-    "exp_gamma": (r"\frac{(\ln v)^{a-1}}{\Gamma(a)\,v^2},\ v>1", ("a",)),
-    "uniform": (r"1,\ 0<v<1", ()),
-    "exp_uniform": (r"\frac{1}{v},\ 1<v<e", ()),
+    "exp_gamma": (r"\frac{(\ln v)^{a-1}}{\Gamma(a)\,v^2}\quad (v>1)", ("a",)),
+    "uniform": (r"1 \quad (0<v<1)", ()),
+    "exp_uniform": (r"\frac{1}{v}\quad (1<v<e)", ()),
     "f": (r"\frac{v^{a-1}(1+v)^{-a-b}}{B(a,b)}", ("a", "b")),
     "log_f": (r"\frac{e^{a v}(1+e^{v})^{-a-b}}{B(a,b)}", ("a", "b")),
-    "beta": (r"\frac{v^{a-1}(1-v)^{b-1}}{B(a,b)},\ 0<v<1", ("a", "b")),
+    "beta": (r"\frac{v^{a-1}(1-v)^{b-1}}{B(a,b)}\quad (0<v<1)", ("a", "b")),
     "noncentral": (
         r"\tfrac12 e^{-(v+\delta)/2}\left(\frac{v}{\delta}\right)^{k/4-1/2}"
         r" I_{k/2-1}\bigl(\sqrt{\delta v}\bigr)",
@@ -115,6 +115,34 @@ _DENSITIES: dict[str, tuple[str, tuple[str, ...]]] = {
     "geometric": (r"p\,(1-p)^v", ("p",)),
 }
 
+#: what V is, in words
+_VARIABLES: dict[str, str] = {
+    "normal": "a standard normal variable",
+    "exp_normal": "the exponential of a standard normal variable",
+    "gamma": "a gamma variable with shape $a$ and scale 1",
+    "log_gamma": "the logarithm of a gamma variable with shape $a$ and scale 1",
+    "exp_gamma": "the exponential of a gamma variable with shape $a$ and scale 1",
+    "uniform": "uniform on (0, 1)",
+    "exp_uniform": "the exponential of a variable that is uniform on (0, 1)",
+    "f": "the quotient of gamma variables with shapes $a$ and $b$ and one scale",
+    "log_f": "the logarithm of the quotient of gamma variables with shapes $a$ and $b$ and one scale",
+    "beta": "a beta variable with shapes $a$ and $b$ on (0, 1)",
+    "noncentral": r"noncentral chi-square with $k$ degrees of freedom and noncentrality $\delta$",
+    "hoyt": "the sum $Z_1^2 + r Z_2^2$ of squares of two independent standard normal variables",
+    "student": r"a Student t variable with $\nu$ degrees of freedom",
+    "cauchy": "a standard Cauchy variable",
+    "laplace": "a standard Laplace variable",
+    "logistic": "a standard logistic variable",
+    "exp_laplace": "the exponential of a standard Laplace variable",
+    "inverse_gaussian": r"an inverse Gaussian variable with mean 1 and shape $\lambda$",
+    "uniforms": "the sum $w_1 U_1 + w_2 U_2 + \\dots$ of independent uniform variables on (0, 1)",
+    "normal_product": r"the product of two standard normal variables with correlation $\rho$",
+    "poisson": "a Poisson count with mean $m$",
+    "binomial": "a binomial count of $n$ trials with probability $p$",
+    "negative_binomial": "the number of failures before success $r$, each success with probability $p$",
+    "geometric": "the number of failures before the first success, which has probability $p$",
+}
+
 
 def closed_form(form: Form, trail: tuple[Statement, ...], inputs: tuple[str, ...]) -> ClosedForm | None:
     """The named result; None for a law without a name of its own (a map of one input of another family)."""
@@ -123,7 +151,8 @@ def closed_form(form: Form, trail: tuple[Statement, ...], inputs: tuple[str, ...
     form = form.tidied()
     law, name = build(form)
     source = _RICE if name == "Rice distribution" else _SOURCES[form.kind]
-    parameters = Statement(f"The result: {name}.", _parametrised(form), "density")
+    text = f"The result: {name}, with $V$ {_VARIABLES[form.kind]}."
+    parameters = Statement(text, _parametrised(form), "density")
     return ClosedForm(law, name, source, (*trail, parameters), _latex(form), density_of(form))
 
 
@@ -193,7 +222,8 @@ def _latex(form: Form) -> str:
     moved = "y" if form.shift == 0 else rf"y {'-' if form.shift > 0 else '+'} {_number(abs(form.shift))}"
     inverse = moved if form.scale == 1 else rf"\frac{{{moved}}}{{{_number(form.scale)}}}"
     if form.power != 1:
-        inverse = rf"\Bigl({inverse}\Bigr)^{{{_number(1 / form.power)}}}"
+        grouped = inverse if inverse == "y" else rf"\left({inverse}\right)"
+        inverse = rf"{grouped}^{{{_number(1 / form.power)}}}"
     discrete = form.kind in ("poisson", "binomial", "negative_binomial", "geometric")
     if discrete:
         return rf"P(Y=y) = {base}, \quad v = {inverse}{_shapes(form)}"
