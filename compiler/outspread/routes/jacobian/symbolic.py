@@ -17,6 +17,7 @@ from outspread.routes.jacobian.precise import Precise, evaluate_precisely
 from outspread.routes.jacobian.smooth import Candidates, SmoothMap
 
 LARGEST_RANGE = 4096  # values of all integer parameters of one branch together
+_SLACK = 1e-9  # of a period
 FARTHEST = 1e-300  # inputs are followed to the quantiles at this probability
 
 
@@ -51,12 +52,20 @@ def parameter_ranges(
         elif not (math.isfinite(first) and math.isfinite(last)) or last - first > LARGEST_RANGE:
             raise TooManyBranches
         else:
-            ranges[parameter.name] = range(math.floor(first) - 2, math.ceil(last) + 3)
+            ranges[parameter.name] = _integers(parameter, first, last)
         found = ranges[parameter.name]
-        box[parameter.name] = Interval.of(found.start, max(found.stop - 1, found.start))
+        box[parameter.name] = Interval.of(float(found.start), float(max(found.stop - 1, found.start)))
     if math.prod(len(one) for one in ranges.values()) > LARGEST_RANGE:
         raise TooManyBranches
     return ranges
+
+
+def _integers(parameter: IntegerParameter, first: float, last: float) -> range:
+    """The integers k with base + k·period in period·[first, last]: a principal value lies between -1/2 and
+    3/4 of the period, a whole part is the floor or the ceil itself."""
+    if parameter.period == 1.0:
+        return range(math.floor(first), math.ceil(last) + 1)
+    return range(math.ceil(first - 0.75 - _SLACK), math.floor(last + 0.5 + _SLACK) + 1)
 
 
 class WrittenInverse:
