@@ -66,7 +66,7 @@ def stated_quantile(law: Law, p: npt.ArrayLike, upper: bool = False) -> Estimate
 
 
 def grid_points(law: Law, count: int = 401) -> Array:
-    """Ascending distinct points from 1e-7 in one tail to 1e-7 in the other: a law's own nodes, else quantiles."""
+    """Ascending distinct points between the far tails: a law's own nodes, else quantiles."""
     if isinstance(law, Graded):
         return central_nodes(law)
     inner = np.linspace(0.0, 1.0, count)[1:-1]

@@ -12,18 +12,20 @@ from outspread.evidence.comparison import Comparison
 from outspread.findings.assumptions import register
 from outspread.findings.drivers import Shares, find_drivers
 from outspread.findings.figures import (
-    density,
+    StatesSupport,
     heaviest_atoms,
     largest_cdf_error,
     moment_figures,
-    probability,
-    quantile,
+    nearer_tail,
+    quantiles,
+    value_rows,
 )
-from outspread.findings.intervals import shortest, symmetric
+from outspread.findings.intervals import shortest, symmetric_ends
 from outspread.findings.modes import mode
 from outspread.findings.requirements import judge_requirements
 from outspread.findings.results import (
     Absent,
+    Coverage,
     Driver,
     Evidence,
     Figure,
@@ -31,7 +33,6 @@ from outspread.findings.results import (
     Joint,
     OutputResults,
     Results,
-    ValueRow,
 )
 from outspread.formula.tree import Node, names
 from outspread.laws.law import Law
@@ -115,6 +116,9 @@ def _output(
     mean, deviation, skewness, kurtosis = moment_figures(law)
     atoms, atom_count, atom_mass = heaviest_atoms(law, ATOMS_STATED)
     readings = model.readings
+    ends = {p: symmetric_ends(p) for p in readings.coverage}
+    wanted = [(0.5, False), *(nearer_tail(p) for p in readings.quantiles)]
+    known = quantiles(law, [*wanted, *(end for pair in ends.values() for end in pair)])
     return OutputResults(
         name=output.name,
         unit=output.unit,
@@ -127,11 +131,15 @@ def _output(
         standard_deviation=deviation,
         skewness=skewness,
         kurtosis=kurtosis,
-        median=quantile(law, 0.5),
+        median=known[0.5, False],
         mode=mode(law),
-        quantiles=tuple((p, upper_or_lower_quantile(law, p)) for p in readings.quantiles),
-        coverage=tuple(kind(law, p) for p in readings.coverage for kind in (symmetric, shortest)),
-        values=tuple(_value_row(law, at) for at in readings.values.get(output.name, ())),
+        quantiles=tuple((p, known[nearer_tail(p)]) for p in readings.quantiles),
+        coverage=tuple(
+            row
+            for p, (lower, upper) in ends.items()
+            for row in (Coverage(p, "symmetric", known[lower], known[upper]), shortest(law, p))
+        ),
+        values=value_rows(law, readings.values.get(output.name, ())),
         probabilities=tuple(
             (text, probability_of(event))
             for text, event in readings.probabilities
@@ -141,40 +149,18 @@ def _output(
     )
 
 
-def upper_or_lower_quantile(law: Law, p: float) -> Finding:
-    """The quantile at `p`, from the upper tail where that is the nearer one and 1 - p is exact enough."""
-    return quantile(law, p) if p <= 0.5 else quantile(law, _complement(p), upper=True)
-
-
-def _complement(p: float) -> float:
-    """1 - p as the decimal number that was written: 1 - 0.999 is 0.001, not 0.0010000000000000009."""
-    from fractions import Fraction
-
-    return float(1 - Fraction(repr(p)))
-
-
 def _about(event: Node) -> set[str]:
     return set(names(event))
 
 
 def _support(law: Law) -> tuple[Finding, Finding]:
     low, high = law.support()
+    # given laws end at their parameters, a sum or a difference of two at most
+    errors = law.support_error if isinstance(law, StatesSupport) else (4e-16 * abs(low), 4e-16 * abs(high))
     return (
-        _end(law, low, 0.0) if math.isfinite(low) else Absent("unbounded below"),
-        _end(law, high, 1.0) if math.isfinite(high) else Absent("unbounded above"),
+        Figure(low, errors[0]) if math.isfinite(low) else Absent("unbounded below"),
+        Figure(high, errors[1]) if math.isfinite(high) else Absent("unbounded above"),
     )
-
-
-def _end(law: Law, end: float, p: float) -> Finding:
-    """A finite end of the support; its error is that of the quantile there, where one is stated."""
-    at = quantile(law, 0.0) if p == 0.0 else quantile(law, 0.0, upper=True)
-    if isinstance(at, Absent) or at.value != end:
-        return Figure(end, 4e-15 * abs(end))
-    return Figure(end, at.error)
-
-
-def _value_row(law: Law, at: float) -> ValueRow:
-    return ValueRow(at, density(law, at), probability(law, "cdf", at), probability(law, "ccdf", at))
 
 
 def _joint(model: Model, probability_of: Probability, correlation_of: Correlation) -> Joint:

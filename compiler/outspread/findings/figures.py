@@ -6,13 +6,23 @@ A derived law states its errors itself; for a law in closed form they follow fro
 from __future__ import annotations
 
 import math
-from typing import Literal, Protocol, runtime_checkable
+from collections.abc import Iterable, Sequence
+from fractions import Fraction
+from typing import Protocol, runtime_checkable
 
 import numpy as np
 
 from outspread.evidence.stating import POINT_ROUNDING, StatesErrors, grid_points, stated, stated_quantile
-from outspread.findings.results import Absent, AtomFigure, Figure, Finding
+from outspread.findings.results import Absent, AtomFigure, Figure, Finding, ValueRow
 from outspread.laws.law import Estimates, Law
+
+
+@runtime_checkable
+class StatesSupport(Protocol):
+    """A law that bounds the errors of the finite ends of its support."""
+
+    support_error: tuple[float, float]
+
 
 MOMENTS = ("mean", "standard deviation", "skewness", "kurtosis")
 
@@ -53,36 +63,61 @@ def _moment(name: str, value: float, error: float) -> Finding:
     return Figure(value, error)
 
 
-def figure(estimates: Estimates) -> Figure:
-    """The one value in `estimates` as a Figure."""
-    return Figure(float(np.asarray(estimates.value)), float(np.asarray(estimates.error)))
-
-
 def quantile(law: Law, p: float, upper: bool = False) -> Finding:
     """Quantile at `p`; Absent where it is an infinite end of the support."""
-    result = figure(stated_quantile(law, p, upper))
-    if not math.isfinite(result.value):
+    return quantiles(law, [(p, upper)])[p, upper]
+
+
+def quantiles(law: Law, wanted: Iterable[tuple[float, bool]]) -> dict[tuple[float, bool], Finding]:
+    """Quantiles at lower (False) and upper-tail (True) probabilities, all of a kind computed together."""
+    found: dict[tuple[float, bool], Finding] = {}
+    pairs = list(dict.fromkeys(wanted))
+    for upper in (False, True):
+        probabilities = [p for p, side in pairs if side == upper]
+        if not probabilities:
+            continue
+        rows = stated_quantile(law, np.array(probabilities), upper)
+        for p, value, error in zip(probabilities, rows.value.tolist(), rows.error.tolist(), strict=True):
+            found[p, upper] = _position(value, error)
+    return found
+
+
+def nearer_tail(p: float) -> tuple[float, bool]:
+    """Where to ask for the quantile at `p`: from below, or from above at 1 - p as a decimal number.
+
+    1 - 0.999 is 0.001 then, and not 0.0010000000000000009.
+    """
+    return (p, False) if p <= 0.5 else (float(1 - Fraction(repr(p))), True)
+
+
+def _position(value: float, error: float) -> Finding:
+    if not math.isfinite(value):
         return Absent("the quantile lies beyond every finite value")
-    if not math.isfinite(result.error):
+    if not math.isfinite(error):
         return Absent("the error of the quantile could not be bounded")
-    return result
+    return Figure(value, error)
 
 
-def density(law: Law, y: float) -> Finding:
-    """Density at `y`; Absent where the law has none or where it is unbounded."""
-    if law.continuous_mass == 0.0:
-        return Absent("the law is discrete and has no density")
-    if bool(np.any(law.atoms().values == y)):
-        return Absent("the point carries probability itself (an atom), which no density describes")
-    result = figure(stated(law, "pdf", y))
-    if not (math.isfinite(result.value) and math.isfinite(result.error)):
-        return Absent("the density is unbounded here")
-    return result
-
-
-def probability(law: Law, kind: Literal["cdf", "ccdf"], y: float) -> Figure:
-    """cdf or ccdf at `y`."""
-    return figure(stated(law, kind, y))
+def value_rows(law: Law, points: Sequence[float]) -> tuple[ValueRow, ...]:
+    """Density, cdf and ccdf at points; the density is Absent where there is none or it is unbounded."""
+    if not points:
+        return ()
+    at = np.asarray(points, float)
+    below, above = stated(law, "cdf", at), stated(law, "ccdf", at)
+    heights = Estimates(at, at) if law.continuous_mass == 0.0 else stated(law, "pdf", at)
+    atoms = set(law.atoms().values.tolist())
+    rows = []
+    for i, point in enumerate(points):
+        height: Finding = Figure(float(heights.value[i]), float(heights.error[i]))
+        if law.continuous_mass == 0.0:
+            height = Absent("the law is discrete and has no density")
+        elif point in atoms:
+            height = Absent("the point carries probability itself (an atom), which no density describes")
+        elif not (math.isfinite(heights.value[i]) and math.isfinite(heights.error[i])):
+            height = Absent("the density is unbounded here")
+        sides = [Figure(float(row.value[i]), float(row.error[i])) for row in (below, above)]
+        rows.append(ValueRow(float(point), height, *sides))
+    return tuple(rows)
 
 
 def heaviest_atoms(law: Law, most: int) -> tuple[tuple[AtomFigure, ...], int, Figure]:

@@ -7,11 +7,12 @@ shortest interval that is not unique is said to be so: any one of them would be 
 from __future__ import annotations
 
 import math
+from fractions import Fraction
 
 import numpy as np
 
 from outspread.evidence.stating import stated
-from outspread.findings.figures import quantile
+from outspread.findings.figures import quantiles
 from outspread.findings.polishing import polish
 from outspread.findings.quantiles import Quantiles, quantiles_for
 from outspread.findings.results import Absent, Coverage, Figure, Finding
@@ -22,10 +23,16 @@ INDISTINCT = 1e-9
 CELLS_AT_MOST = 300
 
 
+def symmetric_ends(probability: float) -> tuple[tuple[float, bool], tuple[float, bool]]:
+    """The tail probabilities at which the ends of the symmetric interval are asked for, as in `quantiles`."""
+    tail = float((1 - Fraction(repr(probability))) / 2)
+    return (tail, False), (tail, True)
+
+
 def symmetric(law: Law, probability: float) -> Coverage:
     """The interval with (1 - probability)/2 on either side (JCGM 101:2008, 3.13, 5.3.3)."""
-    tail = (1.0 - probability) / 2.0
-    return Coverage(probability, "symmetric", quantile(law, tail), quantile(law, tail, upper=True))
+    known = quantiles(law, symmetric_ends(probability))
+    return Coverage(probability, "symmetric", *(known[end] for end in symmetric_ends(probability)))
 
 
 def shortest(law: Law, probability: float) -> Coverage:

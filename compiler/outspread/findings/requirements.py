@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Mapping
 
-from outspread.findings.figures import quantile
+from outspread.findings.figures import nearer_tail, quantile
 from outspread.findings.results import Absent, Figure, Finding, Verdict
 from outspread.formula.tree import Node
 from outspread.laws.law import Law
@@ -46,7 +46,7 @@ def _verdicts(
         value = probability(requirement.event)
         subject, unit = f"P({requirement.text})", ""
     else:
-        value = quantile(laws[requirement.output], requirement.at)
+        value = quantile(laws[requirement.output], *nearer_tail(requirement.at))
         unit = next(output.unit for output in model.outputs if output.name == requirement.output)
         subject = f"the {requirement.at:g} quantile of {requirement.output}"
     shown = f" {unit}" if unit and unit != "1" else ""
