@@ -13,6 +13,7 @@ from closed_form_cases import CASES, COUNTS, Case, draw, exponential, law, norma
 from scipy import stats
 
 from outspread.formula.parser import parse
+from outspread.reporting.latex import read as read_latex
 from outspread.routes.closed_form import ClosedForm, recognise
 
 ALL = [*CASES, *COUNTS]
@@ -191,3 +192,15 @@ def test_renaming_the_inputs_changes_no_bit() -> None:
         results.append(form.law.cdf(y))
     assert (results[0] == results[1]).all()
     assert (results[0] == results[2]).all()
+
+
+@pytest.mark.parametrize("case", ALL, ids=[case.identifier for case in ALL])
+def test_the_report_can_typeset_every_formula(case: Case) -> None:
+    """Densities and derivations use only LaTeX that the report's own reader knows."""
+    form = found(case, case.spellings[0])
+    assert read_latex(form.density_latex)
+    for statement in form.derivation:
+        if statement.latex:
+            assert read_latex(statement.latex)
+        for inline in statement.text.split("$")[1::2]:
+            assert read_latex(inline)

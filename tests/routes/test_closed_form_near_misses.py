@@ -163,6 +163,12 @@ def test_inputs_that_are_left_out_have_no_closed_form() -> None:
     assert recognise(parse("x + hidden"), LAWS, None) is None
 
 
+@pytest.mark.parametrize("text", ["x*z", "x*z + 3", "(x + w)*(z - 3)", "x*(z - 1)"])
+def test_products_of_correlated_normals_need_both_means_0(text: str) -> None:
+    """The quadratic form of a product vanishes at offsets along its axes without being centred."""
+    assert recognise(parse(text), LAWS, pair("x", "z", 0.5)) is None
+
+
 def test_a_correlation_of_one_with_cancellation_is_no_law() -> None:
     """x - y with correlation 1 is a constant."""
     assert recognise(parse("x - y"), LAWS, pair("x", "y", 1.0)) is None

@@ -100,13 +100,14 @@ def _classify(matrix: Matrix, covariance: Matrix, offset: list[Fraction], shift:
     if size == 0:
         return None
     noncentrality = _form(matrix, offset)
-    centred = all(abs(entry) <= _NOTHING * size for entry in _apply(matrix, offset)) or noncentrality == 0
+    moved = max(abs(entry) for entry in _apply(matrix, offset))
+    largest = max(abs(entry) for row in matrix for entry in row)
+    centred = moved <= _NOTHING * largest  # a form of two signs may vanish at an offset that does not
     if trace != 0 and _zero(_combine(squared, product, second / trace), size**2):
         value = second / trace
         freedom = Fraction(round(trace / value))
         if freedom == 1 and abs(trace**2 - second) > _NOTHING * second:
             return None  # a second eigenvalue, however small, changes the law near 0
-        centred = abs(noncentrality / value) <= _NOTHING
         return _chi_square(value, freedom, ex.ZERO if centred else noncentrality / value, shift)
     determinant = (trace**2 - second) / 2
     cubic = _combine(_times(squared, product), squared, trace)
