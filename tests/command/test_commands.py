@@ -49,7 +49,7 @@ def test_derive_says_what_came_out(folder: Path) -> None:
     assert lines[:4] == [
         "Gap of the battery hatch",
         "  gap: mean 0.3 mm, standard deviation 0.116619 mm, 95 % interval [0.0714309, 0.528569] mm",
-        "  met: The hatch closes: P(gap > 0) is at least 0.99; it is 0.99495",
+        "  met: The hatch closes: P(gap > 0) is at least 0.99; it is 0.994951",
         "  met: The gap is not wide: the 0.99 quantile of gap is at most 0.8 mm; it is 0.571296 mm",
     ]
     assert lines[4].startswith("  evidence: ")
@@ -61,7 +61,7 @@ def test_unmet_requirement_is_status_1(folder: Path) -> None:
     """The result is written all the same."""
     Path("tight.yaml").write_text(GAP.replace("LIMIT", "0.9999"), encoding="utf-8")
     said = outspread("derive", "tight.yaml", "--only", "json")
-    assert "  not met: The hatch closes: P(gap > 0) is at least 0.9999; it is 0.99495\n" in said.out
+    assert "  not met: The hatch closes: P(gap > 0) is at least 0.9999; it is 0.994951\n" in said.out
     assert said.status == 1
     verdicts = json.loads(Path("tight.results.json").read_text(encoding="utf-8"))["requirements"]
     assert [row["verdict"] for row in verdicts] == ["not met", "met"]
