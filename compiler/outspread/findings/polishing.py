@@ -119,7 +119,7 @@ def _rows(law: Law, kind: Kind, x: Array) -> Estimates:
 
 
 def _series(nodes: Array, rows: Estimates) -> tuple[Array, float]:
-    series = chebyshev.chebfit(nodes, rows.value, NODES - 1)
+    series = np.asarray(chebyshev.chebfit(nodes, rows.value, NODES - 1), float)
     return series, float(np.max(rows.error)) + float(np.sum(np.abs(series[-3:])))
 
 
