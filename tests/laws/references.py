@@ -266,11 +266,13 @@ def inverse_gamma(shape: float, scale: float) -> Reference:
 
 def lower_beta(a: Number, b: Number, u: Number, v: Number) -> Number:
     """I_u(a, b) by the series of DLMF 8.17.8, whose terms are all positive."""
-    if u > 0.7:
-        return 1 - lower_beta(b, a, v, u)
+    if u > 0.97:
+        # the rest of the other tail, with enough digits for a rest of 1e-300
+        with mp.workdps(350 + DIGITS):
+            return 1 - lower_beta(b, a, v, 1 - v)
     term = total = mp.mpf(1)
     n = 0
-    while term > total * mp.mpf(10) ** (-DIGITS - 5):
+    while term > total * mp.mpf(10) ** (-mp.mp.dps - 5):
         term *= u * (a + b + n) / (a + 1 + n)
         n += 1
         total += term

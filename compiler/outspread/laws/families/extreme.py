@@ -104,9 +104,9 @@ class GeneralisedExtremeValue(HazardLaw):
         self.moment_order = 1 / shape if shape > 0 else INF
         end = -1 / shape if shape != 0 else INF
         self.ends = (end, INF) if shape > 0 else (-INF, end) if shape < 0 else (-INF, INF)
-        reach = np.expm1(np.array([-shape, shape]) * np.log(LOG_SMALLEST)) / shape if shape else 0.0
-        sensitivity = float(np.max(np.abs(reach))) * LOG_SMALLEST ** (1 + abs(shape)) if shape else 0.0
-        self.relative_error = max(_GUMBEL_ERROR, rounding(min(sensitivity, 1e9)))
+        # z dH/dz at the hazard H of the smallest probability; in the other tail z d(log H)/dz <= 1/|shape|
+        reach = abs(float(np.expm1(shape * np.log(LOG_SMALLEST)) / shape)) if shape else 0.0
+        self.relative_error = max(_GUMBEL_ERROR, rounding(LOG_SMALLEST * (1 + reach)))
 
     def pdf(self, x: npt.ArrayLike) -> Array:
         return np.asarray(self._apply(self._pdf_at, x, 0.0, 0.0))

@@ -151,6 +151,8 @@ class FisherF(ScaledLaw):
         a, b = 0.5 * self.d1, 0.5 * self.d2
         v, u = beta_lower_inverse(b, a, q), beta_lower_inverse(a, b, 1 - q)
         start = self.d2 / self.d1 * np.where((q < 0.5) & (v < 0.999), (1 - v) / v, u / (1 - u))
+        # a fraction that underflows stands for a quantile beyond all doubles
+        start = np.where((q < 0.5) & (v < 1e-305), INF, start)
         return self._polish(start, q, upper=True)
 
     def _polish(self, z: Array, tail: Array, *, upper: bool) -> Array:

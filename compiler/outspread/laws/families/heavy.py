@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from outspread.laws.families.base import Family, Parameters, ParameterSet, by_quantiles, positive
+from outspread.laws.families.hazard import LOG_SMALLEST, rounding
 from outspread.laws.families.shapes import INF, NAN, Moments, ScaledLaw
 from outspread.laws.functions.student import student_pdf, student_tail, student_tail_inverse
 from outspread.laws.law import Array
@@ -39,11 +40,10 @@ class Cauchy(ScaledLaw):
 
 
 class StudentT(ScaledLaw):
-    relative_error = 1e-11
-
     def __init__(self, degrees_of_freedom: float, location: float = 0.0, scale: float = 1.0):
         self.degrees_of_freedom, self.location, self.scale = degrees_of_freedom, location, scale
         self.moment_order = degrees_of_freedom
+        self.relative_error = rounding(3 * LOG_SMALLEST + 30 * float(np.sqrt(degrees_of_freedom))) + 1e-12
 
     def standard_pdf(self, z: Array) -> Array:
         return student_pdf(self.degrees_of_freedom, z)

@@ -6,6 +6,7 @@ import numpy as np
 import numpy.typing as npt
 
 from outspread.laws.families.base import Family, Parameters, ParameterSet, ascending, by_quantiles, positive
+from outspread.laws.families.hazard import LOG_SMALLEST, rounding
 from outspread.laws.families.shapes import IntervalLaw, Moments
 from outspread.laws.functions.incomplete_beta import beta_density, beta_lower, beta_lower_inverse
 from outspread.laws.law import Array
@@ -66,11 +67,10 @@ class Arcsine(IntervalLaw):
 
 
 class Beta(IntervalLaw):
-    relative_error = 1e-11
-
     def __init__(self, alpha: float, beta: float, lower: float, upper: float):
         super().__init__(lower, upper)
         self.alpha, self.beta = alpha, beta
+        self.relative_error = rounding(3 * LOG_SMALLEST + 30 * float(np.sqrt(alpha + beta))) + 1e-12
 
     def unit_pdf(self, u: Array, v: Array) -> Array:
         return beta_density(self.alpha, self.beta, u, v)

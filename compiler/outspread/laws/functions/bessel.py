@@ -10,23 +10,28 @@ from outspread.laws.law import Array
 def log_scaled_bessel(order: float, x: Array) -> Array:
     """Logarithm of exp(-x) I_order(x) (2/x)^order, for order > -1 and x >= 0.
 
-    Series of DLMF 10.25.2 for x² below 400 (1 + order): all terms have one sign there for order > -1;
-    beyond, the library's scaled function.
+    The power series of DLMF 10.25.2, whose terms are all positive, for x² below 40 (1 + order), which also
+    covers x so small that the library's value would underflow; beyond, the library's scaled function.
     """
     from scipy import special
 
     x = np.asarray(x, float)
-    quarter = 0.25 * x * x
-    use_series = quarter < 100 * (1 + order)
-    small = np.where(use_series, quarter, 0.0)
-    term = np.ones_like(small)
-    total = np.ones_like(small)
-    for k in range(1, 5000):
-        term = term * (small / (k * (k + order)))
+    result = np.empty(x.shape)
+    near = 0.25 * x * x < 10 * (1 + order)
+    result[near] = np.log(_series(order, 0.25 * x[near] ** 2)) - special.gammaln(order + 1) - x[near]
+    far = x[~near]
+    with np.errstate(divide="ignore"):
+        result[~near] = np.log(special.ive(order, far)) + order * np.log(2 / far)
+    return result
+
+
+def _series(order: float, quarter: Array) -> Array:
+    """Sum of quarter^k / (k! (order + 1)_k)."""
+    term = np.ones_like(quarter)
+    total = np.ones_like(quarter)
+    k = 0
+    while np.any(term > 1e-17 * total):
+        k += 1
+        term = term * (quarter / (k * (k + order)))
         total = total + term
-        if np.all(term <= 1e-17 * total):
-            break
-    series = np.log(total) - special.gammaln(order + 1) - x
-    with np.errstate(all="ignore"):
-        library = np.log(special.ive(order, x)) + order * np.log(2 / x)
-    return np.asarray(np.where(use_series, series, library))
+    return total
