@@ -91,8 +91,10 @@ class MixtureLaw(Law):
 
     @property
     def continuous_mass(self) -> float:
+        if not self._atoms.values.size:
+            return 1.0
         parts = zip(self.weights, self.laws, strict=True)
-        return float(min(1.0, sum(weight * law.continuous_mass for weight, law in parts)))
+        return float(sum(weight * law.continuous_mass for weight, law in parts))
 
     def tail_orders(self) -> tuple[float, float]:
         firsts, lasts = zip(*(law.tail_orders() for law in self.laws), strict=True)

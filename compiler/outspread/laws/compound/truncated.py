@@ -52,7 +52,8 @@ class TruncatedLaw(Law):
     def __init__(self, base: Law, lower: float, upper: float, mass: float):
         self.base, self.lower, self.upper, self.mass = base, lower, upper, mass
         #: the point up to which probability is taken away: an atom on the limit itself stays
-        self._open_lower = lower if base.continuous_mass == 1 else float(np.nextafter(lower, -INF))
+        self._smooth = base.atoms().values.size == 0
+        self._open_lower = lower if self._smooth else float(np.nextafter(lower, -INF))
         self.relative_error = 3 * base.relative_error + 1e-14
         # a tail that is cut has all moments
         first, last = base.tail_orders()
@@ -99,7 +100,7 @@ class TruncatedLaw(Law):
                 self.base.iccdf(np.clip(right, 0.0, 1.0)),
             )
             x = np.clip(x, self.lower, self.upper)
-            if self.base.continuous_mass == 1:
+            if self._smooth:
                 x = self._polish(x, p, upper)
         ends = (self.upper, self.lower) if upper else (self.lower, self.upper)
         x = np.where(p == 0, ends[0], np.where(p == 1, ends[1], x))
@@ -137,7 +138,7 @@ class TruncatedLaw(Law):
 
     @property
     def continuous_mass(self) -> float:
-        return float(1 - np.sum(self.atoms().masses)) if self.base.continuous_mass < 1 else 1.0
+        return 1.0 if self._smooth else float(1 - np.sum(self.atoms().masses))
 
     def breaks(self) -> tuple[float, ...]:
         return tuple(point for point in self.base.breaks() if self.lower < point < self.upper)
