@@ -125,9 +125,8 @@ class _Reader:
                 sign = self.take()
                 script = self.argument()
                 if sign == "_":
-                    if below is not None:
-                        raise LatexError("two subscripts")
-                    below = script
+                    more = (*below.parts, Symbol(",", "punctuation")) if below is not None else ()
+                    below = Row((*more, *script.parts))  # x_n_k, an index to an indexed symbol: x with n, k
                 else:
                     above = Row((*(above.parts if above else ()), *script.parts))
             elif self.here in ("\\limits", "\\nolimits"):

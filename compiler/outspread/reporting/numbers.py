@@ -110,6 +110,11 @@ def _rounded(value: float, error: float, scale: float = 0.0) -> tuple[Decimal, i
     return Decimal(repr(shown)).quantize(unit, rounding=ROUND_HALF_EVEN, context=_EXACT), place
 
 
+def power_of_ten(exponent: int) -> str:
+    """10 with a raised exponent, in plain characters."""
+    return f"10{str(exponent).translate(_SUPERSCRIPTS)}"
+
+
 def _write(value: Decimal, place: int) -> str:
     """A decimal whose last digit stands at 10^place, as plain digits or with a power of ten."""
     sign = MINUS if value < 0 else ""
@@ -121,7 +126,7 @@ def _write(value: Decimal, place: int) -> str:
         return f"{sign}{value:.{-place}f}"
     digits = max(leading - place, 0)
     mantissa = value.scaleb(-leading, context=_EXACT)
-    power = f"10{str(leading).translate(_SUPERSCRIPTS)}"
+    power = power_of_ten(leading)
     return f"{sign}{mantissa:.{digits}f} × {power}"
 
 

@@ -16,7 +16,7 @@ import numpy as np
 
 from outspread.findings.results import Coverage, Evidence, Figure, OutputResults
 from outspread.laws.law import Array, Law
-from outspread.reporting import curves
+from outspread.reporting import curves, ticks
 from outspread.reporting.curves import Limit
 from outspread.reporting.numbers import brief, unit_text
 
@@ -38,9 +38,6 @@ _STYLE: Any = {  # matplotlib types each key of its settings by name
     "axes.linewidth": 0.7,
     "axes.spines.top": False,
     "axes.spines.right": False,
-    "axes.formatter.use_mathtext": True,
-    "axes.formatter.limits": (-4, 5),
-    "axes.unicode_minus": True,
     "xtick.color": "#4c5358",
     "ytick.color": "#4c5358",
     "xtick.labelcolor": "#22282d",
@@ -89,25 +86,31 @@ def law_picture(law: Law, output: OutputResults, limits: tuple[Limit, ...]) -> P
     """Density (or probabilities) above, distribution function below, one horizontal axis."""
     low, high = curves.window(law, tuple(limit.at for limit in limits))
     discrete = law.continuous_mass == 0.0
-    width = 0.775 if discrete or not output.atom_count else 0.745  # room for a second scale
+    width = 0.76 if discrete or not output.atom_count else 0.73  # room for a second scale
     with _figure(3.55) as (figure, urls):
-        above = figure.add_axes((0.115, 0.55, width, 0.37))
-        below = figure.add_axes((0.115, 0.125, width, 0.37), sharex=above)
+        above = figure.add_axes((0.13, 0.55, width, 0.37))
+        below = figure.add_axes((0.13, 0.125, width, 0.37), sharex=above)
         band = _central(output.coverage)
         for axes in (above, below):
             if band is not None:
                 axes.axvspan(*band, color=BAND, lw=0, zorder=0)
             axes.set_xlim(low, high)
-        _draw_density(above, law, low, high, discrete)
+        _draw_density(above, law, output, low, high)
         _draw_distribution(below, law, output, low, high)
         for axes in (above, below):
             _mark_limits(axes, limits, low, high, named=axes is above)
+        ticks.linear(below, "x", low, high, _axis_name(output), _whole(law))
         above.tick_params(labelbottom=False)
-        below.set_xlabel(_axis_name(output))
     what = "Probabilities" if discrete else "Density and atoms" if output.atom_count else "Density"
     middle = output.median
     median = f"; median {brief(middle.value, middle.error)}" if isinstance(middle, Figure) else ""
     return Picture(urls[0], f"{what} and distribution function of {_axis_name(output)}{median}.")
+
+
+def _whole(law: Law) -> bool:
+    """Whether the law lives on whole numbers: then ticks between them would mean nothing."""
+    values = law.atoms().values
+    return law.continuous_mass == 0.0 and bool(np.all(values == np.round(values)))
 
 
 def _central(coverage: tuple[Coverage, ...]) -> tuple[float, float] | None:
@@ -119,12 +122,14 @@ def _central(coverage: tuple[Coverage, ...]) -> tuple[float, float] | None:
     return None
 
 
-def _draw_density(axes: Axes, law: Law, low: float, high: float, discrete: bool) -> None:
+def _draw_density(axes: Axes, law: Law, output: OutputResults, low: float, high: float) -> None:
+    discrete = law.continuous_mass == 0.0
     if not discrete:
         curve = curves.density(law, low, high)
         axes.plot(curve.x, curve.y, color=INK, lw=1.4)
-        axes.set_ylim(0, curve.top)
-        axes.set_ylabel("density")
+        unit = unit_text(output.unit)
+        name = f"density in 1/{unit}" if unit not in ("", "1") else "density"
+        ticks.linear(axes, "y", 0.0, curve.top, name)
         for point in curve.unbounded:
             at_top: Any = {"xycoords": ("data", "axes fraction"), "ha": "center", "va": "bottom"}
             axes.annotate("↑", (point, 1.0), color=INK, fontsize=11, **at_top)
@@ -137,8 +142,8 @@ def _draw_density(axes: Axes, law: Law, low: float, high: float, discrete: bool)
     beside.vlines(values, 0, masses, color=INK if discrete else RUST, lw=1.6 if values.size < 60 else 0.8)
     if values.size <= 60:
         beside.plot(values, masses, "D", color=INK if discrete else RUST, ms=3.6, clip_on=False)
-    beside.set_ylim(0, 1.12 * float(np.max(masses)))
-    beside.set_ylabel("probability" if discrete else "probability of an atom (◆)")
+    name = "probability" if discrete else "atoms (◆)"
+    ticks.linear(beside, "y", 0.0, 1.12 * float(np.max(masses)), name)
     if not discrete:
         beside.spines["right"].set_visible(True)
         beside.set_xlim(low, high)
@@ -150,8 +155,7 @@ def _draw_distribution(axes: Axes, law: Law, output: OutputResults, low: float, 
         axes.step(x, y, where="post", color=INK, lw=1.4)
     else:
         axes.plot(x, y, color=INK, lw=1.4)
-    axes.set_ylim(0, 1.03)
-    axes.set_ylabel("distribution function")
+    ticks.linear(axes, "y", 0.0, 1.03, "distribution function")
     labelled = -1.0
     for p, quantile in output.quantiles:
         if not isinstance(quantile, Figure) or not low <= quantile.value <= high:
@@ -203,14 +207,13 @@ def tail_picture(law: Law, output: OutputResults, limits: tuple[Limit, ...]) -> 
     step = "steps-post" if law.continuous_mass == 0.0 else "default"
     margin = 0.04 * (high - low)
     with _figure(2.7) as (figure, urls):
-        axes = figure.add_axes((0.115, 0.175, 0.775, 0.68))
+        axes = figure.add_axes((0.13, 0.175, 0.76, 0.68))
         axes.set_yscale("log")
         axes.plot(x, below, color=INK, lw=1.4, drawstyle=step, label="P(at most this value)")
         axes.plot(x, above, color=RUST, lw=1.4, ls=(0, (4, 2)), drawstyle=step, label="P(above this value)")
-        axes.set_ylim(depth / 2, 1.6)
-        axes.set_xlim(low - margin, high + margin)
+        ticks.powers(axes, depth)
+        ticks.linear(axes, "x", low - margin, high + margin, _axis_name(output), _whole(law))
         _mark_limits(axes, limits, low - margin, high + margin, named=False)
-        axes.set_xlabel(_axis_name(output))
         axes.set_ylabel("probability")
         axes.legend(loc="lower left", bbox_to_anchor=(0.0, 1.0), ncols=2, handlelength=3.2, borderaxespad=0.2)
         axes.grid(axis="y", color="#e3e6e8", lw=0.5)
@@ -218,23 +221,27 @@ def tail_picture(law: Law, output: OutputResults, limits: tuple[Limit, ...]) -> 
     return Picture(urls[0], alt)
 
 
-def evidence_picture(evidence: Evidence, output: OutputResults) -> Picture:
-    """The difference of the two derivations inside the band that a right answer stays in."""
+def evidence_picture(evidence: Evidence, output: OutputResults, law: Law | None = None) -> Picture:
+    """The difference of the two derivations inside the band that a right answer stays in; with the law,
+    over the range of its figure, which always holds the largest difference."""
     x, y = curves.thinned(evidence.curve)
+    low, high = (float(np.min(x)), float(np.max(x))) if law is None else curves.window(law)
+    worst = float(x[np.argmax(np.abs(y))])
+    low, high = min(low, worst), max(high, worst)
     reach = max(evidence.allowed, evidence.largest_difference)
-    power = int(np.floor(np.log10(reach))) if reach > 0 else 0
-    scale = 10.0**-power
     with _figure(2.5) as (figure, urls):
-        axes = figure.add_axes((0.115, 0.19, 0.775, 0.76))
-        bound = evidence.allowed * scale
+        axes = figure.add_axes((0.13, 0.19, 0.76, 0.76))
+        bound = evidence.allowed
         axes.axhspan(-bound, bound, color=BAND, lw=0, zorder=0)
         for side in (-bound, bound):
             axes.axhline(side, color=STONE, lw=1.0, ls=(0, (4, 2)))
         axes.axhline(0, color=STONE, lw=0.6)
-        axes.plot(x, y * scale, color=INK, lw=1.0)
-        axes.set_ylim(-1.25 * reach * scale, 1.25 * reach * scale)
-        axes.set_xlabel(_axis_name(output))
-        axes.set_ylabel("difference" if power == 0 else f"difference × $10^{{{-power}}}$")
+        step = "steps-post" if law is not None and law.continuous_mass == 0.0 else "default"
+        axes.plot(x, y, color=INK, lw=1.0, drawstyle=step)
+        if high > low:
+            ticks.linear(axes, "x", low, high, _axis_name(output), law is not None and _whole(law))
+        if reach > 0:
+            ticks.linear(axes, "y", -1.25 * reach, 1.25 * reach, "difference")
     verb = "stays inside" if evidence.agrees else "leaves"
     band = f"the band of ±{evidence.allowed:.3g}"
     what = f"Difference of the two distribution functions of {output.name}"
@@ -256,8 +263,8 @@ def joint_picture(
         axes = figure.add_axes((0.155, 0.125, 0.68, 0.82))
         if greatest > 0:
             _contours(axes, columns, rows, heights / greatest)
-        axes.set_xlabel(_axis_name(first[1]))
-        axes.set_ylabel(_axis_name(second[1]))
+        ticks.linear(axes, "x", *ranges[0], _axis_name(first[1]), _whole(first[0]))
+        ticks.linear(axes, "y", *ranges[1], _axis_name(second[1]), _whole(second[0]))
     alt = f"Contours of the joint density of {_axis_name(first[1])} and {_axis_name(second[1])}."
     return Picture(urls[0], alt)
 
@@ -266,6 +273,8 @@ def _contours(axes: Axes, columns: Array, rows: Array, share: Array) -> None:
     levels = [0.01, 0.1, 0.5, 0.9]
     styles = [(0, (1, 2)), (0, (4, 2)), "solid", "solid"]
     for level, style, width in zip(levels, styles, (1.0, 1.1, 1.1, 1.7), strict=True):
+        if not float(np.min(share)) < level < float(np.max(share)):
+            continue
         look: Any = {"colors": [INK], "linestyles": [style], "linewidths": width}
         lines = axes.contour(columns, rows, share, levels=[level], **look)
         axes.clabel(lines, fmt={level: f"{level:g}"}, fontsize=7)

@@ -95,9 +95,15 @@ def _letters(law: Law) -> list[tuple[str, str]]:
     return [(letters[name], _value(law.parameters[name])) for name in letters if name in law.parameters]
 
 
+def _equation(letter: str, value: str) -> str:
+    """`letter = value`, with a sign of its own where the value is rounded."""
+    return f"{letter}{value}" if value.startswith(r"\approx") else f"{letter}={value}"
+
+
 def _value(value: Any) -> str:
     if isinstance(value, (int, float)):
-        return number_latex(float(value))
+        short = float(f"{value:.10g}")  # a converted parameter would show all digits of a double
+        return number_latex(short) if short == value else rf"\approx {number_latex(short)}"
     if isinstance(value, (tuple, list)) and len(value) <= 8:
         return r",\ ".join(_value(entry) for entry in value)
     return r"\text{as stated}"
@@ -111,7 +117,7 @@ def _canonical(stated: Distribution | None, law: Law | None) -> Markup:
     letters = _letters(law) if law is not None and law.family == stated.family else []
     if not letters:
         return sentence(title)
-    values = Markup(", ").join(inline(f"{letter}={value}") for letter, value in letters)
+    values = Markup("; ").join(inline(_equation(letter, value)) for letter, value in letters)
     return Markup("{}: {}").format(title, values) + words.truncation(stated)
 
 

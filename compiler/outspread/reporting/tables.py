@@ -10,7 +10,7 @@ from outspread.findings.results import Absent, Coverage, Figure, Finding, Output
 from outspread.findings.writing import scale_of
 from outspread.reporting.numbers import error_text, exact, grouped, unit_text, value_text
 
-MOST_ATOMS = 40
+MOST_ATOMS = 24
 
 
 @dataclass(frozen=True)

@@ -28,6 +28,7 @@ from outspread.reporting.setup import Numbering, symbol
 from outspread.reporting.typeset import coded, display, sentence
 from outspread.routes.derived import DerivedOutput, JointLaw, Statement
 
+FEWEST_POINTS = 20  # a comparison at fewer points is a row of the table, not a figure
 _LIBRARIES = ("numpy", "scipy", "sympy")
 
 
@@ -238,13 +239,14 @@ def _joint(report: ReportData) -> dict[str, Any]:
 
 def _evidence(report: ReportData) -> dict[str, Any]:
     found = {output.name: output for output in report.results.outputs}
+    laws = {derived.output: derived.law for derived in report.outputs}
     return {
         "rows": [_evidence_row(evidence) for evidence in report.results.evidence],
         "agrees": all(evidence.agrees for evidence in report.results.evidence),
         "pictures": [
-            (evidence, plots.evidence_picture(evidence, found[evidence.output]))
+            (evidence, plots.evidence_picture(evidence, found[evidence.output], laws.get(evidence.output)))
             for evidence in report.results.evidence
-            if evidence.curve and evidence.output in found
+            if len(evidence.curve) >= FEWEST_POINTS and evidence.output in found
         ],
     }
 
