@@ -6,6 +6,7 @@ that it does not stop the others. It prints nothing: `command` does.
 
 from __future__ import annotations
 
+import math
 import signal
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
@@ -185,11 +186,15 @@ def _figures(output: OutputResults) -> str:
 
 
 def _shown(finding: Finding) -> str:
-    """Six digits at most for reading, and no more than the error supports; the file has all of them."""
+    """Six digits at most for reading, the error beside it where it would touch them; the file has it all."""
     from outspread.findings.results import Absent
     from outspread.findings.writing import rounded
 
     if isinstance(finding, Absent):
         return f"none ({finding.because})"
-    value, _ = rounded(finding.value, finding.error)
+    if not math.isfinite(finding.error):
+        return "none (its error could not be bounded)"
+    value, error = rounded(finding.value, finding.error)
+    if error > 1e-6 * abs(value):
+        return f"{value:.6g} ± {error:.1g}"
     return f"{value:.6g}"

@@ -13,8 +13,9 @@ from running import outspread
 
 import outspread as package
 from outspread.command import build_parser, worst
-from outspread.delivery import Order, deliver
+from outspread.delivery import Order, _shown, deliver
 from outspread.errors import DerivationError
+from outspread.findings.results import Absent, Figure, Finding
 
 ROOT = Path(__file__).resolve().parents[2]
 
@@ -129,10 +130,9 @@ def test_disagreeing_evidence_is_status_3(folder: Path, monkeypatch: pytest.Monk
     """A fault put into the route: its law is wrong by 0.3 %. The results are written and say so."""
     from dataclasses import replace
 
-    from outspread.routes.engine import Engine
-
     from outspread.laws.build import build_law
     from outspread.reading.model import Distribution
+    from outspread.routes.engine import Engine
 
     right = Engine.derive
 
@@ -339,6 +339,22 @@ def test_same_bytes_whatever_the_hash_seed_and_the_workers(folder: Path) -> None
     assert first.stdout.replace("a/", "b/") == second.stdout
     for name in ("gap.results.json", "gap.html", "tight.results.json", "tight.html"):
         assert (folder / "a" / name).read_bytes() == (folder / "b" / name).read_bytes(), name
+
+
+@pytest.mark.parametrize(
+    ("finding", "text"),
+    [
+        (Figure(0.1166190378969, 1e-13), "0.116619"),
+        (Figure(2.97612, 0.0013), "2.976 ± 0.002"),
+        (Figure(3.0, 0.0), "3"),
+        (Figure(0.0, 1e-15), "0 ± 2e-15"),
+        (Figure(1.0, float("nan")), "none (its error could not be bounded)"),
+        (Absent("the mean does not exist"), "none (the mean does not exist)"),
+    ],
+)
+def test_figures_in_a_summary(finding: Finding, text: str) -> None:
+    """An error that touches the digits that are shown stands beside them."""
+    assert _shown(finding) == text
 
 
 def test_deliver_can_be_called_alone(folder: Path) -> None:

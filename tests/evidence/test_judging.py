@@ -222,3 +222,11 @@ def test_comparison_points_reach_both_tails() -> None:
     assert points.size == 200
     assert st.norm.cdf(points[0]) == pytest.approx(1e-6, rel=1e-9)
     assert st.norm.sf(points[-1]) == pytest.approx(1e-6, rel=1e-9)
+
+
+def test_comparison_points_avoid_atoms_breaks_and_ends() -> None:
+    """A density may be anything at these, so nothing is compared there."""
+    law = law_of("triangular", lower=0, mode=1, upper=3)
+    assert not set(comparison_points(law).tolist()) & {0.0, 1.0, 3.0}
+    discrete = law_of("binomial", trials=5, probability=0.5)
+    assert comparison_points(discrete).size == 0

@@ -244,13 +244,18 @@ def comparison_points(law: Law, count: int = COMPARED_POINTS) -> Array:
         if nodes.size < 2:
             return nodes
         points = np.interp(np.linspace(0, nodes.size - 1, count), np.arange(nodes.size), nodes)
-        return points[np.isin(points, np.asarray(law.breaks(), float), invert=True)]
+        return _apart_from_marks(law, points)
     lower = np.geomspace(1e-6, 0.5, count // 2)
     upper = np.geomspace(1e-6, 0.5, count - count // 2 + 1)[:-1]
     with np.errstate(all="ignore"):
         points = np.unique(np.concatenate([np.asarray(law.icdf(lower)), np.asarray(law.iccdf(upper))]))
-    apart = np.isin(points, np.asarray(law.breaks(), float), invert=True)
-    kept: Array = points[np.isfinite(points) & apart]
+    return _apart_from_marks(law, points[np.isfinite(points)])
+
+
+def _apart_from_marks(law: Law, points: Array) -> Array:
+    """The points that are no break, no atom and no end of the support: there a density may be anything."""
+    marks = np.concatenate([np.asarray([*law.breaks(), *law.support()], float), law.atoms().values])
+    kept: Array = points[np.isin(points, marks, invert=True)]
     return kept
 
 

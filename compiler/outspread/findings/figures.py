@@ -60,6 +60,8 @@ def _moment(name: str, value: float, error: float) -> Finding:
     if math.isinf(value):
         sign = "" if value > 0 else "minus "
         return Absent(f"the {name} diverges to {sign}infinity")
+    if not math.isfinite(error):
+        return Absent(f"the error of the {name} could not be bounded")
     return Figure(value, error)
 
 
