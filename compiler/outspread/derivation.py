@@ -165,7 +165,7 @@ class Derivation(Mapping[str, OutputLaw]):
 
     def correlation(self, first: str, second: str) -> float:
         """Pearson's correlation of two outputs; nan where it does not exist (the results say why)."""
-        found = _finding(self.engine.correlation(first, second))
+        found = _correlation(self.engine, first, second)
         return found.value if isinstance(found, Figure) else float("nan")
 
 
@@ -209,7 +209,7 @@ def derive_model(model: Model, progress: Progress | None = None) -> Derivation:
             plan,
             outputs,
             probability_of=lambda event: _probability(engine.probability(event)),
-            correlation_of=lambda a, b: _finding(engine.correlation(a, b)),
+            correlation_of=lambda a, b: _correlation(engine, a, b),
             comparisons=comparisons,
             shares=shares,
             version=__version__,
@@ -238,6 +238,14 @@ def _finding(answer: Any) -> Finding:
     if isinstance(answer, str):
         return Absent(answer)
     return Figure(float(np.asarray(answer.value)), float(np.asarray(answer.error)))
+
+
+def _correlation(engine: Engine, first: str, second: str) -> Finding:
+    """The correlation of two outputs; where it cannot be derived, all else still stands."""
+    try:
+        return _finding(engine.correlation(first, second))
+    except DerivationError as error:
+        return Absent(f"it could not be derived: {error}")
 
 
 def _probability(answer: Any) -> Finding:
