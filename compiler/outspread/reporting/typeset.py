@@ -11,6 +11,7 @@ import re
 import warnings
 from dataclasses import dataclass
 from functools import lru_cache
+from xml.etree.ElementTree import Element
 
 from markupsafe import Markup, escape
 
@@ -49,11 +50,25 @@ def draw(row: Row) -> Drawing:
     config.svg2 = False
     config.precision = 2
     picture = Math(mathml(row), size=_DRAWN_AT, margin=0.6)
-    svg = picture.svg()
-    opening = svg[: svg.index(">")]
-    width, height = (float(re.findall(rf'{side}="([\d.]+)"', opening)[0]) for side in ("width", "height"))
+    svg = _merged(picture.svgxml())
+    width, height = (float(re.findall(rf' {side}="([\d.]+)"', svg)[0]) for side in ("width", "height"))
     em = _DRAWN_AT / _MAGNIFY
     return Drawing(svg, width / em, height / em, (0.6 - picture.getyofst()) / em)
+
+
+def _merged(drawing: Element) -> str:
+    """SVG text of a drawing with its glyphs in one path: a page of formulas then takes half as long."""
+    outlines: list[str] = []
+    rest: list[str] = []
+    for element in drawing.iter():
+        if element.tag == "path":
+            outlines.append(element.attrib["d"].strip())
+        elif element.tag == "rect":
+            x, y, width, height = (element.attrib[key] for key in ("x", "y", "width", "height"))
+            rest.append(f'<rect x="{x}" y="{y}" width="{width}" height="{height}"/>')
+    size = " ".join(f'{key}="{drawing.attrib[key]}"' for key in ("width", "height", "viewBox"))
+    glyphs = f'<path d="{" ".join(outlines)}"/>' if outlines else ""
+    return f'<svg xmlns="http://www.w3.org/2000/svg" {size}>{glyphs}{"".join(rest)}</svg>'
 
 
 def _image(row: Row, scale: float = 1.0) -> Markup:

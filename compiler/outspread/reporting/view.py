@@ -22,7 +22,7 @@ from outspread.reading.model import Output
 from outspread.reporting import curves, plots, setup, tables, words
 from outspread.reporting.data import ReportData
 from outspread.reporting.latex import LatexError, read
-from outspread.reporting.numbers import error_text, exact, grouped, rounded, unit_suffix
+from outspread.reporting.numbers import error_text, exact, grouped, rounded
 from outspread.reporting.parts import Symbol
 from outspread.reporting.setup import Numbering, symbol
 from outspread.reporting.typeset import coded, display, sentence
@@ -44,8 +44,8 @@ def view(report: ReportData) -> dict[str, Any]:
         "setup": _setup(report, numbering),
         "plan": [_plan(step) for step in report.plan.steps],
         "joint_plan": [_plan(step) for step in report.plan.joint],
-        "derivations": [_derivation(report, output, numbering) for output in report.outputs],
         "joint_derivations": [_joint_derivation(report, joint, numbering) for joint in report.joint],
+        "derivations": [_derivation(report, output, numbering) for output in report.outputs],
         "results": [_output(report, output) for output in report.results.outputs],
         "joint": _joint(report),
         "evidence": _evidence(report),
@@ -75,7 +75,7 @@ def _verdict(verdict: Any) -> dict[str, Any]:
         "statement": verdict.statement,
         "state": verdict.verdict,
         "found": tables.cell(verdict.value),
-        "unit": unit_suffix(verdict.unit),
+        "unit": tables.unit(verdict.unit),
         "required": words.required(verdict),
         "reason": words.verdict_reason(verdict),
     }
