@@ -80,6 +80,12 @@ class DerivedLaw(Law):
         else:
             inside = ~below & ~above
             value[above if kind == "cdf" else below] = 1.0
+        if kind == "pdf":
+            for end, side in ((low, 1.0), (high, -1.0)):
+                at = inside & (y == end)
+                if at.any():
+                    value[at], error[at] = self._end_density(end, side)
+                    inside &= ~at
         if inside.any() and self._continuous_mass > 0:
             result = self._evaluate(kind, y[inside])
             value[inside], error[inside] = result.value, result.error
@@ -90,6 +96,19 @@ class DerivedLaw(Law):
         if kind != "pdf":
             value = np.clip(value, 0.0, 1.0)
         return value, error
+
+    def _end_density(self, end: float, side: float) -> tuple[float, float]:
+        """The density at an end of the support as its limit from inside; inf where it grows without bound."""
+        scale = max(float(self.nodes[-1] - self.nodes[0]), 1e-300)
+        if not np.isfinite(scale):
+            scale = max(abs(end), 1.0)
+        steps = scale * np.array([2e-9, 1e-9, 1e-12, 1e-15])
+        steps = np.maximum(steps, abs(end) * np.array([4e-13, 2e-13, 1e-13, 5e-14]))
+        result = self._evaluate("pdf", end + side * steps)
+        far, near, nearer, nearest = result.value.tolist()
+        if nearest > 1.5 * nearer > 2.25 * near > 0:
+            return np.inf, 0.0
+        return near, 4 * abs(far - near) + abs(nearer - near) + float(result.error[1])
 
     def _atom_sum(self, kind: str, y: Array) -> tuple[Array, Array]:
         atoms = self._atoms
@@ -123,7 +142,9 @@ class DerivedLaw(Law):
     @property
     def error(self) -> float:
         """Bound on |cdf error| over the nodes."""
-        worst = [float(np.max(self.estimate(kind, self.nodes).error, initial=0.0)) for kind in ("cdf", "ccdf")]
+        worst = [
+            float(np.max(self.estimate(kind, self.nodes).error, initial=0.0)) for kind in ("cdf", "ccdf")
+        ]
         return max(worst)
 
     # --- quantiles ----------------------------------------------------------------------------------
@@ -181,29 +202,38 @@ class DerivedLaw(Law):
         from_below = other == upper  # whether the cdf (not the ccdf) is small at the target
         y, left, right = self._start(target, from_below)
         width = right - left
-        open_ = np.arange(p.size)
+        jump = self._jumps(target, from_below)
+        at_jump = ~np.isnan(jump)
+        y[at_jump], width[at_jump] = jump[at_jump], 0.0
+        open_ = np.flatnonzero(~at_jump)
         for _ in range(14):
             gap, density, doubt = self._gap(y[open_], target[open_], from_below[open_])
             left[open_] = np.where(gap < 0, y[open_], left[open_])
             right[open_] = np.where(gap >= 0, y[open_], right[open_])
             with np.errstate(all="ignore"):
-                step = -gap / density
+                # Newton's step for the logarithm of the probability, which is nearly straight in the tails
+                side = np.where(from_below[open_], 1.0, -1.0)
+                ratio = side * gap / target[open_]
+                step = -side * np.log1p(ratio) * (1 + ratio) * target[open_] / density
                 small = np.abs(step) <= np.maximum(4e-16 * np.abs(y[open_]), 0.05 * doubt / density)
             settled = (small & np.isfinite(step)) | (left[open_] == right[open_])
             width[open_[settled]] = np.abs(step[settled])
             moved = y[open_] + step
             inside = (moved > left[open_]) & (moved < right[open_])
-            y[open_] = np.where(settled, y[open_], np.where(inside, moved, 0.5 * (left[open_] + right[open_])))
+            y[open_] = np.where(
+                settled, y[open_], np.where(inside, moved, 0.5 * (left[open_] + right[open_]))
+            )
             open_ = open_[~settled]
             if not open_.size:
                 break
         if open_.size:
             y[open_], width[open_] = bracketed_root(
-                lambda x, i: self._gap(x, target[open_[i]], from_below[open_[i]])[0], left[open_], right[open_]
+                lambda x, i: self._gap(x, target[open_[i]], from_below[open_[i]])[0],
+                left[open_],
+                right[open_],
             )
             lost = open_[np.isnan(y[open_])]
             y[lost], width[lost] = right[lost], 0.0
-        y = self._snap(y)
         return y, self._quantile_error(y, width, target, from_below)
 
     def _gap(self, y: Array, target: Array, from_below: npt.NDArray[np.bool_]) -> tuple[Array, Array, Array]:
@@ -230,22 +260,36 @@ class DerivedLaw(Law):
         right = np.clip(right, 1, points.size - 1)
         left = right - 1
         with np.errstate(all="ignore"):
-            tail = np.where(from_below, below[left], above[left]), np.where(from_below, below[right], above[right])
+            tail = (
+                np.where(from_below, below[left], above[left]),
+                np.where(from_below, below[right], above[right]),
+            )
             one, two = (np.log(np.maximum(t, 1e-305)) for t in tail)
             share = (np.log(target) - one) / (two - one)
         share = np.where(np.isfinite(share), np.clip(share, 0.02, 0.98), 0.5)
         return points[left] + share * (points[right] - points[left]), points[left], points[right]
 
-    def _snap(self, y: Array) -> Array:
-        """The root finder stops within the last digits of an atom; the atom itself is the quantile."""
-        atoms = self._atoms.values
-        if not atoms.size:
-            return y
-        near = np.clip(np.searchsorted(atoms, y), 1, max(atoms.size - 1, 1))
-        candidates = atoms[np.stack([near - 1, np.minimum(near, atoms.size - 1)])]
-        best = np.argmin(np.abs(candidates - y), axis=0)
-        closest = candidates[best, np.arange(y.size)]
-        return np.where(np.abs(closest - y) <= 1e-14 * np.maximum(np.abs(closest), 1e-300), closest, y)
+    def _jumps(self, target: Array, from_below: npt.NDArray[np.bool_]) -> Array:
+        """The atom at which the cdf jumps over the level, or NaN."""
+        atoms = self._atoms
+        found = np.full(target.size, np.nan)
+        if not atoms.values.size:
+            return found
+        below, above = self.cdf(atoms.values), self.ccdf(atoms.values)
+        for flag in (True, False):
+            part = np.flatnonzero(from_below == flag)
+            level = target[part]
+            if flag:  # first atom with cdf >= p, if the cdf before it is below p
+                index = np.searchsorted(np.maximum.accumulate(below), level, side="left")
+            else:  # first atom with ccdf <= q
+                falling = np.maximum.accumulate(above[::-1])
+                index = atoms.values.size - np.searchsorted(falling, level, side="right")
+            inside = index < atoms.values.size
+            index = np.minimum(index, atoms.values.size - 1)
+            before = below[index] - atoms.masses[index] if flag else above[index] + atoms.masses[index]
+            jumped = inside & ((before < level) if flag else (before > level))
+            found[part[jumped]] = atoms.values[index[jumped]]
+        return found
 
     def _quantile_error(
         self, y: Array, width: Array, target: Array, from_below: npt.NDArray[np.bool_]

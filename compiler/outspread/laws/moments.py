@@ -63,7 +63,7 @@ def _half(law: DerivedLaw, centre: float, side: int, highest: int, relative: flo
 def _points(law: DerivedLaw, centre: float, side: int) -> Array:
     """Distances from the centre that grade the half line by probability; atoms and breaks are points too."""
     end = law.support()[1 if side > 0 else 0]
-    levels = _LEVELS[_LEVELS > law.tail_probability]
+    levels = _LEVELS[law.tail_probability < _LEVELS]
     total = float(law.ccdf(centre)) if side > 0 else float(law.cdf(centre))
     levels = levels[levels < total]
     inside = law.rough_quantile(levels, upper=side > 0)
@@ -112,7 +112,9 @@ def standardised(raw: Estimates, centre: float) -> Estimates:
     relative = variance_error / variance
     if not np.isnan(m3):
         third = m3 - 3 * m1 * m2 + 2 * m1**3
-        third_error = e3 + 3 * (abs(m1) * e2 + m2 * e1) + 6 * m1**2 * e1 + 6e-16 * (abs(m3) + 3 * abs(m1) * m2)
+        third_error = (
+            e3 + 3 * (abs(m1) * e2 + m2 * e1) + 6 * m1**2 * e1 + 6e-16 * (abs(m3) + 3 * abs(m1) * m2)
+        )
         value[2] = third / sd**3
         error[2] = third_error / sd**3 + 1.5 * relative * abs(value[2])
     if np.isnan(m4):

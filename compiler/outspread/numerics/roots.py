@@ -61,10 +61,13 @@ def bracketed_root(
             break
         with np.errstate(all="ignore"):
             x = a + step * (b - a)
-            # every third step halves the bracket in the order of representable numbers
-            if count % 3 == 2:
-                x = ordinal_middle(np.minimum(a, b), np.maximum(a, b))
             low, high = np.minimum(a, b), np.maximum(a, b)
+            # a bracket over many magnitudes is halved in the order of representable numbers
+            if count % 3 == 2:
+                wide = (low < 0) != (high < 0)
+                wide |= np.maximum(np.abs(low), np.abs(high)) > 8 * np.minimum(np.abs(low), np.abs(high))
+                if wide.any():
+                    x = np.where(wide, ordinal_middle(low, high), x)
             x = np.where((x > low) & (x < high), x, ordinal_middle(low, high))
         f = function(x, live)
         with np.errstate(all="ignore"):

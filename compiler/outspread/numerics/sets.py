@@ -30,7 +30,9 @@ class Sets:
         return int(self.lower.shape[1])
 
 
-def make(lower: Array, upper: Array, lower_rate: Array | None = None, upper_rate: Array | None = None) -> Sets:
+def make(
+    lower: Array, upper: Array, lower_rate: Array | None = None, upper_rate: Array | None = None
+) -> Sets:
     zero = np.zeros(np.broadcast_shapes(lower.shape, upper.shape))
     return Sets(
         np.broadcast_to(lower, zero.shape),

@@ -106,7 +106,13 @@ def _combine(node: Apply, parts: list[TailIndex]) -> TailIndex:
         return TailIndex(1.0, 1.0, 0.0, "the tangent has poles", sure)
     if operator == "if":
         heavy = _lightest(parts[1:])
-        return TailIndex(heavy.far, min(part.near for part in parts[1:]), min(p.rate for p in parts[1:]), heavy.reason, sure)
+        return TailIndex(
+            heavy.far,
+            min(part.near for part in parts[1:]),
+            min(p.rate for p in parts[1:]),
+            heavy.reason,
+            sure,
+        )
     if operator in ("sin", "cos", "asin", "acos", "atan", "atan2", "tanh", "erf", "sign"):
         return TailIndex(INF, 1.0, INF, "", sure)
     if operator in ("floor", "ceil"):
@@ -126,7 +132,9 @@ def _product(parts: list[TailIndex], sure: bool) -> TailIndex:
 def _inverse(part: TailIndex, what: str) -> TailIndex:
     if part.near == INF:
         return TailIndex(INF, part.far, INF, "", part.sure)
-    words = "takes the value 0 with positive probability" if part.near == 0 else "comes arbitrarily close to 0"
+    words = (
+        "takes the value 0 with positive probability" if part.near == 0 else "comes arbitrarily close to 0"
+    )
     reason = f"{what} {words}, which gives tails like a power of exponent {part.near:g}"
     return TailIndex(part.near, part.far, 0.0, reason, part.sure)
 

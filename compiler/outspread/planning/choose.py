@@ -80,9 +80,7 @@ def _step(output: Output, laws: Mapping[str, Law], scores: Scores | None, recogn
     return facts.step(output.name, numeric, tuple(ruled_out))
 
 
-def _forced(
-    output: Output, facts: _Facts, known: Recognised | None, numeric: tuple[str, str]
-) -> PlanStep:
+def _forced(output: Output, facts: _Facts, known: Recognised | None, numeric: tuple[str, str]) -> PlanStep:
     """The route that the model asks for, with what that costs."""
     wanted = output.route
     if wanted not in ROUTES:
@@ -154,7 +152,9 @@ class _Facts:
             RuledOut("change_of_variables", f"{count} continuous inputs, not one"),
             RuledOut("region_integral", f"{count} continuous inputs; two can be integrated exactly")
             if count != 2
-            else RuledOut("region_integral", "too many combinations of discrete inputs, or they are dependent"),
+            else RuledOut(
+                "region_integral", "too many combinations of discrete inputs, or they are dependent"
+            ),
         ]
 
     def step(self, output: str, chosen: tuple[str, str], ruled_out: tuple[RuledOut, ...]) -> PlanStep:

@@ -9,6 +9,14 @@ from outspread.laws.law import Array, Law
 
 
 @dataclass(frozen=True)
+class Value:
+    """A number with a bound on its absolute error."""
+
+    value: float
+    error: float
+
+
+@dataclass(frozen=True)
 class Statement:
     """A sentence (plain text; $...$ holds inline LaTeX) followed by an optional display formula (LaTeX).
 
@@ -58,4 +66,6 @@ class JointLaw:
     relative_error: float = 1e-12
     branches: int = 1
     region: Callable[[Array], Array] | None = None
-    pdf_error: Callable[[Array], Array] | None = None  # bound on |pdf - true density| at points of shape (n, k)
+    pdf_error: Callable[[Array], Array] | None = (
+        None  # bound on |pdf - true density| at points of shape (n, k)
+    )

@@ -7,12 +7,14 @@ from collections.abc import Callable, Mapping
 import numpy as np
 
 from outspread.errors import DerivationError
-from outspread.formula.tree import Apply, Name, Node, Number, add, multiply, names, substitute
+from outspread.formula.tree import COMPARISONS, Apply, Name, Node, Number, names, substitute
 from outspread.laws.law import Estimates, Law
+from outspread.numerics.slices.cases import FLIPPED
 from outspread.planning.dependence import normal_scores
 from outspread.planning.plan import Plan, PlanStep
 from outspread.reading.model import Model, Output
 from outspread.routes import numeric, writing
+from outspread.routes.association import correlation
 from outspread.routes.closed_form.scored import recognise_with_scores
 from outspread.routes.derived import DerivedOutput, JointLaw, SymbolicDensity
 from outspread.routes.jacobian import NotPossible, derive_joint, input_density
@@ -52,7 +54,11 @@ class Engine:
             return self._closed_form(output, step)
         if step.route == "sampling":
             law, evaluations = derive_sampled(
-                output.expression, self._used(output.expression), self.scores, step.inner, self.model.accuracy.seed
+                output.expression,
+                self._used(output.expression),
+                self.scores,
+                step.inner,
+                self.model.accuracy.seed,
             )
             text = writing.sampling(output, step, self.symbols)
             return DerivedOutput(output.name, step.route, law, text, evaluations=evaluations)
@@ -105,19 +111,20 @@ class Engine:
 
     def _simple(self, event: Node) -> Estimates | None:
         """Events like `clearance > 0.002` are read off the output's own law."""
-        if not isinstance(event, Apply) or event.operator not in ("less", "less_equal", "greater", "greater_equal"):
+        if not isinstance(event, Apply) or event.operator not in COMPARISONS:
             return None
         left, right = event.arguments
         operator = event.operator
         if isinstance(left, Number) and isinstance(right, Name):
-            flipped = {"less": "greater", "less_equal": "greater_equal", "greater": "less", "greater_equal": "less_equal"}
-            left, right, operator = right, left, flipped[operator]
+            left, right, operator = right, left, FLIPPED[operator]
         if not (isinstance(left, Name) and isinstance(right, Number)):
             return None
         return self._side(left.name, operator, right.value)
 
     def _side(self, output: str, operator: str, limit: float) -> Estimates:
         law = next(item.law for item in self.derive() if item.output == output)
+        if operator in ("equal", "not_equal"):
+            return _at(law, limit, operator == "not_equal")
         kind = "cdf" if operator in ("less", "less_equal") else "ccdf"
         estimate = stated(law, kind, limit)
         value, error = float(estimate.value), float(estimate.error)
@@ -157,25 +164,18 @@ class Engine:
                 return f"{name} does not vary, so there is no correlation"
             deviations.append(deviation)
         expressions = {output.name: output.expression for output in self.model.outputs}
-        total = add(*(
-            multiply(Number(1 / deviation), expressions[name])
-            for name, deviation in zip((a, b), deviations, strict=True)
-        ))  # fmt: skip
-        doubt = sum(_relative_deviation_error(outputs[name]) for name in (a, b))
-        return self._half_variance(total, doubt)
+        laws = self._used(Apply("add", (expressions[a], expressions[b])))
+        found = correlation(expressions[a], expressions[b], laws, self.scores, self.model.accuracy.seed)
+        return Estimates(np.asarray(found.value), np.asarray(found.error))
 
-    def _half_variance(self, total: Node, doubt: float) -> Estimates:
-        laws = self._used(total)
-        known = recognise_with_scores(total, laws, self.scores)
-        if known is not None:
-            variance = known.law.variance()
-            return Estimates(np.asarray(variance / 2 - 1), np.asarray(2 * doubt + 1e-14))
-        if _numeric_or_sampling(laws, self.scores, total):
-            estimates = numeric.derive(total, laws, self.scores).law.moment_estimates()
-        else:
-            estimates = derive_sampled(total, laws, self.scores, "", self.model.accuracy.seed)[0].moment_estimates()
-        deviation, error = float(estimates.value[1]), float(estimates.error[1])
-        return Estimates(np.asarray(deviation**2 / 2 - 1), np.asarray(deviation * error + 2 * doubt + 1e-14))
+
+def _at(law: Law, point: float, elsewhere: bool) -> Estimates:
+    """P(Y = point), or P(Y != point)."""
+    atoms = law.atoms()
+    at = np.flatnonzero(atoms.values == point)
+    mass = float(atoms.masses[at[0]]) if at.size else 0.0
+    error = float(atoms.errors[at[0]]) if at.size else 0.0
+    return Estimates(np.asarray(1 - mass if elsewhere else mass), np.asarray(error))
 
 
 def stated(law: Law, kind: str, y: float) -> Estimates:
@@ -188,18 +188,9 @@ def stated(law: Law, kind: str, y: float) -> Estimates:
     return Estimates(value, np.abs(value) * max(law.relative_error, 1e-14))
 
 
-def _relative_deviation_error(law: Law) -> float:
-    moments = getattr(law, "moment_estimates", None)
-    if moments is None:
-        return 4 * max(law.relative_error, 1e-14)
-    estimates: Estimates = moments()
-    return float(estimates.error[1] / estimates.value[1])
-
-
 def _numeric_or_sampling(laws: Mapping[str, Law], scores: object, expression: Node) -> bool:
     """Whether the numeric routes reach: at most two continuous inputs, discrete ones independent."""
     continuous = [name for name, law in laws.items() if law.continuous_mass > 0]
     discrete = [name for name, law in laws.items() if law.continuous_mass < 1]
     dependent = any(scores.touches(name) for name in discrete) if hasattr(scores, "touches") else False
     return len(continuous) <= 2 and not dependent
-

@@ -14,7 +14,7 @@ import numpy as np
 from outspread.errors import DerivationError
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.tree import Name, Node, Number, names
-from outspread.laws.derived import DerivedLaw
+from outspread.laws.derived import DerivedLaw, Evaluate
 from outspread.laws.law import Array, Atoms, Estimates, Law
 from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
@@ -78,8 +78,10 @@ def derive(
     atoms, continuous_mass = _all_atoms(pieces)
     spread = extent(expression, laws, names(expression))
     nodes = _nodes(pieces, spread)
+    evaluate = _evaluator(pieces)
+    spread = _tightened(spread, evaluate, atoms) if continuous_mass else spread
     law = DerivedLaw(
-        _evaluator(pieces), (spread.lower, spread.upper), nodes, atoms, continuous_mass,
+        evaluate, (spread.lower, spread.upper), nodes, atoms, continuous_mass,
         (spread.lower_error, spread.upper_error),
     )  # fmt: skip
     result = NumericLaw(law, tuple(pieces))
@@ -87,22 +89,44 @@ def derive(
     return result
 
 
+def _tightened(spread: Extent, evaluate: Evaluate, atoms: Atoms) -> Extent:
+    """Finite ends whose enclosure is loose, moved to where the probability beyond them vanishes."""
+    ends = []
+    for end, doubt, kind, side in (
+        (spread.lower, spread.lower_error, "cdf", 1.0), (spread.upper, spread.upper_error, "ccdf", -1.0)
+    ):  # fmt: skip
+        empty, full = 0.0, doubt
+        if np.isfinite(end) and doubt > 1e-9 * abs(end) + 1e-300:
+            limit = atoms.values[0 if side > 0 else -1] if atoms.values.size else end + side * doubt
+            full = min(doubt, side * (float(limit) - end))
+            for _ in range(48):
+                middle = 0.5 * (empty + full)
+                beyond = float(evaluate(kind, np.array([end + side * middle])).value[0])
+                empty, full = (middle, full) if beyond == 0 else (empty, middle)
+        ends.append((end + side * empty, full - empty))
+    return Extent(ends[0][0], ends[1][0], ends[0][1], ends[1][1])
+
+
 def _measure(problem: Problem, outer: tuple[str, ...], relative: float) -> Measure | None:
     if not problem.constant_known:
-        raise DerivationError("the formula takes a constant value on too many pieces to go through one by one")
+        raise DerivationError(
+            "the formula takes a constant value on too many pieces to go through one by one"
+        )
     if not problem.continuous:
         return None
     if len(problem.continuous) == 1:
         return LineMeasure(problem)
     if len(problem.continuous) > 2:
-        raise DerivationError(f"{len(problem.continuous)} continuous inputs enter; two at most can be integrated")
+        raise DerivationError(
+            f"{len(problem.continuous)} continuous inputs enter; two at most can be integrated"
+        )
     first, second = problem.continuous
     if outer and outer[0] == second:
         first, second = second, first
     return PlaneMeasure(problem, first, second, relative)
 
 
-def _evaluator(pieces: list[Piece]):  # type: ignore[no-untyped-def]
+def _evaluator(pieces: list[Piece]) -> Evaluate:
     def evaluate(kind: str, y: Array) -> Estimates:
         value, error = np.zeros(y.size), np.zeros(y.size)
         for piece in pieces:

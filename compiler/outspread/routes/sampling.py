@@ -95,7 +95,9 @@ class _Sampler:
         seed: int,
     ):
         self.expression, self.laws, self.used, self.inner = expression, laws, used, inner
-        problem = take_apart(expression, laws, scores, (inner,) if inner else (), ())
+        continuous = tuple(name for name in used if laws[name].continuous_mass > 0)
+        discrete = tuple(name for name in used if laws[name].continuous_mass == 0)
+        problem = take_apart(expression, laws, scores, continuous, discrete)
         self.problem: Problem = problem
         outer = tuple(name for name in used if name != inner)
         self.design = design(laws, scores, outer, inner, seed, REPLICATES, POINTS)
@@ -163,8 +165,6 @@ class _Sampler:
                 at = compile_numpy(value, arguments)(*(self.design.values[name] for name in arguments))
             at = np.broadcast_to(np.asarray(at, float), (self.design.replicates * self.design.points,))
             distinct = np.unique(at)
-            if distinct.size > 200:  # the value itself varies continuously: no atom
-                continue
             weights = self._conditional(condition, 0.0, False)
             for point in distinct.tolist():
                 mass, error = _judge((weights * (at == point)).reshape(self.design.replicates, -1), False)
@@ -201,7 +201,7 @@ class _Sampler:
         value, error = np.full(4, np.nan), np.zeros(4)
         statistics = np.array([_statistics(row - centre) for row in rows])
         pooled = _statistics(self.sample - centre)
-        factor = _student(self.full.replicates)
+        factor = student_factor(self.full.replicates)
         for k in range(4):
             if index.far > k + 1:
                 column = statistics[:, k]
@@ -226,7 +226,7 @@ def _statistics(x: Array) -> Array:
     return np.array([mean, np.sqrt(variance), (d**3).mean() / variance**1.5, (d**4).mean() / variance**2])
 
 
-def _student(replicates: int) -> float:
+def student_factor(replicates: int) -> float:
     from scipy.special import stdtrit
 
     return float(stdtrit(replicates - 1, 1 - (1 - CONFIDENCE) / 2))
@@ -236,7 +236,7 @@ def _judge(weights: Array, density: bool) -> tuple[float, float]:
     """Mean over all points and its error, from the replicates' means."""
     means = weights.mean(axis=1)
     value = float(means.mean())
-    error = _student(means.size) * float(means.std(ddof=1)) / np.sqrt(means.size)
+    error = student_factor(means.size) * float(means.std(ddof=1)) / np.sqrt(means.size)
     count = weights.size
     total, squares = float(weights.sum()), float((weights * weights).sum())
     if density:
@@ -262,7 +262,9 @@ def design(
     from scipy.special import ndtr, ndtri
 
     order = (*outer, *((inner,) if inner else ()))
-    matrix = np.array([[1.0 if a == b else (0.0 if scores is None else scores.between(a, b)) for b in order] for a in order])
+    matrix = np.array(
+        [[1.0 if a == b else (0.0 if scores is None else scores.between(a, b)) for b in order] for a in order]
+    )
     factor = np.linalg.cholesky(matrix) if order else np.zeros((0, 0))
     uniform = _uniforms(len(outer), seed, replicates, points)
     values: dict[str, Array] = {}
@@ -278,7 +280,9 @@ def design(
         normal.append(independent)
         if np.count_nonzero(row) > 1:
             score = sum((row[j] * normal[j] for j in range(i + 1) if row[j] != 0), np.zeros(u.size))
-            values[name] = np.where(score < 0, law.icdf(ndtr(np.minimum(score, 0))), law.iccdf(ndtr(-np.maximum(score, 0))))
+            values[name] = np.where(
+                score < 0, law.icdf(ndtr(np.minimum(score, 0))), law.iccdf(ndtr(-np.maximum(score, 0)))
+            )
         else:
             values[name] = np.where(u <= 0.5, law.icdf(np.minimum(u, 0.5)), law.iccdf(np.minimum(1 - u, 0.5)))
     if not inner:
@@ -286,7 +290,9 @@ def design(
     last = factor[-1]
     if np.count_nonzero(last) == 1:
         return Design(values, None, IndependentInner(laws[inner]), replicates, points)
-    given = sum((last[j] * normal[j] for j in range(len(outer)) if last[j] != 0), np.zeros(replicates * points))
+    given = sum(
+        (last[j] * normal[j] for j in range(len(outer)) if last[j] != 0), np.zeros(replicates * points)
+    )
     return Design(values, given, ConditionalInner(laws[inner], float(last[-1])), replicates, points)
 
 

@@ -61,7 +61,9 @@ def sampling(output: Output, step: PlanStep, symbols: Mapping[str, str]) -> tupl
     statements = [writer.definition()]
     if step.inner:
         x = symbols[step.inner]
-        others = r",\,".join(symbols[name] for name in step.outer[:6]) + (r",\,\ldots" if len(step.outer) > 6 else "")
+        others = r",\,".join(symbols[name] for name in step.outer[:6]) + (
+            r",\,\ldots" if len(step.outer) > 6 else ""
+        )
         statements += writer.limits(step.inner)
         statements.append(
             Statement(
@@ -143,7 +145,8 @@ class _Writer:
                 Statement(
                     f"The region is solved for ${x}$: its end points are the roots of $g=y$ in ${x}$, all isolated "
                     "by interval arithmetic and bracketed to the last digit.",
-                    rf"g=y,\qquad \frac{{\partial g}}{{\partial {x}}}=" + self._clipped(derivative(self.expression, name)),
+                    rf"g=y,\qquad \frac{{\partial g}}{{\partial {x}}}="
+                    + self._clipped(derivative(self.expression, name)),
                     "region",
                 )
             ]
@@ -197,7 +200,11 @@ class _Writer:
     def region(self, inner: str, outer: str, step: PlanStep, result: NumericLaw) -> list[Statement]:
         x, z = self.symbols[outer], self.symbols[inner]
         law = f"f_{{{z}\\mid {x}}}" if _dependent(result) else f"f_{{{z}}}"
-        mass = f"P\\left({z}\\in S(y,{x})\\mid {x}\\right)" if _dependent(result) else f"P\\left({z}\\in S(y,{x})\\right)"
+        mass = (
+            f"P\\left({z}\\in S(y,{x})\\mid {x}\\right)"
+            if _dependent(result)
+            else f"P\\left({z}\\in S(y,{x})\\right)"
+        )
         low, high = _limits(self.laws[outer])
         found = self.branches(inner)
         statements = [
@@ -225,7 +232,9 @@ class _Writer:
             statements.append(Statement("with the derivative of each limit", text, "jacobian"))
         if step.inputs and len(step.inputs) > 2:
             rest = r",\,".join(self.symbols[name] for name in step.inputs if name not in (inner, outer))
-            statements.append(Statement(f"This is done for each combination of ${rest}$ and weighted with its probability."))
+            statements.append(
+                Statement(f"This is done for each combination of ${rest}$ and weighted with its probability.")
+            )
         return statements
 
     def atoms(self, count: int) -> list[Statement]:

@@ -13,8 +13,10 @@ from outspread.laws.law import Array, Law
 from outspread.numerics.slices.inner import normal_score
 from outspread.numerics.slices.solve import Frame
 
+_WIDEST = 50.0  # ratio of the distances from the middle of two neighbouring grid points
+_MOST_STEPS = 40
 _TAILS = (1e-300, 1e-200, 1e-120, 1e-70, 1e-40, 1e-22, 1e-12, 1e-7, 1e-4, 0.01, 0.12)
-_COARSE_TAILS = (1e-300, 1e-120, 1e-40, 1e-12, 1e-4, 0.05)
+_COARSE_TAILS = (1e-300, 1e-120, 1e-40, 1e-12, 1e-4, 0.05, 0.25, 0.45, 0.499)
 
 
 class Axis:
@@ -30,12 +32,18 @@ class Axis:
             lower, upper, middle = law.icdf(tails), law.iccdf(tails), law.icdf(0.5)
         self.start = low if np.isfinite(low) else float(lower[0])
         self.end = high if np.isfinite(high) else float(upper[0])
-        points = np.concatenate([[self.start], lower, [float(middle)], upper[::-1], [self.end], law.breaks(), breaks])
+        points = np.concatenate(
+            [[self.start], lower, [float(middle)], upper[::-1], [self.end], law.breaks(), breaks, [0.0]]
+        )
         points = points[np.isfinite(points) & (points >= self.start) & (points <= self.end)]
         self.grid: Array = np.unique(points)
-        self.frame = Frame(name, self.grid)
         self.singular = law.singular_ends() if self.mass == 1.0 else (False, False)
-        self.by_probability = any(self.singular)
+        steps = _steps(self.grid, float(middle))
+        # a tail over many magnitudes has its mass in a sliver of each panel, unless t counts probability
+        self.by_probability = self.mass == 1.0 and (any(self.singular) or steps.size > _MOST_STEPS)
+        if not self.by_probability:
+            self.grid = np.unique(np.concatenate([self.grid, steps]))
+        self.frame = Frame(name, self.grid)
         spread = float(law.icdf(0.84)) - float(law.icdf(0.16))
         self.scale = spread / 2 if spread > 0 else max(abs(float(middle)), 1.0)
 
@@ -85,3 +93,16 @@ class Axis:
 
     def scores(self, x: Array) -> Array:
         return normal_score(self.law, x)
+
+
+def _steps(grid: Array, middle: float) -> Array:
+    """Points between those neighbours of the grid that lie many times further out than each other."""
+    found: list[float] = []
+    for side in (-1.0, 1.0):
+        distance = np.sort(side * (grid - middle))
+        distance = distance[distance > 0]
+        for near, far in zip(distance[:-1].tolist(), distance[1:].tolist(), strict=True):
+            if far > _WIDEST * near:
+                count = int(np.ceil(np.log(far / near) / np.log(_WIDEST / 5)))
+                found.extend((middle + side * np.geomspace(near, far, count + 1)[1:-1]).tolist())
+    return np.array(found)

@@ -84,6 +84,10 @@ def split(event: Node, name: str) -> Node:
 
 def _split_comparison(event: Apply, name: str) -> Node:
     left, right = event.arguments
+    if event.operator == "equal":
+        return split(
+            both(comparison("less_equal", left, right), comparison("greater_equal", left, right)), name
+        )
     if event.operator == "not_equal":
         return split(either(comparison("less", left, right), comparison("greater", left, right)), name)
     if occurrences(event, name) <= 1 and not _conditional(event, name):
@@ -94,7 +98,8 @@ def _split_comparison(event: Apply, name: str) -> Node:
     if name not in names(right) and isinstance(left, Apply) and left.operator in ("min", "max", "abs"):
         return _split_outermost(event, left, right, name)
     piece = next(
-        (p for p in walk(event) if isinstance(p, Apply) and p.operator in PIECEWISE and name in names(p)), None
+        (p for p in walk(event) if isinstance(p, Apply) and p.operator in PIECEWISE and name in names(p)),
+        None,
     )
     if piece is None:
         return event
@@ -115,8 +120,6 @@ def _conditional(event: Node, name: str) -> bool:
 def _split_outermost(event: Apply, left: Apply, right: Node, name: str) -> Node:
     """max(a, b) <= t is a <= t and b <= t; and so on."""
     below = event.operator in ("less", "less_equal")
-    if event.operator == "equal":
-        return FALSE  # of probability 0 for a continuous variable; constant cases are taken out before
     if left.operator == "abs":
         inner = left.arguments[0]
         mirrored = comparison(event.operator, Apply("negate", (inner,)), right)

@@ -68,7 +68,9 @@ def _greatest(
         with np.errstate(all="ignore"):
             box = {n: Interval(lows[:, i], highs[:, i]) for i, n in enumerate(used)}
             span = enclose(expression, box)
-            reach = np.broadcast_to(np.asarray(span.upper if sign > 0 else -span.lower, float), lows.shape[:1])
+            reach = np.broadcast_to(
+                np.asarray(span.upper if sign > 0 else -span.lower, float), lows.shape[:1]
+            )
             corner = _representative(lows, highs)
             value = sign * np.asarray(evaluate(*corner.T), float) + 0.0
         reach = np.where(np.isnan(reach), -np.inf, reach)
@@ -123,4 +125,3 @@ def _halved(lows: Array, highs: Array) -> tuple[Array, Array]:
     left_high[row, axis] = cut
     right_low[row, axis] = cut
     return np.concatenate([lows, right_low]), np.concatenate([left_high, highs])
-

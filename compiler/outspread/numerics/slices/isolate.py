@@ -19,9 +19,12 @@ from outspread.formula.tree import Node, Number, names, subtract
 from outspread.numerics import sets
 from outspread.numerics.roots import bracketed_root
 from outspread.numerics.sets import Array, Sets
+from outspread.numerics.slices.scan import agrees, scan
 
 Index = npt.NDArray[np.int64]
 _CHUNK = 20_000
+_MANY = 300  # problems from which on the quick way is taken
+_AUDIT = 48
 _SMALLEST = 4e-15
 _DEPTH = 64
 
@@ -126,12 +129,17 @@ class Isolator:
         self.name, self.grid, self.parameter = name, grid, parameter
         self.slope = derivative(self.difference, name)
         self.arguments = names(self.difference)
-        self._value = compile_numpy(self.difference, self.arguments)
-        self._slope = compile_numpy(self.slope, self.arguments)
+        self.value = compile_numpy(self.difference, self.arguments)
+        self.slope_value = compile_numpy(self.slope, self.arguments)
         self.moving = parameter in self.arguments
-        self._rate = compile_numpy(derivative(self.difference, parameter), self.arguments)
+        self._calls = 0
+        self.rate_value = compile_numpy(derivative(self.difference, parameter), self.arguments)
 
     def solve(self, environment: Mapping[str, Array], count: int) -> Sets:
+        if count > _MANY:
+            quick = self._quick(environment, count)
+            if quick is not None:
+                return quick
         parts = []
         for start in range(0, count, _CHUNK):
             stop = min(start + _CHUNK, count)
@@ -140,19 +148,44 @@ class Isolator:
         if len(parts) == 1:
             return parts[0]
         rows = max(part.lower.shape[0] for part in parts)
-        padded = [sets.stack([part, *([sets.nothing(part.count)] * (rows - part.lower.shape[0]))]) for part in parts]
+        padded = [
+            sets.stack([part, *([sets.nothing(part.count)] * (rows - part.lower.shape[0]))]) for part in parts
+        ]
         return Sets(*(
             np.concatenate([getattr(part, field) for part in padded], axis=1)
             for field in ("lower", "upper", "lower_rate", "upper_rate")
         ))  # fmt: skip
 
-    def _at(self, function: object, environment: Mapping[str, Array], x: Array, index: Index) -> Array:
+    def _quick(self, environment: Mapping[str, Array], count: int) -> Sets | None:
+        """Many problems at once: sign changes between the points of a fine grid, and turning points in
+        between. A sample of the problems is solved by subdivision as well; if one differs, None."""
+        found = scan(self, environment, count)
+        self._calls += 1
+        if self._calls <= 4 or self._calls % 32 == 0:
+            sample = np.unique(np.linspace(0, count - 1, _AUDIT).astype(int))
+            part = {key: value[sample] for key, value in environment.items()}
+            roots, owners, moving = self.boundaries(part, sample.size)
+            if not agrees(found, roots[moving], sample[owners[moving]], sample):
+                return None
+        return self._assembled(environment, count, *found)
+
+    def at(self, function: object, environment: Mapping[str, Array], x: Array, index: Index) -> Array:
         values = [x if name == self.name else environment[name][index] for name in self.arguments]
         with np.errstate(all="ignore"):
             return np.broadcast_to(np.asarray(function(*values), float), x.shape)  # type: ignore[operator]
 
     def _solve(self, environment: Mapping[str, Array], count: int) -> Sets:
-        roots, owners, moving = self.boundaries(environment, count)
+        return self._assembled(environment, count, *self.boundaries(environment, count))
+
+    def _assembled(
+        self,
+        environment: Mapping[str, Array],
+        count: int,
+        roots: Array,
+        owners: Index,
+        moving: npt.NDArray[np.bool_],
+    ) -> Sets:
+        """The sets between boundaries on which the comparison holds."""
         order = np.lexsort((roots, owners))
         roots, owners, moving = roots[order], owners[order], moving[order]
         per = np.bincount(owners, minlength=count)
@@ -163,13 +196,13 @@ class Isolator:
         ends[position + 1, owners] = roots
         rates = np.zeros_like(ends)
         if self.moving and roots.size:
-            slope = self._at(self._slope, environment, roots, owners)
-            speed = -self._at(self._rate, environment, roots, owners) / slope
+            slope = self.at(self.slope_value, environment, roots, owners)
+            speed = -self.at(self.rate_value, environment, roots, owners) / slope
             rates[position + 1, owners] = np.where(moving & np.isfinite(speed), speed, 0.0)
         lower, upper = ends[:-1], ends[1:]
         middle = 0.5 * (lower + upper)
         index = np.broadcast_to(np.arange(count), middle.shape)
-        value = self._at(self._value, environment, middle.ravel(), index.ravel()).reshape(middle.shape)
+        value = self.at(self.value, environment, middle.ravel(), index.ravel()).reshape(middle.shape)
         holds = (value <= 0) if self.below else (value >= 0)
         holds &= lower < upper
         return sets.compact(Sets(
@@ -209,7 +242,9 @@ class Isolator:
             half = (first + last) // 2
             middle = np.where(graded, self.grid[half], 0.5 * (low + high))
             tiny = ~graded & (
-                (high - low <= _SMALLEST * np.maximum(np.abs(low), np.abs(high))) | (middle <= low) | (middle >= high)
+                (high - low <= _SMALLEST * np.maximum(np.abs(low), np.abs(high)))
+                | (middle <= low)
+                | (middle >= high)
             )
             if depth == _DEPTH + 11:
                 tiny[:] = True
@@ -233,12 +268,12 @@ class Isolator:
     def _brackets(
         self, environment: Mapping[str, Array], low: Array, high: Array, owner: Index
     ) -> tuple[Array, Index, npt.NDArray[np.bool_]]:
-        at_low = self._at(self._value, environment, low, owner)
-        at_high = self._at(self._value, environment, high, owner)
+        at_low = self.at(self.value, environment, low, owner)
+        at_high = self.at(self.value, environment, high, owner)
         change = np.sign(at_low) * np.sign(at_high) <= 0
         low, high, owner = low[change], high[change], owner[change]
         root, _ = bracketed_root(
-            lambda x, index: self._at(self._value, environment, x, owner[index]),
+            lambda x, index: self.at(self.value, environment, x, owner[index]),
             low, high, at_low[change], at_high[change],
         )  # fmt: skip
         known = ~np.isnan(root)

@@ -13,9 +13,9 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from outspread.formula.calculus import derivative
+from outspread.formula.calculus import derivative, nonsmooth
 from outspread.formula.evaluate import compile_numpy
-from outspread.formula.tree import Node, names
+from outspread.formula.tree import Apply, Name, Node, names, walk
 from outspread.laws.law import Array, Estimates
 from outspread.numerics.quadrature import integrate, panels_between
 from outspread.numerics.sets import Sets
@@ -144,13 +144,19 @@ class PlaneMeasure:
         return self._solver(event, self.inner).exact
 
     def _breaks(self, name: str) -> tuple[float, ...]:
-        """Where the formula is not smooth in one input alone, whatever the other."""
-        from outspread.formula.calculus import nonsmooth
-
+        """Where the formula changes its nature in one input alone, whatever the other: kinks, poles, and zeros
+        of factors, where the other input loses its influence."""
         axis = Axis(name, self.problem.laws[name])
         found: list[float] = []
-        for node in nonsmooth(self.problem.expression, name):
-            if set(names(node)) == {name}:
+        expression = self.problem.expression
+        factors = [
+            argument
+            for part in walk(expression)
+            if isinstance(part, Apply) and part.operator in ("multiply", "divide", "atan2", "power", "hypot")
+            for argument in part.arguments
+        ]
+        for node in dict.fromkeys([*nonsmooth(expression, name), *factors]):
+            if set(names(node)) == {name} and node != Name(name):
                 where = Solver(cases.comparison("less_equal", node, cases.ZERO), axis.frame)({}, 1)
                 full = where.lower < where.upper
                 found += [float(v) for v in np.concatenate([where.lower[full], where.upper[full]])]
@@ -192,7 +198,15 @@ class PlaneMeasure:
             return np.stack([probability(where, inner, given) * weight, lost * weight])
 
         result = integrate(
-            integrand, lower, upper, owner, count, components=2, relative=self.relative, absolute=1e-300, control=1
+            integrand,
+            lower,
+            upper,
+            owner,
+            count,
+            components=2,
+            relative=self.relative,
+            absolute=1e-300,
+            control=1,
         )
         self.effort.evaluations += result.evaluations
         error = result.error[0] + np.abs(result.value[1]) + self._relative_error * result.value[0]
@@ -218,7 +232,9 @@ class PlaneMeasure:
         value, error = one.value + two.value, one.error + two.error
         weights = self.combos.weights
         shape = (y.size, self.combos.count)
-        return Estimates(value.reshape(shape) @ weights, (error + self._relative_error * value).reshape(shape) @ weights)
+        return Estimates(
+            value.reshape(shape) @ weights, (error + self._relative_error * value).reshape(shape) @ weights
+        )
 
     def _chart(self, event: Node, y: Array, outer: str, inner: str) -> Estimates:
         count = y.size * self.combos.count

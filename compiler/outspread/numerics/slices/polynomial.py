@@ -25,9 +25,7 @@ HIGHEST = 2
 
 def _plus(a: Coefficients, b: Coefficients) -> Coefficients:
     size = max(len(a), len(b))
-    return tuple(
-        fold(add(*(c[i] for c in (a, b) if i < len(c)))) for i in range(size)
-    )
+    return tuple(fold(add(*(c[i] for c in (a, b) if i < len(c)))) for i in range(size))
 
 
 def _times(a: Coefficients, b: Coefficients) -> Coefficients | None:

@@ -138,9 +138,7 @@ def combinations(problem: Problem) -> Combinations:
     return Combinations({name: value[keep] for name, value in values.items()}, weights[keep])
 
 
-def parts(
-    expression: Node, laws: Mapping[str, Law]
-) -> list[tuple[tuple[str, ...], tuple[str, ...]]]:
+def parts(expression: Node, laws: Mapping[str, Law]) -> list[tuple[tuple[str, ...], tuple[str, ...]]]:
     """The ways to take each partly discrete input as continuous or as discrete: (continuous, discrete)."""
     used = [name for name in laws if name in names(expression)]
     choices: list[Sequence[str]] = []

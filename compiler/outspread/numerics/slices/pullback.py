@@ -85,9 +85,7 @@ def scale(target: Sets, other: Array) -> Sets:
 
 def divide_by(target: Sets, other: Array) -> Sets:
     """v / other in target."""
-    return sets.where(
-        other != 0, monotone(target, lambda t: t * other, lambda t: other + 0 * t, other > 0)
-    )
+    return sets.where(other != 0, monotone(target, lambda t: t * other, lambda t: other + 0 * t, other > 0))
 
 
 def divide_into(target: Sets, other: Array) -> Sets:
@@ -141,9 +139,7 @@ def integer_power(target: Sets, exponent: int) -> Sets:
 def exponent_of(target: Sets, base: Array) -> Sets:
     """base ^ v in target, base > 0."""
     log_base = np.log(base)
-    moved = monotone(
-        target, lambda t: np.log(t) / log_base, lambda t: 1 / (t * log_base), log_base > 0, 0.0
-    )
+    moved = monotone(target, lambda t: np.log(t) / log_base, lambda t: 1 / (t * log_base), log_base > 0, 0.0)
     usable = (base > 0) & (base != 1)
     return _or_all(base == 1, _constant(target, 1.0), sets.where(usable, moved))
 
@@ -202,7 +198,9 @@ def hypotenuse(target: Sets, other: Array) -> Sets:
         Sets(
             np.where(full, lower, np.inf),
             np.where(full, upper, -np.inf),
-            np.where(full & ~reached & (target.lower_rate != 0), target.lower / lower * target.lower_rate, 0.0),
+            np.where(
+                full & ~reached & (target.lower_rate != 0), target.lower / lower * target.lower_rate, 0.0
+            ),
             np.where(full & (target.upper_rate != 0), target.upper / upper * target.upper_rate, 0.0),
         )
     )
@@ -252,7 +250,9 @@ def angle_of_rise(target: Sets, run: Array) -> Sets:
     def inverse(t: Array) -> Array:
         value = run * np.tan(t)
         steep = np.abs(np.abs(t) - HALF_PI) < 1e-15
-        return np.where(steep, np.copysign(np.inf, t), np.where(t == 0, 0.0, np.where(np.abs(t) >= np.pi, 0.0, value)))
+        return np.where(
+            steep, np.copysign(np.inf, t), np.where(t == 0, 0.0, np.where(np.abs(t) >= np.pi, 0.0, value))
+        )
 
     def slope(t: Array) -> Array:
         return run / np.cos(t) ** 2

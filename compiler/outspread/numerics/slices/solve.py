@@ -16,13 +16,14 @@ import numpy.typing as npt
 from outspread.formula.calculus import derivative
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.interval import Interval, enclose
-from outspread.formula.tree import Apply, Name, Node, Number, names, subtract
+from outspread.formula.tree import Apply, Name, Node, Number, names, occurrences, rebuild, subtract, walk
 from outspread.numerics import sets
 from outspread.numerics.sets import Array, Sets
 from outspread.numerics.slices import cases, pullback
 from outspread.numerics.slices.isolate import root_finder
-from outspread.numerics.slices.polynomial import quadratic_program
+from outspread.numerics.slices.polynomial import quadratic_program, rational
 
+PART = "outspread:part"  # a sub-formula that stands for the variable wherever it occurs
 BOUND = "outspread:bound"  # an end of a target, for formulas solved as a whole
 PARAMETER = "outspread:y"  # the value y in {g <= y}; cannot clash with an input's name
 
@@ -88,8 +89,6 @@ class Solver:
         left, right = event.arguments
         operator = event.operator
         name = self.frame.name
-        if operator == "equal":
-            return lambda environment, count: sets.nothing(count)
         if name in names(right) and name not in names(left):
             left, right, operator = right, left, cases.FLIPPED[operator]
         if name in names(right):
@@ -114,7 +113,17 @@ class Solver:
 
     def _core(self, node: Node) -> Callable[[Sets, Environment], Sets]:
         """The inverse image under a formula in which the variable stands in several operands."""
-        name, bound = self.frame.name, Name(BOUND)
+        part = _repeated_part(node, self.frame.name)
+        if part is not None:
+            whole = rebuild(node, lambda piece: Name(PART) if piece == part else None)
+            if rational(whole, PART) is not None:
+                outer, inner = self._solved(whole, PART), self._peel(part)
+                return lambda target, environment: inner(outer(target, environment), environment)
+        return self._solved(node, self.frame.name)
+
+    def _solved(self, node: Node, name: str) -> Callable[[Sets, Environment], Sets]:
+        """The inverse image by solving `node` against the ends of the target."""
+        bound = Name(BOUND)
         sides: list[Program] = []
         for operator in ("less_equal", "greater_equal"):
             quadratic = quadratic_program(node, bound, operator, name, BOUND, _function)
@@ -181,11 +190,25 @@ class Solver:
         return periodic
 
 
+def _repeated_part(node: Node, name: str) -> Node | None:
+    """The largest sub-formula that holds the name once and all of whose copies hold all its occurrences."""
+    total = occurrences(node, name)
+    counts: dict[Node, int] = {}
+    for piece in walk(node):
+        if isinstance(piece, Apply) and occurrences(piece, name) == 1:
+            counts[piece] = counts.get(piece, 0) + 1
+    return next((piece for piece, count in counts.items() if count == total), None)
+
+
 def _slowed(part: Sets, rate: Array, infinite: npt.NDArray[np.bool_], full: npt.NDArray[np.bool_]) -> Sets:
     """Chain rule: the ends move with the bound, the bound with y. An infinite bound holds everywhere."""
     whole = sets.where(infinite & full, sets.everything(part.count))
     moved = Sets(part.lower, part.upper, part.lower_rate * rate, part.upper_rate * rate)
-    return sets.stack([sets.where(~infinite & full, moved), whole]) if infinite.any() else sets.where(full, moved)
+    return (
+        sets.stack([sets.where(~infinite & full, moved), whole])
+        if infinite.any()
+        else sets.where(full, moved)
+    )
 
 
 Function = Callable[[Environment, int], npt.NDArray[np.float64]]
@@ -226,7 +249,12 @@ def _target(operator: str, right: Node, peeled: Callable[[Sets, Environment], Se
 
 
 def _power(where: int, other: Node) -> Callable[[Sets, Environment], Sets]:
-    if where == 0 and isinstance(other, Number) and other.value == int(other.value) and abs(other.value) < 1e6:
+    if (
+        where == 0
+        and isinstance(other, Number)
+        and other.value == int(other.value)
+        and abs(other.value) < 1e6
+    ):
         exponent = int(other.value)
         return lambda target, _: pullback.integer_power(target, exponent)
     operand = _function(other)
