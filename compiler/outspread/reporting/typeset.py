@@ -25,6 +25,8 @@ from outspread.reporting.parts import Row
 COLUMN = 43.0
 HANGING = 2.0
 SMALLEST_SCALE = 0.75
+#: what cannot be broken may be set smaller still, down to this
+LEAST_SCALE = 0.6
 #: STIX letters are small for their size: this brings them level with the sans-serif text around them
 _MAGNIFY = 1.14
 _DRAWN_AT = 20.0
@@ -95,7 +97,7 @@ def display(latex: str, number: str = "") -> Markup:
     try:
         stacked = [line for row in read(latex) for line in _fitted(row)]
         body = Markup("").join(
-            Markup('<div class="line{}">{}</div>').format(" more" if index else "", _image(row, scale))
+            Markup('<div class="line{}">{}</div>').format(" more" if index else "", _line(row, scale))
             for index, (row, scale) in enumerate(stacked)
         )
     except LatexError:
@@ -103,6 +105,13 @@ def display(latex: str, number: str = "") -> Markup:
     label = Markup('<span class="number">({})</span>').format(number) if number else Markup("")
     anchor = Markup(' id="eq-{}"').format(number) if number else Markup("")
     return Markup('<div class="formula"{}><div class="lines">{}</div>{}</div>').format(anchor, body, label)
+
+
+def _line(row: Row, scale: float) -> Markup:
+    """One line as a picture; as text, which wraps, where the picture would be too small to read."""
+    if scale < LEAST_SCALE:
+        return Markup('<code class="math">{}</code>').format(plain(row))
+    return _image(row, scale)
 
 
 def _fitted(row: Row) -> list[tuple[Row, float]]:
