@@ -107,6 +107,7 @@ def test_exact_numbers_are_written_in_full_and_short():
 def test_measured_differences_have_three_digits():
     assert rounded(0.00222519) == "0.00223"
     assert rounded(4.1e-13) == "4.10 × 10⁻¹³"
+    assert rounded(2.1e-12, 1, upwards=True) == "3 × 10⁻¹²"
 
 
 def test_groups_of_digits_add_no_character():

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 import re
-from decimal import ROUND_HALF_EVEN, Context, Decimal
+from decimal import ROUND_CEILING, ROUND_HALF_EVEN, Context, Decimal
 
 from markupsafe import Markup, escape
 
@@ -80,12 +80,14 @@ def brief(value: float, error: float, against: float | None = None, digits: int 
     return _write(shown, wanted) if error else _write(shown, _last_place(shown))
 
 
-def rounded(value: float, digits: int = 3) -> str:
-    """A measured number, such as a difference observed, to a few significant digits and without error."""
+def rounded(value: float, digits: int = 3, upwards: bool = False) -> str:
+    """A number that is only compared, such as a difference observed (or, upwards, the bound on it), to a
+    few significant digits and without error, as the results file has it."""
     if value == 0 or not math.isfinite(value):
         return exact(value)
     place = Decimal(value).adjusted() - digits + 1
-    shown = Decimal(value).quantize(Decimal((0, (1,), place)), rounding=ROUND_HALF_EVEN, context=_EXACT)
+    mode = ROUND_CEILING if upwards else ROUND_HALF_EVEN
+    shown = Decimal(value).quantize(Decimal((0, (1,), place)), rounding=mode, context=_EXACT)
     return _write(shown, place)
 
 

@@ -22,7 +22,7 @@ from outspread.reading.model import Output
 from outspread.reporting import curves, plots, setup, tables, words
 from outspread.reporting.data import ReportData
 from outspread.reporting.latex import LatexError, read
-from outspread.reporting.numbers import error_text, exact, grouped, rounded
+from outspread.reporting.numbers import exact, grouped, rounded
 from outspread.reporting.parts import Symbol
 from outspread.reporting.setup import Numbering, symbol
 from outspread.reporting.typeset import coded, display, sentence
@@ -201,7 +201,7 @@ def _output(report: ReportData, output: OutputResults) -> dict[str, Any]:
         "probabilities": [(text, tables.cell(finding)) for text, finding in output.probabilities],
         "atoms": atoms,
         "more_atoms": more,
-        "largest_error": grouped(error_text(0.0, output.largest_error)),
+        "largest_error": grouped(rounded(output.largest_error, 1, upwards=True)),
         "limits": [(exact(limit.at), limit.requirement) for limit in limits],
         "pictures": _pictures(derived, output, limits),
     }
@@ -257,7 +257,7 @@ def _evidence_row(evidence: Evidence) -> dict[str, Any]:
         "against": evidence.against,
         "points": f"{evidence.points:,}".replace(",", "\N{NARROW NO-BREAK SPACE}"),
         "difference": grouped(rounded(evidence.largest_difference)),
-        "allowed": grouped(rounded(evidence.allowed)),
+        "allowed": grouped(rounded(evidence.allowed, upwards=True)),
         "confidence": exact(evidence.confidence) if evidence.confidence < 1 else "certain",
         "agrees": evidence.agrees,
         "note": evidence.note,
