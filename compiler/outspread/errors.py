@@ -87,6 +87,6 @@ class DerivationError(OutspreadError):
 
 
 class ReportError(OutspreadError):
-    """A report cannot be written on this machine (exit status 5); figures and results are not touched by it."""
+    """A report cannot be written on this machine (exit status 5); figures and results stay as they are."""
 
     exit_status = 5

@@ -89,7 +89,8 @@ class Verdict:
 
     name: str
     verdict: str
-    statement: str  # "P(clearance > 0.002) is at least 0.999", "the 0.99 quantile of clearance is at most 0.045 mm"
+    #: "P(clearance > 0.002) is at least 0.999", "the 0.99 quantile of clearance is at most 0.045 mm"
+    statement: str
     value: Finding
     limit: float
     sense: str  # at_least | at_most

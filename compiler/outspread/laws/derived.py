@@ -99,9 +99,8 @@ class DerivedLaw(Law):
 
     def _end_density(self, end: float, side: float) -> tuple[float, float]:
         """The density at an end of the support as its limit from inside; inf where it grows without bound."""
-        scale = max(float(self.nodes[-1] - self.nodes[0]), 1e-300)
-        if not np.isfinite(scale):
-            scale = max(abs(end), 1.0)
+        low, high = self.rough_quantile(np.array([0.16, 0.84]))
+        scale = max(float(high - low), 1e-300)
         steps = scale * np.array([2e-9, 1e-9, 1e-12, 1e-15])
         steps = np.maximum(steps, abs(end) * np.array([4e-13, 2e-13, 1e-13, 5e-14]))
         result = self._evaluate("pdf", end + side * steps)
@@ -156,8 +155,8 @@ class DerivedLaw(Law):
         return self.estimate_quantile(q, upper=True).value
 
     def estimate_quantile(self, p: npt.ArrayLike, upper: bool = False) -> Estimates:
-        """icdf(p), or iccdf(p) where `upper`, with a bound on the error: the bracket within which the cdf with
-        its stated error crosses p. Outside [0, 1]: NaN."""
+        """icdf(p), or iccdf(p) where `upper`, with a bound on the error: the bracket within which the cdf
+        with its stated error crosses p. Outside [0, 1]: NaN."""
         levels = np.asarray(p, float)
         flat = levels.ravel()
         low, high = self._support
@@ -350,7 +349,7 @@ class DerivedLaw(Law):
         exponent = exponent[np.isfinite(exponent)]
         if exponent.size < 3:
             return Tail(np.inf, False)
-        first, second, third = exponent[-3:]
+        second, third = exponent[-2:]
         if third > 60 or abs(third - second) > 0.05 * third + 0.02:
             return Tail(np.inf, False)
         # logarithmic corrections fade like 1 / log y, which halves from level to level
@@ -358,11 +357,11 @@ class DerivedLaw(Law):
         whole = round(limit)
         return Tail(float(whole if abs(limit - whole) < 2e-3 else limit), False)
 
-    def moment_exists(self, order: int) -> bool:
+    def moment_exists(self, order: float) -> bool:
         return all(tail.exponent > order for tail in self.tails())
 
     def central(self) -> tuple[Estimates, Array]:
-        """E[(Y - c)^k], k = 1..4, about c near the median, and c: by integrating k (y - c)^(k-1) P(beyond y)."""
+        """E[(Y - c)^k], k = 1..4, about c near the median, and c (see `laws.moments`)."""
         if self._moments is None:
             from outspread.laws.moments import central_moments
 

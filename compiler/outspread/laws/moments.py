@@ -56,7 +56,7 @@ def _half(law: DerivedLaw, centre: float, side: int, highest: int, relative: flo
     )  # fmt: skip
     value = result.value[:highest, 0]
     error = result.error[:highest, 0] + np.abs(result.value[highest:, 0])
-    cut = _beyond(law, centre, side, float(points[-1]), orders)
+    cut = _beyond(law, centre, side, float(points[-1]), orders.astype(float))
     return value, error + cut
 
 

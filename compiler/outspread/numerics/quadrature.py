@@ -81,9 +81,10 @@ def integrate(
     `function` takes flat arrays of points and their owners and returns values of shape (points,) or
     (components, points). `lower`, `upper`, `owner` have one entry a panel; all limits are finite.
     A panel is accepted when its error is below relative * |integral| / 40 of its owner (for every component)
-    or below absolute / 40; only the first `control` components (default: all) are so controlled. What is not accepted after `rounds` bisections or `most_panels` panels keeps its
-    error, so the error stated is always the sum over all panels; it never vanishes from the account. The
-    same holds for panels whose error both halves inherit over several bisections: that is rounding noise.
+    or below absolute / 40; only the first `control` components (default: all) are so controlled. What is not
+    accepted after `rounds` bisections or `most_panels` panels keeps its error, so the error stated is always
+    the sum over all panels; it never vanishes from the account. The same holds for panels whose error both
+    halves inherit over several bisections: that is rounding noise.
     """
     most_panels = 40_000 + 2_000 * owners if most_panels is None else most_panels
     value = np.zeros((components, owners))

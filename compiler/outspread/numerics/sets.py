@@ -145,10 +145,10 @@ def complement(sets: Sets) -> Sets:
 
 
 def compact(sets: Sets) -> Sets:
-    """Drop the rows that are empty for every problem."""
+    """Drop the rows that are empty for every problem; single points stay, a flat operation may widen them."""
     if sets.lower.shape[0] <= 1:
         return sets
-    full = (sets.lower < sets.upper).any(axis=1)
+    full = (sets.lower <= sets.upper).any(axis=1)
     if full.all():
         return sets
     if not full.any():

@@ -159,7 +159,9 @@ class _Facts:
 
     def step(self, output: str, chosen: tuple[str, str], ruled_out: tuple[RuledOut, ...]) -> PlanStep:
         route, reason = chosen
-        inner, outer, details = "", (), []
+        inner = ""
+        outer: tuple[str, ...] = ()
+        details: list[tuple[str, str]] = []
         if route == "change_of_variables":
             inner = self.continuous[0]
         elif route == "region_integral":
@@ -219,6 +221,7 @@ def _joint(model: Model, laws: Mapping[str, Law]) -> tuple[PlanStep, ...]:
     return (
         PlanStep(
             title, f"the joint density of {title}", "jacobian",
-            f"as many outputs as inputs ({len(used)}): every branch of the inverse map and its Jacobian", used,
+            f"as many outputs as inputs ({len(used)}): every branch of the inverse map and its Jacobian",
+            used,
         ),
     )  # fmt: skip

@@ -68,7 +68,7 @@ def _block(entry: Dependence, laws: Mapping[str, Law]) -> Array:
 
 def _from_pearson(target: float, laws: Mapping[str, Law], left: str, right: str) -> float:
     a, b = laws[left], laws[right]
-    kinds = (getattr(a, "family", ""), getattr(b, "family", ""))
+    kinds = (a.family, b.family)
     if kinds == ("normal", "normal") or target == 0:
         return target
     if not (np.isfinite(a.variance()) and np.isfinite(b.variance())):
@@ -86,7 +86,7 @@ def _unreachable(target: float, left: str, right: str, low: float, high: float) 
 
 
 def _lognormal_scores(target: float, a: Law, b: Law, left: str, right: str) -> float:
-    s, t = (float(law.parameters["log_sd"]) for law in (a, b))  # type: ignore[attr-defined]
+    s, t = (float(law.parameters["log_sd"]) for law in (a, b))
     size = float(np.sqrt(np.expm1(s * s) * np.expm1(t * t)))
     low, high = float(np.expm1(-s * t)) / size, float(np.expm1(s * t)) / size
     if not low < target < high:

@@ -37,7 +37,7 @@ def correlation(left: Node, right: Node, laws: Mapping[str, Law], scores: Scores
 def _by_rule(
     left: Node, right: Node, laws: Mapping[str, Law], scores: Scores | None, order: int
 ) -> float | None:
-    """By a product rule over the normal scores; None where discrete inputs depend on others or are too many."""
+    """By a product rule over the normal scores; None where discrete inputs are dependent or too many."""
     axes: list[tuple[str, Array, Array]] = []
     total = 1
     for name, law in laws.items():
@@ -52,7 +52,7 @@ def _by_rule(
         total *= nodes.size
         if total > _MOST_NODES:
             return None
-    mesh = np.meshgrid(*(nodes for _, nodes, _ in axes), indexing="ij")
+    mesh = list(np.meshgrid(*(nodes for _, nodes, _ in axes), indexing="ij"))
     weight = np.ones(())
     for _, _, weights in axes:
         weight = np.multiply.outer(weight, weights)

@@ -42,7 +42,7 @@ class SymbolicDensity:
 class DerivedOutput:
     """The law of one output with its written-out derivation.
 
-    `numeric` is the law by the numeric route where `law` is a closed form (else None): evidence compares them.
+    `numeric` is the law by the numeric route where `law` is a closed form (else None), for comparison.
     """
 
     output: str

@@ -153,7 +153,7 @@ class Engine:
         return Estimates(np.asarray(value), np.asarray(error))
 
     def correlation(self, a: str, b: str) -> Estimates | str:
-        """Pearson's correlation of two outputs, or why there is none; from Var(A/s + B/t) = 2 + 2 rho with s, t their deviations."""
+        """Pearson's correlation of two outputs with a bound on its error, or the reason why there is none."""
         outputs = {item.output: item.law for item in self.derive()}
         deviations = []
         for name in (a, b):

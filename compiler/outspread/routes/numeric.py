@@ -219,7 +219,8 @@ def merge_atoms(values: Array, masses: Array, errors: Array) -> Atoms:
     group = np.concatenate([[0], np.cumsum(gap)])
     first = np.flatnonzero(np.concatenate([[True], gap]))
     tidy = np.array([float(f"{value:.14g}") for value in values[first].tolist()])
-    return Atoms(tidy, np.bincount(group, masses), np.bincount(group, errors))
+    sums = (np.asarray(np.bincount(group, column), float) for column in (masses, errors))
+    return Atoms(tidy, *sums)
 
 
 def _nodes(pieces: list[Piece], spread: Extent) -> Array:

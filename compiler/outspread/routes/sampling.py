@@ -113,7 +113,8 @@ class _Sampler:
             share = float(np.isnan(self.sample).mean())
             raise DerivationError(
                 f"the formula has no value with probability about {share:.2g} (a root or logarithm of a "
-                "negative number, for example); limit the inputs by `truncate`, or say with if(…) what holds there"
+                "negative number, for example); limit the inputs by `truncate`, or say with if(…) what "
+                "holds there"
             )
 
     def evaluate(self, kind: str, y: Array) -> Estimates:
@@ -150,7 +151,7 @@ class _Sampler:
         given = None if self.design.given is None else self.design.given[edge.problem]
         with np.errstate(all="ignore"):
             rate = self.design.inner.pdf(edge.x, given) * edge.rate
-        return np.bincount(edge.problem, np.where(np.isfinite(rate), rate, 0.0), count)
+        return np.asarray(np.bincount(edge.problem, np.where(np.isfinite(rate), rate, 0.0), count), float)
 
     def atoms(self) -> tuple[Atoms, float]:
         """Atoms from the constant cases, or from repeated values where nothing is integrated exactly."""
@@ -307,4 +308,4 @@ def _uniforms(dimensions: int, seed: int, replicates: int, points: int) -> Array
         generator = np.random.Generator(np.random.PCG64(np.random.SeedSequence((seed, replicate))))
         blocks.append(Sobol(dimensions, scramble=True, rng=generator).random(points))
     half = 2.0**-33
-    return np.clip(np.concatenate(blocks), half, 1 - half)
+    return np.asarray(np.clip(np.concatenate(blocks), half, 1 - half), float)

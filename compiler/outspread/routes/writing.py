@@ -17,7 +17,7 @@ from outspread.formula.latex_lines import breakable
 from outspread.formula.tree import Name, Node, names
 from outspread.laws.law import Array, Law
 from outspread.planning.plan import PlanStep
-from outspread.reading.model import Model, Output
+from outspread.reading.model import Constant, Input, Model, Output
 from outspread.routes.derived import Statement, SymbolicDensity
 from outspread.routes.jacobian.branches import Branch, branches_for
 from outspread.routes.numeric import NumericLaw
@@ -30,7 +30,8 @@ PAGE = 62.0  # width of a formula, in characters of `estimated_width`
 def symbols(model: Model) -> dict[str, str]:
     """LaTeX for every name of the model."""
     found: dict[str, str] = {}
-    for item in (*model.constants, *model.inputs, *model.outputs):
+    named: list[Constant | Input | Output] = [*model.constants, *model.inputs, *model.outputs]
+    for item in named:
         found[item.name] = item.symbol or symbol_for(item.name)
     for step in model.steps:
         found[step.name] = symbol_for(step.name)
@@ -65,22 +66,24 @@ def sampling(output: Output, step: PlanStep, symbols: Mapping[str, str]) -> tupl
             r",\,\ldots" if len(step.outer) > 6 else ""
         )
         statements += writer.limits(step.inner)
+        short = writer.formula_short()
         statements.append(
             Statement(
-                f"Given all other inputs, the probability of the region is known exactly from the law of ${x}$. "
-                "Its mean over the others is taken over scrambled Sobol' points, in independent replicates "
-                "whose scatter gives the error.",
-                rf"F_{{{writer.y}}}(y)=\mathrm{{E}}\left[P\left({writer.formula_short()}\leq y\,\mid\,{others}\right)\right]"
-                rf"\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}P\left({writer.formula_short()}\leq y\,\mid\,i\right)",
+                "Given all other inputs, the probability of the region is known exactly from the law of "
+                f"${x}$. Its mean over the others is taken over scrambled Sobol' points, in independent "
+                "replicates whose scatter gives the error.",
+                rf"F_{{{writer.y}}}(y)=\mathrm{{E}}\left[P\left({short}\leq y\,\mid\,{others}\right)\right]"
+                rf"\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}P\left({short}\leq y\,\mid\,i\right)",
                 "cdf",
             )
         )
     else:
         statements.append(
             Statement(
-                "The formula is evaluated at scrambled Sobol' points in independent replicates, whose scatter "
-                "gives the error.",
-                rf"F_{{{writer.y}}}(y)\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}\mathbf{{1}}\left\{{y_i\leq y\right\}}",
+                "The formula is evaluated at scrambled Sobol' points in independent replicates, whose "
+                "scatter gives the error.",
+                rf"F_{{{writer.y}}}(y)\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}"
+                r"\mathbf{1}\left\{y_i\leq y\right\}",
                 "cdf",
             )
         )
@@ -115,7 +118,8 @@ class _Writer:
         arguments = ",".join(self.symbols[name] for name in names(self.expression)[:8])
         more = r",\ldots" if len(names(self.expression)) > 8 else ""
         return Statement(
-            "With constants, steps and unit factors put in, the result is a function of the uncertain inputs:",
+            "With constants, steps and unit factors put in, the result is a function of the uncertain "
+            "inputs:",
             self.wrapped(rf"{self.y}=g({arguments}{more})=", self.expression),
             "note",
         )
@@ -124,7 +128,8 @@ class _Writer:
         xs = r",\,".join(self.symbols[name] for name in step.inputs)
         return [
             Statement(
-                "All inputs are discrete: the probability of a value is the sum over the combinations that lead to it.",
+                "All inputs are discrete: the probability of a value is the sum over the combinations that "
+                "lead to it.",
                 rf"P({self.y}=y)=\sum_{{g({xs})=y}}\;\prod_i p_i",
                 "cdf",
             )
@@ -143,8 +148,8 @@ class _Writer:
         if found is None:
             return [
                 Statement(
-                    f"The region is solved for ${x}$: its end points are the roots of $g=y$ in ${x}$, all isolated "
-                    "by interval arithmetic and bracketed to the last digit.",
+                    f"The region is solved for ${x}$: its end points are the roots of $g=y$ in ${x}$, all "
+                    "isolated by interval arithmetic and bracketed to the last digit.",
                     rf"g=y,\qquad \frac{{\partial g}}{{\partial {x}}}="
                     + self._clipped(derivative(self.expression, name)),
                     "region",
@@ -163,7 +168,8 @@ class _Writer:
         beside = [other for other in step.inputs if other != name]
         statements = [
             Statement(
-                "The distribution function is the probability of the region in which the formula stays below a value:",
+                "The distribution function is the probability of the region in which the formula stays below "
+                "a value:",
                 rf"F_{{{self.y}}}(y)=P\left(\left\{{{x}:\,g({x})\leq y\right\}}\right)",
                 "region",
             )
@@ -209,19 +215,24 @@ class _Writer:
         found = self.branches(inner)
         statements = [
             Statement(
-                f"The region in which the formula stays below $y$, cut at a fixed ${x}$, is a set of values of ${z}$:",
+                f"The region in which the formula stays below $y$, cut at a fixed ${x}$, is a set of values "
+                f"of ${z}$:",
                 rf"S(y,{x})=\left\{{{z}:\,g\leq y\right\}}", "region",
             ),
             *self.limits(inner),
             Statement(
-                f"The distribution function is the probability of the region: exact in ${z}$, integrated over ${x}$.",
-                rf"F_{{{self.y}}}(y)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})\;{mass}\;\mathrm{{d}}{x}", "cdf",
+                f"The distribution function is the probability of the region: exact in ${z}$, integrated "
+                f"over ${x}$.",
+                rf"F_{{{self.y}}}(y)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})\;{mass}\;\mathrm{{d}}{x}",
+                "cdf",
             ),
         ]  # fmt: skip
         slope = rf"\left|\frac{{\partial {z}_k}}{{\partial y}}\right|"
         statements.append(Statement(
-            "The density follows by differentiating under the integral sign; the limits move with $y$ (Leibniz rule).",
-            rf"f_{{{self.y}}}(y)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})\sum_k {law}\left({z}_k(y,{x})\right){slope}\;\mathrm{{d}}{x}",
+            "The density follows by differentiating under the integral sign; the limits move with $y$ "
+            "(Leibniz rule).",
+            rf"f_{{{self.y}}}(y)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})"
+            rf"\sum_k {law}\left({z}_k(y,{x})\right){slope}\;\mathrm{{d}}{x}",
             "density",
         ))  # fmt: skip
         if found is not None and len(found) <= 2:
@@ -243,15 +254,16 @@ class _Writer:
         number = "one value carries" if count == 1 else f"{count} values carry"
         return [
             Statement(
-                f"Where the formula is constant on a set of positive probability, {number} probability by itself; "
-                "these sets are measured exactly and the density describes the rest.",
+                f"Where the formula is constant on a set of positive probability, {number} probability by "
+                "itself; these sets are measured exactly and the density describes the rest.",
                 rf"P({self.y}=c)=P\left(\{{g=c\}}\right)", "note",
             )
         ]  # fmt: skip
 
 
 def _limits(law: Law) -> tuple[str, str]:
-    return tuple(_number(end) for end in law.support())  # type: ignore[return-value]
+    low, high = law.support()
+    return _number(low), _number(high)
 
 
 def _number(value: float) -> str:

@@ -83,7 +83,7 @@ class Axis:
         return np.unique(np.concatenate([self.to_t(inner), [-0.5, 0.0, 0.5]]))
 
     def length(self, x: Array) -> Array:
-        """A local length: the scale of the law, shrinking to 0 towards an end where the density is unbounded."""
+        """A local length: the law's scale, shrinking to 0 towards an end where the density is unbounded."""
         length = np.full_like(x, self.scale)
         for end, singular in zip(self.support, self.singular, strict=True):
             if singular:

@@ -68,7 +68,7 @@ def comparison(operator: str, left: Node, right: Node) -> Node:
 
 def split(event: Node, name: str) -> Node:
     """The event as and/or of comparisons that are smooth in `name`, wherever `name` occurs more than once
-    in a comparison with a piecewise operation above it; a comparison in which it occurs once stays as it is."""
+    in a comparison with a piecewise operation above it; where it occurs once, the comparison stays."""
     assert isinstance(event, Apply)
     if event.operator in ("and", "or"):
         parts = [split(part, name) for part in event.arguments]

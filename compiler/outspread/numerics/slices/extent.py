@@ -72,9 +72,9 @@ def _greatest(
                 np.asarray(span.upper if sign > 0 else -span.lower, float), lows.shape[:1]
             )
             corner = _representative(lows, highs)
-            value = sign * np.asarray(evaluate(*corner.T), float) + 0.0
+            values = sign * np.asarray(evaluate(*corner.T), float) + 0.0
         reach = np.where(np.isnan(reach), -np.inf, reach)
-        finite = value[~np.isnan(value)]
+        finite = values[~np.isnan(values)]
         best = max(best, float(finite.max())) if finite.size else best
         bound = float(reach.max())
         if bound == np.inf or bound <= best or bound - best <= 1e-14 * max(abs(bound), abs(best)):
@@ -111,15 +111,19 @@ def _representative(lows: Array, highs: Array) -> Array:
 
 def _halved(lows: Array, highs: Array) -> tuple[Array, Array]:
     """Halve each box along its widest side (an infinite side is cut at twice its finite end)."""
-    width = np.where(np.isinf(highs - lows), np.inf, highs - lows)
-    relative = width / np.maximum(np.abs(lows) + np.abs(highs), 1e-300)
+    with np.errstate(all="ignore"):
+        width = np.where(np.isinf(highs - lows), np.inf, highs - lows)
+        relative = width / np.maximum(np.abs(lows) + np.abs(highs), 1e-300)
     relative = np.where(np.isinf(width), np.inf, relative)
     axis = np.argmax(relative, axis=1)
     row = np.arange(lows.shape[0])
     low, high = lows[row, axis], highs[row, axis]
     cut = np.where(
         np.isinf(low) & np.isinf(high), 0.0,
-        np.where(np.isinf(high), 2 * np.abs(low) + 1, np.where(np.isinf(low), -2 * np.abs(high) - 1, 0.5 * (low + high))),
+        np.where(
+            np.isinf(high), 2 * np.abs(low) + 1,
+            np.where(np.isinf(low), -2 * np.abs(high) - 1, 0.5 * (low + high)),
+        ),
     )  # fmt: skip
     left_high, right_low = highs.copy(), lows.copy()
     left_high[row, axis] = cut

@@ -12,6 +12,7 @@ from typing import Protocol
 
 import numpy as np
 
+from outspread.laws.functions.normal import normal_between
 from outspread.laws.law import Array, Law
 from outspread.numerics.sets import Sets
 
@@ -51,15 +52,16 @@ class ConditionalInner:
     spread: float
 
     def between(self, lower: Array, upper: Array, given: Array | None) -> Array:
-        from scipy.special import ndtr
-
         assert given is not None
-        a = (normal_score(self.law, lower) - given) / self.spread
-        b = (normal_score(self.law, upper) - given) / self.spread
-        # in the upper tail both ends are mirrored, so that the difference keeps its digits
-        mirror = a + b > 0
-        a, b = np.where(mirror, -b, a), np.where(mirror, -a, b)
-        return np.where(upper > lower, np.maximum(ndtr(b) - ndtr(a), 0.0), 0.0)
+        low, high = np.broadcast_arrays(np.asarray(lower, float), np.asarray(upper, float))
+        a = (normal_score(self.law, low) - given) / self.spread
+        b = (normal_score(self.law, high) - given) / self.spread
+        width = None
+        if getattr(self.law, "family", "") == "normal":
+            # the ends' own difference keeps the digits that their scores round away
+            with np.errstate(invalid="ignore"):
+                width = (high - low) / (float(self.law.parameters["sd"]) * self.spread)
+        return normal_between(a, b, width)
 
     def pdf(self, x: Array, given: Array | None) -> Array:
         assert given is not None
@@ -75,11 +77,10 @@ def normal_score(law: Law, x: Array) -> Array:
     """Phi^-1(F(x)), from the smaller tail."""
     from scipy.special import ndtri
 
-    if getattr(law, "family", "") == "normal":
-        parameters = law.parameters  # type: ignore[attr-defined]
-        return np.asarray((x - parameters["mean"]) / parameters["sd"])
+    if law.family == "normal":
+        return np.asarray((x - law.parameters["mean"]) / law.parameters["sd"], float)
     below, above = law.cdf(x), law.ccdf(x)
-    return np.where(below < above, ndtri(below), -ndtri(above))
+    return np.asarray(np.where(below < above, ndtri(below), -ndtri(above)), float)
 
 
 def probability(where: Sets, inner: Inner, given: Array | None = None) -> Array:

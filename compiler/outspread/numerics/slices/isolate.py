@@ -116,7 +116,8 @@ class Branches:
         keep = inside | holds_all
         return Sets(
             np.where(keep, lower, np.inf)[None], np.where(keep, upper, -np.inf)[None],
-            np.where(inside & (not from_start), rate, 0.0)[None], np.where(inside & from_start, rate, 0.0)[None],
+            np.where(inside & (not from_start), rate, 0.0)[None],
+            np.where(inside & from_start, rate, 0.0)[None],
         )  # fmt: skip
 
 
@@ -169,10 +170,13 @@ class Isolator:
                 return None
         return self._assembled(environment, count, *found)
 
-    def at(self, function: object, environment: Mapping[str, Array], x: Array, index: Index) -> Array:
+    def at(
+        self, function: Callable[..., Array], environment: Mapping[str, Array], x: Array, index: Index
+    ) -> Array:
+        """A compiled formula of `arguments` at x for the problems `index`."""
         values = [x if name == self.name else environment[name][index] for name in self.arguments]
         with np.errstate(all="ignore"):
-            return np.broadcast_to(np.asarray(function(*values), float), x.shape)  # type: ignore[operator]
+            return np.broadcast_to(np.asarray(function(*values), float), x.shape)
 
     def _solve(self, environment: Mapping[str, Array], count: int) -> Sets:
         return self._assembled(environment, count, *self.boundaries(environment, count))
@@ -213,7 +217,7 @@ class Isolator:
     def boundaries(
         self, environment: Mapping[str, Array], count: int
     ) -> tuple[Array, Index, npt.NDArray[np.bool_]]:
-        """All sign changes (and undecided spots): positions, problem, whether they move with the parameter."""
+        """All sign changes (and undecided spots): position, problem, whether it moves with the parameter."""
         first = np.zeros(count, np.int64)
         last = np.full(count, self.grid.size - 1)
         low, high, owner = self.grid[first], self.grid[last], np.arange(count)
@@ -226,7 +230,8 @@ class Isolator:
             span = enclose(self.difference, box)
             # an empty enclosure (NaN) lies outside the domain and holds no root
             possible = np.broadcast_to((span.lower <= 0) & (span.upper >= 0), low.shape)
-            bounded = np.broadcast_to(np.isfinite(span.lower) & np.isfinite(span.upper), low.shape)[possible]
+            bounded = np.isfinite(span.lower) & np.isfinite(span.upper)
+            bounded = np.broadcast_to(bounded, low.shape)[possible]
             low, high, owner = low[possible], high[possible], owner[possible]
             first, last = first[possible], last[possible]
             box = {key: Interval(value[owner], value[owner]) for key, value in environment.items()}

@@ -7,7 +7,7 @@ derivative under the integral sign. Discrete inputs are gone through value by va
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -113,7 +113,7 @@ class LineMeasure:
         with np.errstate(all="ignore"):
             density = self.inner.pdf(edge.x, None) * edge.rate
         weights = self.combos.weights[edge.problem % self.combos.count]
-        return np.bincount(edge.problem // self.combos.count, density * weights, y.size)
+        return np.asarray(np.bincount(edge.problem // self.combos.count, density * weights, y.size), float)
 
 
 class PlaneMeasure:
@@ -144,8 +144,8 @@ class PlaneMeasure:
         return self._solver(event, self.inner).exact
 
     def _breaks(self, name: str) -> tuple[float, ...]:
-        """Where the formula changes its nature in one input alone, whatever the other: kinks, poles, and zeros
-        of factors, where the other input loses its influence."""
+        """Where the formula changes its nature in one input alone, whatever the other: kinks, poles, and
+        zeros of factors, where the other input loses its influence."""
         axis = Axis(name, self.problem.laws[name])
         found: list[float] = []
         expression = self.problem.expression
@@ -274,8 +274,8 @@ class PlaneMeasure:
         where = self._solver(event, outer)(repeated, count * values.size)
         ends = np.concatenate([where.lower, where.upper])
         ends = np.where(np.isfinite(ends) & (ends > axis.start) & (ends < axis.end), ends, np.nan)
-        crossings = axis.to_t(ends).reshape(ends.shape[0], count, values.size)
-        crossings = np.moveaxis(crossings, 0, 1).reshape(count, -1)
+        cells = axis.to_t(ends).reshape(ends.shape[0], count, values.size)
+        crossings = np.moveaxis(cells, 0, 1).reshape(count, -1)
         fixed = np.broadcast_to(axis.fixed_points(), (count, axis.fixed_points().size))
         return panels_between(np.concatenate([fixed, crossings], axis=1))
 
@@ -286,7 +286,7 @@ def _environment(y: Array, combos: Combinations) -> dict[str, Array]:
     return environment
 
 
-def _compiled(node: Node):  # type: ignore[no-untyped-def]
+def _compiled(node: Node) -> Callable[[Mapping[str, Array], int], Array]:
     arguments = names(node)
     function = compile_numpy(node, arguments)
 
@@ -296,11 +296,12 @@ def _compiled(node: Node):  # type: ignore[no-untyped-def]
     return evaluate
 
 
-def _over_blocks(method, event: Node, y: Array, block: int) -> Estimates:  # type: ignore[no-untyped-def]
+def _over_blocks(
+    method: Callable[[Node, Array], Estimates], event: Node, y: Array, block: int
+) -> Estimates:
     """Apply a method to blocks of y, to bound the memory."""
     if y.size <= block:
-        result: Estimates = method(event, y)
-        return result
+        return method(event, y)
     parts = [method(event, y[start : start + block]) for start in range(0, y.size, block)]
     return Estimates(np.concatenate([p.value for p in parts]), np.concatenate([p.error for p in parts]))
 

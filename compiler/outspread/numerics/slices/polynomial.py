@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 
 import numpy as np
+import numpy.typing as npt
 
 from outspread.formula.calculus import derivative
 from outspread.formula.evaluate import fold
@@ -91,7 +92,7 @@ def _combine(
 def quadratic_program(
     left: Node, right: Node, operator: str, name: str, parameter: str, function: Callable[[Node], Function]
 ) -> Callable[[Environment, int], Sets] | None:
-    """Solves `left operator right` (right free of `name`), or None where it is not quadratic over quadratic."""
+    """Solves `left operator right` (right free of `name`); None where it is not quadratic over quadratic."""
     found = rational(subtract(left, right), name)
     if found is None:
         return None
@@ -157,14 +158,14 @@ def _sign_program(
     return solve
 
 
-def _roots(a: Array, b: Array, c: Array) -> tuple[Array, Array, Array]:
+def _roots(a: Array, b: Array, c: Array) -> tuple[Array, Array, npt.NDArray[np.bool_]]:
     """Ordered real roots of a x^2 + b x + c; for a = 0 the lower (or upper) one is infinite.
 
     The discriminant is formed with a fused error term (Kahan 2004), so that it keeps its digits where
     b^2 and 4ac nearly cancel.
     """
     discriminant = _difference_of_products(b, b, 4 * a, c)
-    real = discriminant >= 0
+    real: npt.NDArray[np.bool_] = discriminant >= 0
     root = np.sqrt(np.where(real, discriminant, 0.0))
     q = -0.5 * (b + np.where(b >= 0, root, -root))
     one, two = q / a, np.where(q == 0, 0.0, c / q)

@@ -5,7 +5,7 @@ It holds what every numeric route needs to know and computes no probability itse
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from itertools import product
 
@@ -99,7 +99,7 @@ def take_apart(
     return Problem(expression, laws, scores, continuous, discrete, constant, known)
 
 
-def _whole_numbers(laws: Mapping[str, Law]):  # type: ignore[no-untyped-def]
+def _whole_numbers(laws: Mapping[str, Law]) -> Callable[[Node], range | None]:
     def span(node: Node) -> range | None:
         box = {}
         for name in names(node):

@@ -32,10 +32,10 @@ def monotone(
     low: float = -np.inf,
     high: float = np.inf,
 ) -> Sets:
-    """Inverse image under a monotone operation with range [low, high]; `slope` is the inverse's derivative."""
+    """Inverse image under a monotone operation with range [low, high]; `slope`: the inverse's derivative."""
     if low > -np.inf or high < np.inf:
         target = sets.clip(target, low, high)
-    full = target.lower < target.upper
+    full = target.lower <= target.upper
     lower, upper = inverse(target.lower), inverse(target.upper)
     lower_rate = np.where(target.lower_rate == 0, 0.0, slope(target.lower) * target.lower_rate)
     upper_rate = np.where(target.upper_rate == 0, 0.0, slope(target.upper) * target.upper_rate)
@@ -56,8 +56,8 @@ def mirrored(target: Sets) -> Sets:
 
 def _constant(target: Sets, value: Array | float) -> npt.NDArray[np.bool_]:
     """Whether the value lies in the target, for each problem."""
-    inside: npt.NDArray[np.bool_] = ((target.lower <= value) & (value <= target.upper)).any(axis=0)
-    return inside
+    inside = (target.lower <= value) & (value <= target.upper)
+    return np.asarray(inside.any(axis=0), bool)
 
 
 def _or_all(condition: npt.NDArray[np.bool_], inside: npt.NDArray[np.bool_], otherwise: Sets) -> Sets:
@@ -191,7 +191,7 @@ def hypotenuse(target: Sets, other: Array) -> Sets:
     def leg(t: Array) -> Array:
         return np.sqrt(np.maximum(t - size, 0)) * np.sqrt(t + size)
 
-    full = (target.upper > size) & (target.lower < target.upper)
+    full = (target.upper >= size) & (target.lower <= target.upper)
     upper = leg(target.upper)
     lower = np.where(reached, 0.0, leg(target.lower))
     return mirrored(
@@ -255,7 +255,7 @@ def angle_of_rise(target: Sets, run: Array) -> Sets:
         )
 
     def slope(t: Array) -> Array:
-        return run / np.cos(t) ** 2
+        return np.asarray(run / np.cos(t) ** 2, float)
 
     front = sets.where(ahead, monotone(target, inverse, slope, True, -HALF_PI, HALF_PI))
     back_up = sets.where(run < 0, monotone(target, inverse, slope, False, HALF_PI, np.pi))
@@ -272,7 +272,7 @@ def angle_of_run(target: Sets, rise: Array) -> Sets:
         return np.where(straight, np.where(t == 0, np.inf, -np.inf), value)
 
     def slope(t: Array) -> Array:
-        return -rise / np.sin(t) ** 2
+        return np.asarray(-rise / np.sin(t) ** 2, float)
 
     up = sets.where(rise > 0, monotone(target, inverse, slope, False, 0.0, np.pi))
     down = sets.where(rise < 0, monotone(target, inverse, slope, True, -np.pi, 0.0))
@@ -291,7 +291,9 @@ MONOTONE: dict[str, tuple[Function, Function, bool, float, float]] = {
     "exp": (np.log, lambda t: 1 / t, True, 0.0, np.inf),
     "log": (np.exp, np.exp, True, -np.inf, np.inf),
     "log10": (lambda t: 10.0**t, lambda t: np.log(10) * 10.0**t, True, -np.inf, np.inf),
-    "decibel": (lambda t: 10.0 ** (t / 10), lambda t: np.log(10) / 10 * 10.0 ** (t / 10), True, -np.inf, np.inf),
+    "decibel": (
+        lambda t: 10.0 ** (t / 10), lambda t: np.log(10) / 10 * 10.0 ** (t / 10), True, -np.inf, np.inf
+    ),
     "from_decibel": (lambda t: 10 * np.log10(t), lambda t: 10 / (np.log(10) * t), True, 0.0, np.inf),
     "asin": (np.sin, np.cos, True, -HALF_PI, HALF_PI),
     "acos": (np.cos, lambda t: -np.sin(t), False, 0.0, np.pi),

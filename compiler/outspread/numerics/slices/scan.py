@@ -1,4 +1,4 @@
-"""The quick search for roots of many similar problems: a fine grid, and the turning points between its points.
+"""The quick search for roots of many similar problems: a fine grid, and turning points between its points.
 
 It finds every root where the formula has at most one turning point between neighbouring grid points; that
 this is so is checked by its caller, who solves a sample of the problems by interval subdivision.
@@ -28,7 +28,9 @@ class Problems(Protocol):
     value: Callable[..., Array]
     slope_value: Callable[..., Array]
 
-    def at(self, function: object, environment: Mapping[str, Array], x: Array, index: Index) -> Array: ...
+    def at(
+        self, function: Callable[..., Array], environment: Mapping[str, Array], x: Array, index: Index
+    ) -> Array: ...
 
 
 def scan(problems: Problems, environment: Mapping[str, Array], count: int) -> Found:

@@ -143,7 +143,7 @@ class Solver:
                     (below, target.upper[row], target.upper_rate[row]),
                     (above, target.lower[row], target.lower_rate[row]),
                 ):
-                    full = target.lower[row] < target.upper[row]
+                    full = target.lower[row] <= target.upper[row]
                     if full.any() and np.isfinite(end[full]).any():
                         part = program({**environment, BOUND: end}, target.count)
                         ends.append(_slowed(part, rate, np.isinf(end), full))
