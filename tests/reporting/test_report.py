@@ -11,11 +11,12 @@ from html.parser import HTMLParser
 from pathlib import Path
 
 import fixtures
+import numpy as np
 import pytest
 
 from outspread.findings.results import Absent, Figure
 from outspread.findings.writing import scale_of
-from outspread.reporting import curves
+from outspread.reporting import curves, plots
 from outspread.reporting.html import render_html
 from outspread.reporting.numbers import error_text, value_text
 from outspread.reporting.ticks import tick_labels
@@ -242,26 +243,65 @@ def test_limits_are_read_from_events_and_from_quantile_requirements(report):
 
 @pytest.mark.parametrize("name", KINDS)
 def test_curves_have_at_most_400_points_and_stay_finite(report, name):
-    import numpy as np
-
     for derived in report(name).outputs:
         law = derived.law
-        low, high = curves.window(law)
+        reach = curves.reach(law)
+        low, high = curves.window(reach)
         assert np.isfinite([low, high]).all()
         assert low < high
-        if law.continuous_mass:
-            curve = curves.density(law, low, high)
-            assert curve.x.size <= 400
-            assert np.isfinite(curve.y).all()
-            assert curve.top > 0
-        x, y = curves.distribution(law, low, high)
-        assert x.size <= 500
-        assert (np.diff(y) >= -1e-12).all()
+        both = curves.sample(law, low, high)
+        assert both.density.x.size <= 400
+        assert np.isfinite(both.density.y).all()
+        assert both.density.top > 0
+        assert both.x.size <= 500
+        assert (np.diff(both.cdf) >= -1e-12).all()
+        x, below, above = curves.tails(law, *curves.tail_window(reach))
+        assert x.size <= 400
+        assert np.nanmax(below) <= 1.0
+        assert np.nanmax(above) <= 1.0
+
+
+def test_the_range_of_a_figure_is_that_of_the_quantiles(report):
+    """Rough ranges come close to the exact quantiles, of the normal law for instance."""
+    law = report("clearance").outputs[0].law
+    reach = curves.reach(law)
+    for p in (5e-4, 1e-6, 1e-12):
+        for rough, exact in zip(reach.beyond(p), (float(law.icdf(p)), float(law.iccdf(p))), strict=True):
+            assert abs(rough - exact) < 0.2 * law.sigma
+    assert curves.tail_window(reach)[2] == 1e-12
+
+
+def test_drawing_asks_a_law_for_few_values(report):
+    """A derived law integrates for each value: a report must not cost more than the derivation."""
+    asked = []
+
+    class Counting(type(report("clearance").outputs[0].law)):
+        def pdf(self, x):
+            asked.append(np.size(x))
+            return super().pdf(x)
+
+        def cdf(self, x):
+            asked.append(np.size(x))
+            return super().cdf(x)
+
+        def ccdf(self, x):
+            asked.append(np.size(x))
+            return super().ccdf(x)
+
+        def icdf(self, p):
+            asked.append(20 * np.size(p))
+            return super().icdf(p)
+
+    data = report("clearance")
+    law = Counting(0.02, 0.0064)
+    plots.law_picture(plots.Subject(law, data.results.outputs[0], (), curves.reach(law)))
+    plots.tail_picture(plots.Subject(law, data.results.outputs[0], (), curves.reach(law)))
+    assert sum(asked) < 1100
 
 
 def test_an_unbounded_density_is_marked_where_it_is_unbounded(report):
     law = report("bearing_angle").outputs[0].law
-    curve = curves.density(law, *curves.window(law))
+    curve = curves.sample(law, *curves.window(curves.reach(law))).density
     assert curve.unbounded == (0.0, 1.0)
 
 

@@ -70,20 +70,53 @@ def _constant(node: Node) -> float | None:
     return None
 
 
-def quantiles(law: Law, p: float) -> tuple[float, float]:
-    """Lower and upper quantile with `p` outside on each side, infinite ends left out by a finite support."""
+@dataclass(frozen=True)
+class Reach:
+    """Where a law's probability lies, well enough for choosing a range: points outwards from the middle
+    with the probability beyond each (`left`: at most, `right`: above), and the 0.025 and 0.975 quantiles."""
+
+    inner: tuple[float, float]
+    left: tuple[Array, Array]
+    right: tuple[Array, Array]
+
+    def beyond(self, p: float) -> tuple[float, float]:
+        """Roughly the points with probability `p` outside on each side, the outermost known where less is."""
+        return _outwards(self.left, p), _outwards(self.right, p)
+
+    @property
+    def floor(self) -> float:
+        """The smallest probability that both sides reach."""
+        return float(max(self.left[1][-1], self.right[1][-1]))
+
+
+def _outwards(side: tuple[Array, Array], p: float) -> float:
+    x, beyond = side
+    with np.errstate(divide="ignore"):
+        heights = -np.log(np.maximum(beyond, 1e-300))
+    return float(np.interp(-math.log(p), heights, x))
+
+
+def reach(law: Law) -> Reach:
+    """The reach of a law from three quantiles and two dozen values: a derived law pays for each."""
     with np.errstate(all="ignore"):
-        return float(law.icdf(p)), float(law.iccdf(p))
+        low, middle, high = np.asarray(law.icdf(np.array([0.025, 0.5, 0.975])), float).tolist()
+        lower, upper = law.support()
+        steps = np.geomspace(0.25, 16.0, 13)
+        body = high - low if high > low else abs(middle) or 1.0
+        left = np.unique(np.maximum(low - body * (steps - 0.25), lower))[::-1]
+        right = np.unique(np.minimum(high + body * (steps - 0.25), upper))
+        below = np.minimum.accumulate(np.asarray(law.cdf(left), float))
+        above = np.minimum.accumulate(np.asarray(law.ccdf(right), float))
+    return Reach((low, high), (left, below), (right, above))
 
 
-def window(law: Law, marks: tuple[float, ...] = ()) -> tuple[float, float]:
+def window(law_reach: Reach, marks: tuple[float, ...] = ()) -> tuple[float, float]:
     """The range for density and distribution function: nearly all of the probability, with the marks
     near enough to show beside it; heavy tails are cut so that the body stays visible."""
-    inner = quantiles(law, 0.025)
-    body = inner[1] - inner[0]
-    low, high = inner
+    low, high = law_reach.inner
+    body = high - low
     for p in (5e-4, 2e-3, 5e-3, 1e-2):
-        low, high = quantiles(law, p)
+        low, high = law_reach.beyond(p)
         if body > 0 and high - low <= 4 * body:
             break
     span = (high - low) or abs(low) or 1.0
@@ -94,73 +127,88 @@ def window(law: Law, marks: tuple[float, ...] = ()) -> tuple[float, float]:
     return low - margin, high + margin
 
 
-def tail_window(law: Law) -> tuple[float, float, float]:
+def tail_window(law_reach: Reach) -> tuple[float, float, float]:
     """(low, high, depth): how far the plot of the tails goes, and the probability it reaches."""
-    inner = quantiles(law, 0.005)
-    body = inner[1] - inner[0]
-    depth = DEEPEST_TAIL
-    for depth in (DEEPEST_TAIL, 1e-9, 1e-7, 1e-6, 1e-5, 1e-4, 1e-3):
-        low, high = quantiles(law, depth)
-        if math.isfinite(low) and math.isfinite(high) and high - low <= max(12 * body, 1e-300):
-            return low, high, depth
-    return *quantiles(law, 1e-3), 1e-3
+    floor = law_reach.floor
+    depth = DEEPEST_TAIL if floor <= DEEPEST_TAIL else min(10.0 ** math.ceil(math.log10(floor)), 1e-2)
+    return *law_reach.beyond(depth), depth
 
 
-def density(law: Law, low: float, high: float) -> DensityCurve:
-    """The density on [low, high], denser where the probability is, both sides of every break."""
-    lower, upper = law.support()
+@dataclass(frozen=True)
+class Curves:
+    """The density and the distribution function of a law over one range."""
+
+    density: DensityCurve
+    x: Array
+    cdf: Array
+
+
+def sample(law: Law, low: float, high: float) -> Curves:
+    """Both curves at the same points: even ones, more where the probability is, both sides of breaks."""
     with np.errstate(all="ignore"):
-        inside = np.asarray(law.icdf(np.linspace(0.002, 0.998, 150)), float)
+        even = np.linspace(low, high, 101)
+        cdf = np.asarray(law.cdf(even), float)
+        inside = np.interp(np.linspace(0.004, 0.996, 100), np.maximum.accumulate(cdf), even)
+        lower, upper = law.support()
         edges = [point for point in (lower, *law.breaks(), upper) if low <= point <= high]
         nearest = (high - low) * 1e-9
         sides = [point + step for point in edges[:25] for step in (-nearest, nearest)]
-        x = np.unique(np.concatenate([np.linspace(low, high, 200), inside, sides]))
-        x = x[(x >= low) & (x <= high) & np.isfinite(x)][:MOST_POINTS]
-        y = np.asarray(law.pdf(x), float)
-        bulk = np.asarray(law.pdf(np.asarray(law.icdf(np.linspace(0.03, 0.97, 95)), float)), float)
-    bulk = bulk[np.isfinite(bulk)]
+        x = np.unique(np.concatenate([even, inside, sides]))
+        x = x[(x >= low) & (x <= high)][:MOST_POINTS]
+        pdf = np.asarray(law.pdf(x), float) if law.continuous_mass else np.zeros(x.size)
+        cdf = np.asarray(law.cdf(x), float)
+    return Curves(_density(law, x, pdf, cdf), *_with_jumps(law, x, cdf))
+
+
+def _density(law: Law, x: Array, pdf: Array, cdf: Array) -> DensityCurve:
+    """The density clipped to a height at which its bulk can be seen."""
+    finite = np.isfinite(pdf)
+    bulk = pdf[finite & (cdf >= 0.03) & (cdf <= 0.97)]
     usual = float(np.max(bulk)) if bulk.size else 1.0
-    finite = y[np.isfinite(y)]
-    highest = float(np.max(finite)) if finite.size else 1.0
-    singular = [end for end, is_so in zip((lower, upper), law.singular_ends(), strict=True) if is_so]
+    highest = float(np.max(pdf[finite])) if finite.any() else 1.0
+    ends = [end for end, is_so in zip(law.support(), law.singular_ends(), strict=True) if is_so]
     with np.errstate(all="ignore"):
-        singular += [point for point in law.breaks() if not math.isfinite(float(law.pdf(point)))]
-    shown = tuple(sorted(point for point in singular if low <= point <= high))
+        breaks = np.array(law.breaks()[:25], float)
+        poles = breaks[~np.isfinite(np.asarray(law.pdf(breaks), float))].tolist() if breaks.size else []
+    shown = tuple(sorted(point for point in (*ends, *poles) if x[0] <= point <= x[-1]))
     top = 1.12 * (min(highest, 1.6 * usual) if shown or highest > 8 * usual else highest)
-    return DensityCurve(x, np.where(np.isfinite(y), np.minimum(y, 1.5 * top), 1.5 * top), top or 1.0, shown)
+    return DensityCurve(x, np.where(finite, np.minimum(pdf, 1.5 * top), 1.5 * top), top or 1.0, shown)
 
 
-def distribution(law: Law, low: float, high: float) -> tuple[Array, Array]:
-    """Points of the distribution function, with both ends of every jump."""
+def _with_jumps(law: Law, x: Array, cdf: Array) -> tuple[Array, Array]:
+    """Points of the distribution function with both ends of every jump."""
+    atoms = law.atoms()
+    seen = np.flatnonzero((atoms.values >= x[0]) & (atoms.values <= x[-1]))[:90]
+    jumps = atoms.values[seen]
+    if not law.continuous_mass:
+        x, cdf = x[[0, -1]], cdf[[0, -1]]
     with np.errstate(all="ignore"):
-        atoms = law.atoms()
-        jumps = atoms.values[(atoms.values >= low) & (atoms.values <= high)][:90]
-        inside = np.asarray(law.icdf(np.linspace(0.005, 0.995, 100)), float)
-        x = np.unique(np.concatenate([np.linspace(low, high, 180), inside]))
-        x = x[(x > low) & (x < high)] if law.continuous_mass else np.zeros(0)
-        x = np.unique(np.concatenate([[low, high], x, jumps]))
-        y = np.asarray(law.cdf(x), float)
-        before = y[np.searchsorted(x, jumps)] - _masses(law, jumps)
-    both_x = np.concatenate([x, jumps])
-    both_y = np.concatenate([y, before])
+        after = np.asarray(law.cdf(jumps), float)
+    both_x = np.concatenate([x, jumps, jumps])
+    both_y = np.concatenate([cdf, after, after - atoms.masses[seen]])
     order = np.lexsort((both_y, both_x))
     return both_x[order], both_y[order]
 
 
-def _masses(law: Law, points: Array) -> Array:
-    atoms = law.atoms()
-    return atoms.masses[np.searchsorted(atoms.values, points)]
-
-
 def tails(law: Law, low: float, high: float, depth: float) -> tuple[Array, Array, Array]:
-    """x, cdf and ccdf for the logarithmic plot, nan where a tail is below `depth` or unity."""
-    margin = 0.02 * (high - low)
+    """x, cdf and ccdf for the logarithmic plot, nan where a tail is below `depth`.
+
+    Each is computed where it is the smaller one and taken from the other elsewhere: near 1 a curve on a
+    logarithmic scale shows no difference.
+    """
+    span = high - low
     with np.errstate(all="ignore"):
-        spread = np.geomspace(depth, 0.5, 90)
-        ends = [np.asarray(inverse(spread), float) for inverse in (law.icdf, law.iccdf)]
-        x = np.concatenate([np.linspace(low - margin, high + margin, 150), *ends])
-        x = np.unique(x[np.isfinite(x)])[:MOST_POINTS]
-        below, above = np.asarray(law.cdf(x), float), np.asarray(law.ccdf(x), float)
+        near = span * np.geomspace(1e-5, 0.02, 12)  # a tail may fall steeply at the end of its support
+        x = np.unique(
+            np.concatenate([np.linspace(low - 0.02 * span, high + 0.02 * span, 90), low + near, high - near])
+        )
+        if law.continuous_mass < 1.0:
+            atoms = law.atoms().values
+            x = np.unique(np.concatenate([x, atoms[(atoms >= x[0]) & (atoms <= x[-1])][:90]]))
+        below = np.asarray(law.cdf(x), float)
+        small = below <= 0.5
+        above = 1.0 - below
+        above[~small] = np.asarray(law.ccdf(x[~small]), float)
     floor = depth / 10
     return x, np.where(below > floor, below, np.nan), np.where(above > floor, above, np.nan)
 

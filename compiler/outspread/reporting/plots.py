@@ -17,7 +17,7 @@ import numpy as np
 from outspread.findings.results import Coverage, Evidence, Figure, OutputResults
 from outspread.laws.law import Array, Law
 from outspread.reporting import curves, ticks
-from outspread.reporting.curves import Limit
+from outspread.reporting.curves import Limit, Reach
 from outspread.reporting.numbers import brief, unit_text
 
 if TYPE_CHECKING:
@@ -60,6 +60,16 @@ class Picture:
     alt: str
 
 
+@dataclass(frozen=True)
+class Subject:
+    """An output to be drawn: its law, its findings, the values that requirements name, and its reach."""
+
+    law: Law
+    output: OutputResults
+    limits: tuple[Limit, ...]
+    reach: Reach
+
+
 @contextmanager
 def _figure(height: float) -> Iterator[tuple[Canvas, list[str]]]:
     """An empty figure in the report's style; its data URL is appended to the list when the block ends."""
@@ -82,9 +92,11 @@ def _axis_name(output: OutputResults) -> str:
     return f"{output.name} in {unit}" if unit not in ("", "1") else output.name
 
 
-def law_picture(law: Law, output: OutputResults, limits: tuple[Limit, ...]) -> Picture:
+def law_picture(subject: Subject) -> Picture:
     """Density (or probabilities) above, distribution function below, one horizontal axis."""
-    low, high = curves.window(law, tuple(limit.at for limit in limits))
+    law, output, limits = subject.law, subject.output, subject.limits
+    low, high = curves.window(subject.reach, tuple(limit.at for limit in limits))
+    both = curves.sample(law, low, high)
     discrete = law.continuous_mass == 0.0
     width = 0.76 if discrete or not output.atom_count else 0.73  # room for a second scale
     with _figure(3.55) as (figure, urls):
@@ -95,8 +107,8 @@ def law_picture(law: Law, output: OutputResults, limits: tuple[Limit, ...]) -> P
             if band is not None:
                 axes.axvspan(*band, color=BAND, lw=0, zorder=0)
             axes.set_xlim(low, high)
-        _draw_density(above, law, output, low, high)
-        _draw_distribution(below, law, output, low, high)
+        _draw_density(above, law, output, both.density)
+        _draw_distribution(below, law, output, both)
         for axes in (above, below):
             _mark_limits(axes, limits, low, high, named=axes is above)
         ticks.linear(below, "x", low, high, _axis_name(output), _whole(law))
@@ -122,10 +134,10 @@ def _central(coverage: tuple[Coverage, ...]) -> tuple[float, float] | None:
     return None
 
 
-def _draw_density(axes: Axes, law: Law, output: OutputResults, low: float, high: float) -> None:
+def _draw_density(axes: Axes, law: Law, output: OutputResults, curve: curves.DensityCurve) -> None:
     discrete = law.continuous_mass == 0.0
+    low, high = float(curve.x[0]), float(curve.x[-1])
     if not discrete:
-        curve = curves.density(law, low, high)
         axes.plot(curve.x, curve.y, color=INK, lw=1.4)
         unit = unit_text(output.unit)
         name = f"density in 1/{unit}" if unit not in ("", "1") else "density"
@@ -149,8 +161,9 @@ def _draw_density(axes: Axes, law: Law, output: OutputResults, low: float, high:
         beside.set_xlim(low, high)
 
 
-def _draw_distribution(axes: Axes, law: Law, output: OutputResults, low: float, high: float) -> None:
-    x, y = curves.distribution(law, low, high)
+def _draw_distribution(axes: Axes, law: Law, output: OutputResults, both: curves.Curves) -> None:
+    x, y = both.x, both.cdf
+    low, high = float(x[0]), float(x[-1])
     if law.continuous_mass == 0.0:
         axes.step(x, y, where="post", color=INK, lw=1.4)
     else:
@@ -198,9 +211,10 @@ def _mark_limits(axes: Axes, limits: tuple[Limit, ...], low: float, high: float,
         )
 
 
-def tail_picture(law: Law, output: OutputResults, limits: tuple[Limit, ...]) -> Picture | None:
+def tail_picture(subject: Subject) -> Picture | None:
     """Both tails on a logarithmic scale; None where the law is a single point."""
-    low, high, depth = curves.tail_window(law)
+    law, output, limits = subject.law, subject.output, subject.limits
+    low, high, depth = curves.tail_window(subject.reach)
     if not high > low:
         return None
     x, below, above = curves.tails(law, low, high, depth)
@@ -221,11 +235,12 @@ def tail_picture(law: Law, output: OutputResults, limits: tuple[Limit, ...]) -> 
     return Picture(urls[0], alt)
 
 
-def evidence_picture(evidence: Evidence, output: OutputResults, law: Law | None = None) -> Picture:
-    """The difference of the two derivations inside the band that a right answer stays in; with the law,
-    over the range of its figure, which always holds the largest difference."""
+def evidence_picture(evidence: Evidence, subject: Subject) -> Picture:
+    """The difference of the two derivations inside the band that a right answer stays in, over the range
+    of the law's own figure and the place of the largest difference."""
+    law, output = subject.law, subject.output
     x, y = curves.thinned(evidence.curve)
-    low, high = (float(np.min(x)), float(np.max(x))) if law is None else curves.window(law)
+    low, high = curves.window(subject.reach)
     worst = float(x[np.argmax(np.abs(y))])
     low, high = min(low, worst), max(high, worst)
     reach = max(evidence.allowed, evidence.largest_difference)
@@ -236,10 +251,10 @@ def evidence_picture(evidence: Evidence, output: OutputResults, law: Law | None 
         for side in (-bound, bound):
             axes.axhline(side, color=STONE, lw=1.0, ls=(0, (4, 2)))
         axes.axhline(0, color=STONE, lw=0.6)
-        step = "steps-post" if law is not None and law.continuous_mass == 0.0 else "default"
+        step = "steps-post" if law.continuous_mass == 0.0 else "default"
         axes.plot(x, y, color=INK, lw=1.0, drawstyle=step)
         if high > low:
-            ticks.linear(axes, "x", low, high, _axis_name(output), law is not None and _whole(law))
+            ticks.linear(axes, "x", low, high, _axis_name(output), _whole(law))
         if reach > 0:
             ticks.linear(axes, "y", -1.25 * reach, 1.25 * reach, "difference")
     verb = "stays inside" if evidence.agrees else "leaves"
@@ -248,12 +263,10 @@ def evidence_picture(evidence: Evidence, output: OutputResults, law: Law | None 
     return Picture(urls[0], f"{what}: it {verb} {band}.")
 
 
-def joint_picture(
-    pdf: Callable[[Array], Array], first: tuple[Law, OutputResults], second: tuple[Law, OutputResults]
-) -> Picture:
+def joint_picture(pdf: Callable[[Array], Array], first: Subject, second: Subject) -> Picture:
     """Contours of a joint density of two outputs at stated fractions of its greatest value on the grid."""
-    ranges = [curves.window(law) for law, _ in (first, second)]
-    columns, rows = (np.linspace(low, high, 70) for low, high in ranges)
+    ranges = [curves.window(subject.reach) for subject in (first, second)]
+    columns, rows = (np.linspace(low, high, 60) for low, high in ranges)
     mesh = np.meshgrid(columns, rows)
     with np.errstate(all="ignore"):
         heights = np.asarray(pdf(np.stack([mesh[0].ravel(), mesh[1].ravel()])), float).reshape(mesh[0].shape)
@@ -263,9 +276,9 @@ def joint_picture(
         axes = figure.add_axes((0.155, 0.125, 0.68, 0.82))
         if greatest > 0:
             _contours(axes, columns, rows, heights / greatest)
-        ticks.linear(axes, "x", *ranges[0], _axis_name(first[1]), _whole(first[0]))
-        ticks.linear(axes, "y", *ranges[1], _axis_name(second[1]), _whole(second[0]))
-    alt = f"Contours of the joint density of {_axis_name(first[1])} and {_axis_name(second[1])}."
+        ticks.linear(axes, "x", *ranges[0], _axis_name(first.output), _whole(first.law))
+        ticks.linear(axes, "y", *ranges[1], _axis_name(second.output), _whole(second.law))
+    alt = f"Contours of the joint density of {_axis_name(first.output)} and {_axis_name(second.output)}."
     return Picture(urls[0], alt)
 
 

@@ -35,6 +35,7 @@ _LIBRARIES = ("numpy", "scipy", "sympy")
 def view(report: ReportData) -> dict[str, Any]:
     """The template's variables; formulas are numbered in the order of the page."""
     numbering = Numbering()
+    subjects = _subjects(report)
     return {
         "title": report.model.title or report.results.title,
         "purpose": report.model.purpose,
@@ -46,9 +47,9 @@ def view(report: ReportData) -> dict[str, Any]:
         "joint_plan": [_plan(step) for step in report.plan.joint],
         "joint_derivations": [_joint_derivation(report, joint, numbering) for joint in report.joint],
         "derivations": [_derivation(report, output, numbering) for output in report.outputs],
-        "results": [_output(report, output) for output in report.results.outputs],
-        "joint": _joint(report),
-        "evidence": _evidence(report),
+        "results": [_output(report, output, subjects.get(output.name)) for output in report.results.outputs],
+        "joint": _joint(report, subjects),
+        "evidence": _evidence(report, subjects),
         "drivers": _drivers(report),
         "assumptions": [
             {"id": item.id, "text": coded(item.text), "made_by": item.made_by, "about": item.about}
@@ -58,6 +59,21 @@ def view(report: ReportData) -> dict[str, Any]:
         "safety": report.model.safety,
         "reproduce": _reproduce(report),
         "files": _files(report),
+    }
+
+
+def _subjects(report: ReportData) -> dict[str, plots.Subject]:
+    """What is drawn of each output whose law is at hand."""
+    laws = {derived.output: derived.law for derived in report.outputs}
+    return {
+        output.name: plots.Subject(
+            laws[output.name],
+            output,
+            curves.limits(report.model, output.name),
+            curves.reach(laws[output.name]),
+        )
+        for output in report.results.outputs
+        if output.name in laws
     }
 
 
@@ -179,9 +195,7 @@ def _joint_derivation(report: ReportData, joint: JointLaw, numbering: Numbering)
     }
 
 
-def _output(report: ReportData, output: OutputResults) -> dict[str, Any]:
-    derived = next((derived for derived in report.outputs if derived.output == output.name), None)
-    limits = curves.limits(report.model, output.name)
+def _output(report: ReportData, output: OutputResults, subject: plots.Subject | None) -> dict[str, Any]:
     atoms, more = tables.atoms(output)
     stated = _stated(report, output.name)
     return {
@@ -197,35 +211,25 @@ def _output(report: ReportData, output: OutputResults) -> dict[str, Any]:
             (grouped(exact(row.at)), tables.cell(row.pdf), tables.cell(row.cdf), tables.cell(row.ccdf))
             for row in output.values
         ],
-        "discrete": derived is not None and derived.law.continuous_mass == 0.0,
+        "discrete": subject is not None and subject.law.continuous_mass == 0.0,
         "probabilities": [(text, tables.cell(finding)) for text, finding in output.probabilities],
         "atoms": atoms,
         "more_atoms": more,
         "largest_error": grouped(rounded(output.largest_error, 1, upwards=True)),
-        "limits": [(exact(limit.at), limit.requirement) for limit in limits],
-        "pictures": _pictures(derived, output, limits),
+        "limits": [(exact(limit.at), limit.requirement) for limit in (subject.limits if subject else ())],
+        "pictures": {
+            "law": plots.law_picture(subject) if subject else None,
+            "tails": plots.tail_picture(subject) if subject else None,
+        },
     }
 
 
-def _pictures(
-    derived: DerivedOutput | None, output: OutputResults, limits: tuple[curves.Limit, ...]
-) -> dict[str, plots.Picture | None]:
-    if derived is None:
-        return {"law": None, "tails": None}
-    return {
-        "law": plots.law_picture(derived.law, output, limits),
-        "tails": plots.tail_picture(derived.law, output, limits),
-    }
-
-
-def _joint(report: ReportData) -> dict[str, Any]:
+def _joint(report: ReportData, subjects: Mapping[str, plots.Subject]) -> dict[str, Any]:
     joint = report.results.joint
-    laws = {derived.output: derived.law for derived in report.outputs}
-    found = {output.name: output for output in report.results.outputs}
     pictures = [
-        (law.outputs, plots.joint_picture(law.pdf, *((laws[name], found[name]) for name in law.outputs)))
+        (law.outputs, plots.joint_picture(law.pdf, *(subjects[name] for name in law.outputs)))
         for law in report.joint
-        if len(law.outputs) == 2 and all(name in laws and name in found for name in law.outputs)
+        if len(law.outputs) == 2 and all(name in subjects for name in law.outputs)
     ]
     return {
         "correlation": [
@@ -237,16 +241,14 @@ def _joint(report: ReportData) -> dict[str, Any]:
     }
 
 
-def _evidence(report: ReportData) -> dict[str, Any]:
-    found = {output.name: output for output in report.results.outputs}
-    laws = {derived.output: derived.law for derived in report.outputs}
+def _evidence(report: ReportData, subjects: Mapping[str, plots.Subject]) -> dict[str, Any]:
     return {
         "rows": [_evidence_row(evidence) for evidence in report.results.evidence],
         "agrees": all(evidence.agrees for evidence in report.results.evidence),
         "pictures": [
-            (evidence, plots.evidence_picture(evidence, found[evidence.output], laws.get(evidence.output)))
+            (evidence, plots.evidence_picture(evidence, subjects[evidence.output]))
             for evidence in report.results.evidence
-            if len(evidence.curve) >= FEWEST_POINTS and evidence.output in found
+            if len(evidence.curve) >= FEWEST_POINTS and evidence.output in subjects
         ],
     }
 
