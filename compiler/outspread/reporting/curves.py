@@ -198,7 +198,7 @@ def tails(law: Law, low: float, high: float, depth: float) -> tuple[Array, Array
     """
     span = high - low
     with np.errstate(all="ignore"):
-        near = span * np.geomspace(1e-5, 0.02, 12)  # a tail may fall steeply at the end of its support
+        near = span * np.geomspace(1e-8, 0.02, 16)  # a tail may fall steeply at the end of its support
         x = np.unique(
             np.concatenate([np.linspace(low - 0.02 * span, high + 0.02 * span, 90), low + near, high - near])
         )
@@ -211,6 +211,12 @@ def tails(law: Law, low: float, high: float, depth: float) -> tuple[Array, Array
         above[~small] = np.asarray(law.ccdf(x[~small]), float)
     floor = depth / 10
     return x, np.where(below > floor, below, np.nan), np.where(above > floor, above, np.nan)
+
+
+def drawn_depth(depth: float, *curves: Array) -> float:
+    """The power of ten down to which the curves go, where none of them reaches `depth`."""
+    least = min((float(np.nanmin(curve)) for curve in curves if np.isfinite(curve).any()), default=depth)
+    return max(depth, 10.0 ** math.floor(math.log10(least)))
 
 
 def thinned(points: tuple[tuple[float, float], ...], most: int = MOST_POINTS) -> tuple[Array, Array]:

@@ -218,6 +218,7 @@ def tail_picture(subject: Subject) -> Picture | None:
     if not high > low:
         return None
     x, below, above = curves.tails(law, low, high, depth)
+    depth = min(curves.drawn_depth(depth, below, above), 0.1)
     step = "steps-post" if law.continuous_mass == 0.0 else "default"
     margin = 0.04 * (high - low)
     with _figure(2.7) as (figure, urls):
