@@ -127,6 +127,9 @@ def slashed(row: Row) -> Row:
             parts += [Fence("(", below, ")")] if len(below.parts) > 1 else below.parts
         elif isinstance(part, Fence):
             parts.append(Fence(part.left, slashed(part.body), part.right))
+        elif isinstance(part, Scripts):
+            base = slashed(Row((part.base,))).parts
+            parts.append(Scripts(base[0] if len(base) == 1 else Row(base), part.below, part.above))
         else:
             parts.append(part)
     return Row(tuple(parts))

@@ -124,7 +124,7 @@ def _write(value: Decimal, place: int) -> str:
     if value == 0:
         return "0"
     leading = value.adjusted()
-    if -5 <= leading <= 8 and place <= 0:
+    if -4 <= leading <= 8 and place <= 0:
         return f"{sign}{value:.{-place}f}"
     digits = max(leading - place, 0)
     mantissa = value.scaleb(-leading, context=_EXACT)

@@ -14,11 +14,12 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from outspread.findings.results import Coverage, Evidence, Figure, OutputResults
+from outspread.findings.results import Evidence, Figure, OutputResults
 from outspread.laws.law import Array, Law
 from outspread.reporting import curves, ticks
 from outspread.reporting.curves import Limit, Reach
 from outspread.reporting.numbers import brief, unit_text
+from outspread.reporting.tables import central
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -102,10 +103,10 @@ def law_picture(subject: Subject) -> Picture:
     with _figure(3.55) as (figure, urls):
         above = figure.add_axes((0.13, 0.55, width, 0.37))
         below = figure.add_axes((0.13, 0.125, width, 0.37), sharex=above)
-        band = _central(output.coverage)
+        band = central(output.coverage)
         for axes in (above, below):
             if band is not None:
-                axes.axvspan(*band, color=BAND, lw=0, zorder=0)
+                axes.axvspan(band[1].value, band[2].value, color=BAND, lw=0, zorder=0)
             axes.set_xlim(low, high)
         _draw_density(above, law, output, both.density)
         _draw_distribution(below, law, output, both)
@@ -123,15 +124,6 @@ def _whole(law: Law) -> bool:
     """Whether the law lives on whole numbers: then ticks between them would mean nothing."""
     values = law.atoms().values
     return law.continuous_mass == 0.0 and bool(np.all(values == np.round(values)))
-
-
-def _central(coverage: tuple[Coverage, ...]) -> tuple[float, float] | None:
-    """The symmetric interval of least coverage, shaded in the figure."""
-    for interval in coverage:
-        ends = interval.lower, interval.upper
-        if interval.kind == "symmetric" and isinstance(ends[0], Figure) and isinstance(ends[1], Figure):
-            return ends[0].value, ends[1].value
-    return None
 
 
 def _draw_density(axes: Axes, law: Law, output: OutputResults, curve: curves.DensityCurve) -> None:

@@ -93,6 +93,18 @@ def intervals(coverage: tuple[Coverage, ...], scale: float) -> list[Span]:
     return rows
 
 
+def central(coverage: tuple[Coverage, ...]) -> tuple[float, Figure, Figure] | None:
+    """Probability and ends of the symmetric interval that stands for the whole: 0.95 or the nearest to it."""
+    found = [
+        (interval.probability, interval.lower, interval.upper)
+        for interval in coverage
+        if interval.kind == "symmetric"
+        and isinstance(interval.lower, Figure)
+        and isinstance(interval.upper, Figure)
+    ]
+    return min(found, key=lambda row: abs(row[0] - 0.95), default=None)
+
+
 @dataclass(frozen=True)
 class AtomRow:
     at: Markup

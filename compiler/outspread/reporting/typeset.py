@@ -97,8 +97,8 @@ def display(latex: str, number: str = "") -> Markup:
     try:
         stacked = [line for row in read(latex) for line in _fitted(row)]
         body = Markup("").join(
-            Markup('<div class="line{}">{}</div>').format(" more" if index else "", _line(row, scale))
-            for index, (row, scale) in enumerate(stacked)
+            Markup('<div class="line{}">{}</div>').format(" more" if hangs else "", _line(row, scale))
+            for row, scale, hangs in stacked
         )
     except LatexError:
         body = Markup('<code class="math">{}</code>').format(latex)
@@ -114,16 +114,17 @@ def _line(row: Row, scale: float) -> Markup:
     return _image(row, scale)
 
 
-def _fitted(row: Row) -> list[tuple[Row, float]]:
-    """Lines with the scale at which they fit: a little smaller first, then broken."""
+def _fitted(row: Row) -> list[tuple[Row, float, bool]]:
+    """Lines with the scale at which they fit, and whether they continue the line before: a little smaller
+    first, then broken."""
     width = _width(row)
     if width <= COLUMN / SMALLEST_SCALE:
-        return [(row, min(1.0, COLUMN / width) if width else 1.0)]
+        return [(row, min(1.0, COLUMN / width) if width else 1.0, False)]
     broken = lines(row, COLUMN, HANGING, _width)
     fitted = []
     for index, line in enumerate(broken):
         room = COLUMN - (HANGING if index else 0.0)
-        fitted.append((line, min(1.0, room / max(draw(line).width, 1e-9))))
+        fitted.append((line, min(1.0, room / max(draw(line).width, 1e-9)), index > 0))
     return fitted
 
 

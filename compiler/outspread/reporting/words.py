@@ -14,6 +14,7 @@ from outspread.formula.tree import Node
 from outspread.laws.registry import FAMILIES
 from outspread.reading.model import Dependence, Distribution, Model
 from outspread.reporting.numbers import brief, exact, unit_suffix
+from outspread.reporting.tables import central
 
 ROUTES = {
     "closed_form": "known closed form",
@@ -85,19 +86,18 @@ def _share(number: int, total: int) -> str:
 
 
 def _range_sentence(output: OutputResults) -> str:
-    """The central interval of least coverage in words."""
+    """The interval that stands for the whole, in words."""
     unit = unit_suffix(output.unit)
-    for interval in output.coverage:
-        lower, upper = interval.lower, interval.upper
-        if interval.kind != "symmetric" or not isinstance(lower, Figure) or not isinstance(upper, Figure):
-            continue
-        middle = output.median
-        median = ""
-        if isinstance(middle, Figure):
-            median = f"; its median is {brief(middle.value, middle.error)}{unit}"
-        ends = f"{brief(lower.value, lower.error)} and {brief(upper.value, upper.error)}{unit}"
-        return f"With probability {interval.probability:g}, {output.name} lies between {ends}{median}."
-    return ""
+    interval = central(output.coverage)
+    if interval is None:
+        return ""
+    probability, lower, upper = interval
+    middle = output.median
+    median = ""
+    if isinstance(middle, Figure):
+        median = f"; its median is {brief(middle.value, middle.error)}{unit}"
+    ends = f"{brief(lower.value, lower.error)} and {brief(upper.value, upper.error)}{unit}"
+    return f"With probability {exact(probability)}, {output.name} lies between {ends}{median}."
 
 
 def verdict_reason(verdict: Verdict) -> str:
