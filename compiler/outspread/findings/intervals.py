@@ -11,7 +11,7 @@ from fractions import Fraction
 
 import numpy as np
 
-from outspread.evidence.stating import stated
+from outspread.evidence.stating import stated, stated_quantile
 from outspread.findings.figures import quantiles
 from outspread.findings.polishing import polish
 from outspread.findings.quantiles import Quantiles, quantiles_for
@@ -21,6 +21,8 @@ from outspread.laws.law import Array, Law
 #: relative difference of two lengths below which they are not told apart
 INDISTINCT = 1e-9
 CELLS_AT_MOST = 300
+#: relative doubt about lengths above which the law is taken as sampled
+BLURRED = 1e-7
 
 
 def symmetric_ends(probability: float) -> tuple[tuple[float, bool], tuple[float, bool]]:
@@ -96,6 +98,8 @@ def _shortest_general(law: Law, probability: float) -> Ends:
     for basin in basins:
         a = float(candidates[basin[int(np.argmin(length[basin]))]])
         if _flat(law, ends, candidates[basin], best):
+            if ends.doubt > BLURRED and len(basins) == 1:
+                return _blurred(ends, a, candidates[basin])
             return _absent(
                 "it is not unique: the density is constant there, so many intervals are equally short"
             )
@@ -180,6 +184,18 @@ def _flat(law: Law, ends: Quantiles, near: Array, best: float) -> bool:
     rows = [stated(law, "pdf", end) for end in (ends.lower(inside), ends.upper(inside))]
     away = np.abs(rows[0].value - rows[1].value)
     return bool(np.all(away <= 2 * (rows[0].error + rows[1].error)))
+
+
+def _blurred(ends: Quantiles, a: float, near: Array) -> Ends:
+    """The best interval found, with errors that reach to every other one that may be the shortest: what a
+    law known by sampling allows to say."""
+    reach = np.linspace(near[0], near[-1], 33)
+    found = []
+    for side in (ends.lower, ends.upper):
+        middle = float(side(np.array([a]))[0])
+        own = stated_quantile(ends.law, a if side == ends.lower else a + ends.probability)
+        found.append(Figure(middle, float(np.max(np.abs(side(reach) - middle))) + float(own.error)))
+    return found[0], found[1]
 
 
 def interval(law: Law, probability: float, kind: str) -> Coverage:

@@ -329,7 +329,7 @@ class DerivedLaw(Law):
 
     def tails(self) -> tuple[Tail, Tail]:
         """How the lower and the upper tail fall off, from the local exponent y f(y) / P(beyond y) at
-        probabilities down to 1e-240; a power tail shows a constant exponent (Embrechts, Klüppelberg and
+        probabilities down to 1e-128; a power tail shows a constant exponent (Embrechts, Klüppelberg and
         Mikosch 1997, Modelling Extremal Events, section 3.3: regular variation and moments)."""
         if self._given_tails is None:
             self._given_tails = (self._tail(-1), self._tail(1))
@@ -339,13 +339,15 @@ class DerivedLaw(Law):
         end = self._support[0 if side < 0 else 1]
         if np.isfinite(end) or self._continuous_mass == 0:
             return Tail(np.inf, True)
-        levels = np.array([1e-30, 1e-60, 1e-120, 1e-240])
+        levels = np.array([1e-16, 1e-32, 1e-64, 1e-128])
         levels = levels[levels > self.tail_probability]
         y = self.rough_quantile(levels, upper=side > 0)
         centre = float(self.icdf(0.5))
         beyond = self.ccdf(y) if side > 0 else self.cdf(y)
         with np.errstate(all="ignore"):
-            exponent = np.abs(y - centre) * self.pdf(y) / beyond
+            density = self.pdf(y)
+            # a density that underflows says nothing
+            exponent = np.where(density > 1e-300, np.abs(y - centre) * density / beyond, np.nan)
         exponent = exponent[np.isfinite(exponent)]
         if exponent.size < 3:
             return Tail(np.inf, False)

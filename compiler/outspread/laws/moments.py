@@ -67,13 +67,24 @@ def _points(law: DerivedLaw, centre: float, side: int) -> Array:
     total = float(law.ccdf(centre)) if side > 0 else float(law.cdf(centre))
     levels = levels[levels < total]
     inside = law.rough_quantile(levels, upper=side > 0)
-    own = law.nodes if np.isfinite(end) else law.atoms().values
-    marks = np.concatenate([inside, own[:2000], law.breaks()])
+    inside = inside[: _enough(side * (inside - centre), levels)]
+    marks = np.concatenate([inside, law.atoms().values[:2000], law.breaks()])
     distance = side * (marks - centre)
     distance = distance[(distance > 0) & np.isfinite(distance)]
     if np.isfinite(end):
         distance = np.append(distance[distance < side * (end - centre)], side * (end - centre))
     return np.unique(np.concatenate([[0.0], distance[distance >= 0]]))
+
+
+def _enough(distance: Array, levels: Array) -> int:
+    """How many of the levels matter: up to two beyond that where p d^4 has become negligible."""
+    with np.errstate(all="ignore"):
+        weight = levels * distance**4
+    largest = np.maximum.accumulate(np.where(np.isfinite(weight), weight, 0.0))
+    small = np.flatnonzero(weight < 1e-16 * largest)
+    # the tail must keep falling from there on, which a heavy one does not
+    falling = [i for i in small.tolist() if bool(np.all(weight[i:] <= 1e-16 * largest[i]))]
+    return falling[0] + 2 if falling else levels.size
 
 
 def _beyond(law: DerivedLaw, centre: float, side: int, last: float, orders: Array) -> Array:

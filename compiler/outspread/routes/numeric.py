@@ -96,13 +96,17 @@ def _tightened(spread: Extent, evaluate: Evaluate, atoms: Atoms) -> Extent:
         (spread.lower, spread.lower_error, "cdf", 1.0), (spread.upper, spread.upper_error, "ccdf", -1.0)
     ):  # fmt: skip
         empty, full = 0.0, doubt
-        if np.isfinite(end) and doubt > 1e-9 * abs(end) + 1e-300:
+        if np.isfinite(end) and doubt > 1e-6 * (abs(end) + doubt):
             limit = atoms.values[0 if side > 0 else -1] if atoms.values.size else end + side * doubt
             full = min(doubt, side * (float(limit) - end))
-            for _ in range(48):
-                middle = 0.5 * (empty + full)
-                beyond = float(evaluate(kind, np.array([end + side * middle])).value[0])
-                empty, full = (middle, full) if beyond == 0 else (empty, middle)
+            for _ in range(5):
+                steps = np.linspace(empty, full, 34)[1:-1]
+                reached = evaluate(kind, end + side * steps).value > 0
+                first = int(np.argmax(reached)) if reached.any() else steps.size
+                empty, full = (
+                    float(steps[first - 1]) if first else empty,
+                    float(steps[first]) if first < steps.size else full,
+                )
         ends.append((end + side * empty, full - empty))
     return Extent(ends[0][0], ends[1][0], ends[0][1], ends[1][1])
 

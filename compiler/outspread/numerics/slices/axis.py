@@ -25,6 +25,7 @@ class Axis:
     def __init__(self, name: str, law: Law, breaks: tuple[float, ...] = ()):
         self.name, self.law = name, law
         self.mass = law.continuous_mass
+        self.breaks = breaks
         low, high = law.support()
         self.support = (low, high)
         tails = np.array(_TAILS)
@@ -52,7 +53,7 @@ class Axis:
         tails = np.array(_COARSE_TAILS)
         with np.errstate(all="ignore"):
             points = np.concatenate([self.law.icdf(tails), self.law.iccdf(tails), self.law.icdf([0.5])])
-        points = np.concatenate([points, [self.start, self.end], self.law.breaks()])
+        points = np.concatenate([points, [self.start, self.end, 0.0], self.law.breaks(), self.breaks])
         points = points[np.isfinite(points) & (points >= self.start) & (points <= self.end)]
         return np.unique(points)
 

@@ -30,9 +30,53 @@ def extent(expression: Node, laws: Mapping[str, Law], used: Sequence[str]) -> Ex
     """The range of the formula over the supports of the inputs it uses."""
     supports = [laws[name].support() for name in used]
     grids = [_grid(laws[name]) for name in used]
-    upper, upper_error = _greatest(expression, used, supports, grids, 1.0)
-    lower, lower_error = _greatest(expression, used, supports, grids, -1.0)
+    bounds = []
+    for sign in (1.0, -1.0):
+        bound, doubt = _greatest(expression, used, supports, grids, sign)
+        if np.isinf(bound) and used:
+            # enclosures over infinite boxes can be needlessly wide; all but 1e-300 of each input is finite
+            finite = [_finite(laws[name], grid) for name, grid in zip(used, grids, strict=True)]
+            limits = [(float(grid[0]), float(grid[-1])) for grid in finite]
+            near, gap = _greatest(expression, used, limits, finite, sign)
+            if _inside(expression, used, limits, finite, sign, near - gap):
+                bound, doubt = near, gap
+        bounds.append((bound, doubt))
+    (upper, upper_error), (lower, lower_error) = bounds
     return Extent(-lower, upper, lower_error, upper_error)
+
+
+def _finite(law: Law, grid: Array) -> Array:
+    with np.errstate(all="ignore"):
+        low = grid[0] if np.isfinite(grid[0]) else float(law.icdf(1e-300))
+        high = grid[-1] if np.isfinite(grid[-1]) else float(law.iccdf(1e-300))
+    return np.unique(np.concatenate([[low, high], grid[np.isfinite(grid)]]))
+
+
+def _inside(
+    expression: Node,
+    used: Sequence[str],
+    limits: Sequence[tuple[float, float]],
+    grids: Sequence[Array],
+    sign: float,
+    best: float,
+) -> bool:
+    """Whether the greatest value lies inside the finite box, not on a face that stands for infinity: the
+    formula must stay clearly below it on every such face."""
+    evaluate = compile_numpy(expression, used)
+    generator = np.random.Generator(np.random.PCG64(1))
+    scale = abs(best) + 1e-300
+    for i in range(len(used)):
+        for face in limits[i]:
+            points = [low + (high - low) * generator.random(4_000) for low, high in limits]
+            points[i] = np.full(4_000, face)
+            near = [grid[generator.integers(0, grid.size, 4_000)] for grid in grids]
+            near[i] = points[i]
+            for columns in (points, near):
+                with np.errstate(all="ignore"):
+                    value = sign * np.broadcast_to(np.asarray(evaluate(*columns), float), (4_000,))
+                if bool(np.any(value > best - 1e-6 * scale)):
+                    return False
+    return True
 
 
 def _grid(law: Law) -> Array:

@@ -21,6 +21,7 @@ from outspread.numerics.quadrature import integrate, panels_between
 from outspread.numerics.sets import Sets
 from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
+from outspread.numerics.slices.folds import critical_points, structure_cuts
 from outspread.numerics.slices.inner import (
     ConditionalInner,
     IndependentInner,
@@ -127,7 +128,7 @@ class PlaneMeasure:
         laws = problem.laws
         correlation = 0.0 if problem.scores is None else problem.scores.between(outer, inner)
         self.correlation = correlation
-        self.axes = {name: Axis(name, laws[name], self._breaks(name)) for name in (outer, inner)}
+        self.axes = self._graded(outer, inner)
         self.outer, self.inner = outer, inner
         self.laws: dict[str, Inner] = {}
         for name in (outer, inner):
@@ -142,6 +143,19 @@ class PlaneMeasure:
 
     def exact(self, event: Node) -> bool:
         return self._solver(event, self.inner).exact
+
+    def _graded(self, outer: str, inner: str) -> dict[str, Axis]:
+        """The two axes, with points where the formula changes its nature or turns."""
+        laws = self.problem.laws
+        breaks = {name: self._breaks(name) for name in (outer, inner)}
+        grids = (Axis(outer, laws[outer], breaks[outer]).grid, Axis(inner, laws[inner], breaks[inner]).grid)
+        picks = np.unique(np.linspace(0, self.combos.count - 1, 3).astype(int))
+        for pick in picks.tolist():
+            others = {name: value[pick] for name, value in self.combos.values.items()}
+            turns = critical_points(self.problem.expression, (outer, inner), grids, others)
+            for name, found in zip((outer, inner), turns, strict=True):
+                breaks[name] = (*breaks[name], *found.tolist())
+        return {name: Axis(name, laws[name], breaks[name]) for name in (outer, inner)}
 
     def _breaks(self, name: str) -> tuple[float, ...]:
         """Where the formula changes its nature in one input alone, whatever the other: kinks, poles, and
@@ -277,7 +291,15 @@ class PlaneMeasure:
         cells = axis.to_t(ends).reshape(ends.shape[0], count, values.size)
         crossings = np.moveaxis(cells, 0, 1).reshape(count, -1)
         fixed = np.broadcast_to(axis.fixed_points(), (count, axis.fixed_points().size))
-        return panels_between(np.concatenate([fixed, crossings], axis=1))
+        panels = panels_between(np.concatenate([fixed, crossings], axis=1))
+        solver = self._solver(event, inner)
+
+        def slices(t: Array, who: Index) -> Sets:
+            local = {key: value[who] for key, value in environment.items()}
+            local[outer] = axis.to_x(t)
+            return solver(local, t.size)
+
+        return structure_cuts(slices, self.axes[inner].start, self.axes[inner].end, panels)
 
 
 def _environment(y: Array, combos: Combinations) -> dict[str, Array]:
