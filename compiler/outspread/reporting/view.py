@@ -205,7 +205,9 @@ def _output(report: ReportData, output: OutputResults, subject: plots.Subject | 
         "unit": tables.unit(output.unit),
         "density_unit": f"1/{tables.unit(output.unit)}" if tables.unit(output.unit) else "",
         "figures": tables.figures(output),
-        "quantiles": [(exact(p), tables.cell(finding, scale_of(output))) for p, finding in output.quantiles],
+        "quantiles": [
+            (grouped(exact(p)), tables.cell(finding, scale_of(output))) for p, finding in output.quantiles
+        ],
         "intervals": tables.intervals(output.coverage, scale_of(output)),
         "at_points": [
             (grouped(exact(row.at)), tables.cell(row.pdf), tables.cell(row.cdf), tables.cell(row.ccdf))
