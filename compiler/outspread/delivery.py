@@ -13,15 +13,13 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from outspread.errors import DerivationError, OutspreadError
+from outspread.errors import DerivationError, OutspreadError, ReportError
 
 if TYPE_CHECKING:
     from outspread.derivation import Derivation
     from outspread.findings.results import Finding, OutputResults, Results
 
 MISSING_LIBRARY = 5
-_INSTALL = "apt-get install -y --no-install-recommends libpangoft2-1.0-0 libharfbuzz-subset0"
-
 
 @dataclass(frozen=True)
 class Order:
@@ -122,11 +120,8 @@ def _write(order: Order, derivation: Derivation, progress: Callable[[str], None]
         if "pdf" in paths:
             try:
                 pdf = _pdf(html, data)
-            except (ImportError, OSError) as error:
-                complaints = (
-                    f"{paths['pdf']}: the PDF could not be made, because a library of the system is missing "
-                    f"({_first_line(error)}); install it: {_INSTALL}\n"
-                )
+            except ReportError as error:
+                complaints = f"{paths['pdf']}: {error}\n"
             else:
                 write_bytes(paths["pdf"], pdf)
                 written.append(str(paths["pdf"]))
@@ -150,10 +145,6 @@ def _pdf(html: str, data: object) -> bytes:
 
     assert isinstance(data, ReportData)
     return render_pdf(html, data)
-
-
-def _first_line(error: BaseException) -> str:
-    return (str(error).strip().splitlines() or [type(error).__name__])[0]
 
 
 def status_of(results: Results) -> int:

@@ -181,7 +181,12 @@ class DerivedLaw(Law):
             first = low if np.isfinite(low) else nodes[0] - spread
             last = high if np.isfinite(high) else nodes[-1] + spread
             points = np.unique(np.concatenate([[first], nodes, [last]]))
-            self._table = points, self.cdf(points), self.ccdf(points)
+            below = self.cdf(points)
+            above = 1 - below
+            # levels are looked up in the smaller tail only
+            upper = below > 0.4
+            above[upper] = self.ccdf(points[upper])
+            self._table = points, below, above
         return self._table
 
     def rough_quantile(self, p: Array, upper: bool = False) -> Array:

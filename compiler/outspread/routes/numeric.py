@@ -33,6 +33,7 @@ from outspread.numerics.slices.solve import PARAMETER
 
 Measure = LineMeasure | PlaneMeasure
 NO_PARAMETER = np.zeros(1)
+_NODES = 56
 _SAME = 2e-13  # values of discrete results closer than this (relatively) are one value
 
 
@@ -249,8 +250,8 @@ def _nodes(pieces: list[Piece], spread: Extent) -> Array:
     if not found:
         return np.zeros(0)
     points = np.unique(np.concatenate(found))
-    if points.size > 160:
-        points = points[np.unique(np.round(np.linspace(0, points.size - 1, 160)).astype(int))]
+    if points.size > _NODES:
+        points = points[np.unique(np.round(np.linspace(0, points.size - 1, _NODES)).astype(int))]
     return np.unique(np.concatenate([points, _far(points, spread)]))
 
 
@@ -258,7 +259,7 @@ def _far(points: Array, spread: Extent) -> Array:
     """Ever further points towards infinite ends, ever closer ones towards finite ends."""
     middle = float(np.median(points))
     size = max(float(np.quantile(points, 0.75) - np.quantile(points, 0.25)), 1e-12 * abs(middle), 1e-300)
-    powers = 10.0 ** np.concatenate([np.arange(0, 20, 1.0), np.arange(20, 60, 4.0), np.arange(60, 300, 20.0)])
+    powers = 10.0 ** np.array([0.5, 1, 1.5, 2, 3, 4, 6, 8, 12, 16, 24, 40, 70, 120, 200, 290])
     found: list[Array] = []
     with np.errstate(over="ignore"):
         for end, side in ((spread.lower, -1.0), (spread.upper, 1.0)):

@@ -6,7 +6,8 @@ also returned as a function, so that it can be held against the numeric law befo
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import replace
 
 import numpy as np
 
@@ -14,7 +15,7 @@ from outspread.formula.calculus import derivative
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.latex import estimated_width, symbol_for, to_latex
 from outspread.formula.latex_lines import breakable
-from outspread.formula.tree import Name, Node, names
+from outspread.formula.tree import Name, Node, Number, names, rebuild
 from outspread.laws.law import Array, Law
 from outspread.planning.plan import PlanStep
 from outspread.reading.model import Constant, Input, Model, Output
@@ -22,7 +23,7 @@ from outspread.routes.derived import Statement, SymbolicDensity
 from outspread.routes.jacobian.branches import Branch, branches_for
 from outspread.routes.numeric import NumericLaw
 
-VALUE = "y"
+VALUE = "§"  # stands for the value of the result; a letter that no input uses is put in at the end
 MOST_BRANCHES = 4
 PAGE = 62.0  # width of a formula, in characters of `estimated_width`
 
@@ -53,7 +54,9 @@ def numeric(
     else:
         statements += writer.region(step.inner, step.outer[0], step, result)
     statements += writer.atoms(result.law.atoms().values.size if result.law.continuous_mass else 0)
-    return tuple(statements), symbolic
+    if symbolic is not None:
+        symbolic = replace(symbolic, latex=symbolic.latex.replace(VALUE, writer.letter))
+    return writer.finished(statements), symbolic
 
 
 def sampling(output: Output, step: PlanStep, symbols: Mapping[str, str]) -> tuple[Statement, ...]:
@@ -72,8 +75,8 @@ def sampling(output: Output, step: PlanStep, symbols: Mapping[str, str]) -> tupl
                 "Given all other inputs, the probability of the region is known exactly from the law of "
                 f"${x}$. Its mean over the others is taken over scrambled Sobol' points, in independent "
                 "replicates whose scatter gives the error.",
-                rf"F_{{{writer.y}}}(y)=\mathrm{{E}}\left[P\left({short}\leq y\,\mid\,{others}\right)\right]"
-                rf"\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}P\left({short}\leq y\,\mid\,i\right)",
+                rf"F_{{{writer.y}}}(§)=\mathrm{{E}}\left[P\left({short}\leq §\,\mid\,{others}\right)\right]"
+                rf"\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}P\left({short}\leq §\,\mid\,i\right)",
                 "cdf",
             )
         )
@@ -82,12 +85,12 @@ def sampling(output: Output, step: PlanStep, symbols: Mapping[str, str]) -> tupl
             Statement(
                 "The formula is evaluated at scrambled Sobol' points in independent replicates, whose "
                 "scatter gives the error.",
-                rf"F_{{{writer.y}}}(y)\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}"
-                r"\mathbf{1}\left\{y_i\leq y\right\}",
+                rf"F_{{{writer.y}}}(§)\approx\frac{{1}}{{N}}\sum_{{i=1}}^{{N}}"
+                r"\mathbf{1}\left\{g_i\leq §\right\}",
                 "cdf",
             )
         )
-    return tuple(statements)
+    return writer.finished(statements)
 
 
 class _Writer:
@@ -96,18 +99,29 @@ class _Writer:
         self.expression = output.expression
         self.symbols = {**symbols, VALUE: VALUE, "k": "k"}
         self.y = symbols[output.name]
-        clash = VALUE in names(self.expression)
-        self.value = "outspread:value" if clash else VALUE
-        self.symbols["outspread:value"] = VALUE
+        self.value = VALUE
+        taken = {text for key, text in symbols.items() if key != output.name}
+        self.letter = next(letter for letter in ("y", "v", "t", "s", "q", r"\eta") if letter not in taken)
+
+    def finished(self, statements: Iterable[Statement]) -> tuple[Statement, ...]:
+        """The statements with the letter for the value put in."""
+        return tuple(
+            replace(
+                statement,
+                text=statement.text.replace(VALUE, self.letter),
+                latex=statement.latex.replace(VALUE, self.letter),
+            )
+            for statement in statements
+        )
 
     def latex(self, node: Node) -> str:
-        return to_latex(node, self.symbols)
+        return to_latex(_shown(node), self.symbols)
 
     def wrapped(self, head: str, node: Node) -> str:
         text = self.latex(node)
         if estimated_width(head + text) <= PAGE:
             return head + text
-        lines = breakable(node, self.symbols, PAGE - 8)
+        lines = breakable(_shown(node), self.symbols, PAGE - 8)
         return (head + lines[0]) + "".join(rf"\\ \quad {line}" for line in lines[1:])
 
     def formula_short(self) -> str:
@@ -130,7 +144,7 @@ class _Writer:
             Statement(
                 "All inputs are discrete: the probability of a value is the sum over the combinations that "
                 "lead to it.",
-                rf"P({self.y}=y)=\sum_{{g({xs})=y}}\;\prod_i p_i",
+                rf"P({self.y}=§)=\sum_{{g({xs})=§}}\;\prod_i p_i",
                 "cdf",
             )
         ]
@@ -148,16 +162,16 @@ class _Writer:
         if found is None:
             return [
                 Statement(
-                    f"The region is solved for ${x}$: its end points are the roots of $g=y$ in ${x}$, all "
+                    f"The region is solved for ${x}$: its end points are the roots of $g=§$ in ${x}$, all "
                     "isolated by interval arithmetic and bracketed to the last digit.",
-                    rf"g=y,\qquad \frac{{\partial g}}{{\partial {x}}}="
+                    rf"g=§,\qquad \frac{{\partial g}}{{\partial {x}}}="
                     + self._clipped(derivative(self.expression, name)),
                     "region",
                 )
             ]
         text = r"\\ ".join(self.wrapped(rf"{x}=", branch.value) for branch in found)
         one = "The limit" if len(found) == 1 else "The limits"
-        return [Statement(f"{one} of the region in ${x}$, from solving $g=y$:", text, "inverse")]
+        return [Statement(f"{one} of the region in ${x}$, from solving $g=§$:", text, "inverse")]
 
     def _clipped(self, node: Node) -> str:
         text = self.latex(node)
@@ -170,7 +184,7 @@ class _Writer:
             Statement(
                 "The distribution function is the probability of the region in which the formula stays below "
                 "a value:",
-                rf"F_{{{self.y}}}(y)=P\left(\left\{{{x}:\,g({x})\leq y\right\}}\right)",
+                rf"F_{{{self.y}}}(§)=P\left(\left\{{{x}:\,g({x})\leq §\right\}}\right)",
                 "region",
             )
         ]
@@ -178,24 +192,24 @@ class _Writer:
         statements += self.limits(name)
         if found is None:
             statements.append(Statement(
-                "Change of variables over all roots $x_k(y)$ of $g(x)=y$ (every branch of the inverse):",
-                rf"f_{{{self.y}}}(y)=\sum_k \frac{{f_{{{x}}}(x_k)}}{{\left|g'(x_k)\right|}}", "density",
+                "Change of variables over all roots $x_k(§)$ of $g(x)=y$ (every branch of the inverse):",
+                rf"f_{{{self.y}}}(§)=\sum_k \frac{{f_{{{x}}}(x_k)}}{{\left|g'(x_k)\right|}}", "density",
             ))  # fmt: skip
             return statements, None
         slopes = [derivative(branch.value, self.value) for branch in found]
         jacobian = r"\\ ".join(
-            self.wrapped(r"\frac{\mathrm{d}" + x + r"}{\mathrm{d}y}=", slope) for slope in slopes
+            self.wrapped(r"\frac{\mathrm{d}" + x + r"}{\mathrm{d}§}=", slope) for slope in slopes
         )
         statements.append(Statement("The derivative of each branch is its Jacobian:", jacobian, "jacobian"))
         statements.append(Statement(
             "Change of variables, summed over the branches:",
-            rf"f_{{{self.y}}}(y)=\sum_k f_{{{x}}}\left({x}_k(y)\right)"
-            rf"\left|\frac{{\mathrm{{d}}{x}_k}}{{\mathrm{{d}}y}}\right|", "density",
+            rf"f_{{{self.y}}}(§)=\sum_k f_{{{x}}}\left({x}_k(§)\right)"
+            rf"\left|\frac{{\mathrm{{d}}{x}_k}}{{\mathrm{{d}}§}}\right|", "density",
         ))  # fmt: skip
         if beside or any(branch.parameters for branch in found) or self.laws[name].continuous_mass < 1:
             return statements, None
         function = _density_function(found, slopes, name, self.laws[name], self.expression, self.value)
-        latex = rf"f_{{{self.y}}}(y)=" + "+".join(
+        latex = rf"f_{{{self.y}}}(§)=" + "+".join(
             rf"f_{{{x}}}\left({self.latex(branch.value)}\right)\left|{self.latex(slope)}\right|"
             for branch, slope in zip(found, slopes, strict=True)
         )
@@ -207,37 +221,37 @@ class _Writer:
         x, z = self.symbols[outer], self.symbols[inner]
         law = f"f_{{{z}\\mid {x}}}" if _dependent(result) else f"f_{{{z}}}"
         mass = (
-            f"P\\left({z}\\in S(y,{x})\\mid {x}\\right)"
+            f"P\\left({z}\\in S(§,{x})\\mid {x}\\right)"
             if _dependent(result)
-            else f"P\\left({z}\\in S(y,{x})\\right)"
+            else f"P\\left({z}\\in S(§,{x})\\right)"
         )
         low, high = _limits(self.laws[outer])
         found = self.branches(inner)
         statements = [
             Statement(
-                f"The region in which the formula stays below $y$, cut at a fixed ${x}$, is a set of values "
+                f"The region in which the formula stays below $§$, cut at a fixed ${x}$, is a set of values "
                 f"of ${z}$:",
-                rf"S(y,{x})=\left\{{{z}:\,g\leq y\right\}}", "region",
+                rf"S(§,{x})=\left\{{{z}:\,g\leq §\right\}}", "region",
             ),
             *self.limits(inner),
             Statement(
                 f"The distribution function is the probability of the region: exact in ${z}$, integrated "
                 f"over ${x}$.",
-                rf"F_{{{self.y}}}(y)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})\;{mass}\;\mathrm{{d}}{x}",
+                rf"F_{{{self.y}}}(§)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})\;{mass}\;\mathrm{{d}}{x}",
                 "cdf",
             ),
         ]  # fmt: skip
-        slope = rf"\left|\frac{{\partial {z}_k}}{{\partial y}}\right|"
+        slope = rf"\left|\frac{{\partial {z}_k}}{{\partial §}}\right|"
         statements.append(Statement(
-            "The density follows by differentiating under the integral sign; the limits move with $y$ "
+            "The density follows by differentiating under the integral sign; the limits move with $§$ "
             "(Leibniz rule).",
-            rf"f_{{{self.y}}}(y)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})"
-            rf"\sum_k {law}\left({z}_k(y,{x})\right){slope}\;\mathrm{{d}}{x}",
+            rf"f_{{{self.y}}}(§)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})"
+            rf"\sum_k {law}\left({z}_k(§,{x})\right){slope}\;\mathrm{{d}}{x}",
             "density",
         ))  # fmt: skip
         if found is not None and len(found) <= 2:
             text = r"\\ ".join(
-                self.wrapped(rf"\frac{{\partial {z}}}{{\partial y}}=", derivative(branch.value, self.value))
+                self.wrapped(rf"\frac{{\partial {z}}}{{\partial §}}=", derivative(branch.value, self.value))
                 for branch in found
             )
             statements.append(Statement("with the derivative of each limit", text, "jacobian"))
@@ -259,6 +273,17 @@ class _Writer:
                 rf"P({self.y}=c)=P\left(\{{g=c\}}\right)", "note",
             )
         ]  # fmt: skip
+
+
+def _shown(node: Node) -> Node:
+    """Computed numbers shortened to nine digits for reading; numbers as typed stay."""
+
+    def shorter(part: Node) -> Node | None:
+        if isinstance(part, Number) and not part.text and len(repr(part.value)) > 11:
+            return Number(part.value, f"{part.value:.9g}")
+        return None
+
+    return rebuild(node, shorter)
 
 
 def _limits(law: Law) -> tuple[str, str]:

@@ -45,8 +45,9 @@ def structure_cuts(
         changed = np.flatnonzero(kinds[first] != kinds[second])
         if changed.size:
             a, b = _bracketed(
-                slices, low, high, points[first, changed], points[second, changed], owner[changed], kinds[first, changed]
-            )
+                slices, low, high, points[first, changed], points[second, changed], owner[changed],
+                kinds[first, changed],
+            )  # fmt: skip
             left.append(a)
             right.append(b)
             who.append(changed)
@@ -99,7 +100,6 @@ def critical_points(
     `others` holds single values of discrete inputs; only a few combinations need to be looked at, since the
     result grades panels and states nothing.
     """
-    first, second = pair
     slopes = [derivative(expression, name) for name in pair]
     bends = [derivative(slope, name) for slope in slopes for name in pair]
     arguments = tuple(dict.fromkeys([*pair, *names(expression)]))
