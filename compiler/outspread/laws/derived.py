@@ -7,24 +7,16 @@ decides from the tails which moments exist. It knows nothing of formulas or inpu
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
 
 from outspread.laws.law import Array, Atoms, Estimates, Law
+from outspread.laws.tails import Tail, observed_tail
 from outspread.numerics.roots import bracketed_root
 
 Evaluate = Callable[[str, Array], Estimates]
 KINDS = ("pdf", "cdf", "ccdf")
-
-
-@dataclass(frozen=True)
-class Tail:
-    """How probability beyond y falls off: like y^-exponent (inf: faster than any power), or `ends`."""
-
-    exponent: float
-    ends: bool
 
 
 class DerivedLaw(Law):
@@ -50,6 +42,8 @@ class DerivedLaw(Law):
         self.nodes = np.unique(np.concatenate([inside, self._atoms.values]))
         self.tail_probability = tail_probability
         self._given_tails = tails
+        #: added to the error of every cdf and ccdf; a route sets it where a check leaves a doubt
+        self.floor_error = 0.0
         self._seen: dict[str, dict[float, tuple[float, float]]] = {kind: {} for kind in KINDS}
         self._quantiles: dict[bool, dict[float, tuple[float, float]]] = {False: {}, True: {}}
         self._table: tuple[Array, Array, Array] | None = None
@@ -70,7 +64,7 @@ class DerivedLaw(Law):
         both = np.array(pairs, float).reshape(-1, 2)
         return Estimates(both[:, 0].reshape(points.shape), both[:, 1].reshape(points.shape))
 
-    def _compute(self, kind: str, y: Array) -> tuple[Array, Array]:
+    def _compute(self, kind: str, y: Array, complete: bool = True) -> tuple[Array, Array]:
         low, high = self._support
         value = np.zeros(y.size)
         error = np.zeros(y.size)
@@ -89,13 +83,32 @@ class DerivedLaw(Law):
         if inside.any() and self._continuous_mass > 0:
             result = self._evaluate(kind, y[inside])
             value[inside], error[inside] = result.value, result.error
-        if kind != "pdf" and self._atoms.values.size:
-            mass, doubt = self._atom_sum(kind, y[inside])
-            value[inside] += mass
-            error[inside] += doubt
         if kind != "pdf":
+            if self._atoms.values.size:
+                mass, doubt = self._atom_sum(kind, y[inside])
+                value[inside] += mass
+                error[inside] += doubt
             value = np.clip(value, 0.0, 1.0)
+            error[inside] += self.floor_error
+            if complete:
+                self._complete(kind, y, value, error, inside & (value > 0.6))
         return value, error
+
+    def _complete(
+        self, kind: str, y: Array, value: Array, error: Array, large: npt.NDArray[np.bool_]
+    ) -> None:
+        """The larger of cdf and ccdf is what the smaller one leaves: it is the smaller that is known best."""
+        if large.any():
+            small, doubt = self._compute("ccdf" if kind == "cdf" else "cdf", y[large], complete=False)
+            value[large] = 1.0 - small
+            error[large] = doubt + 2.3e-16
+
+    def raw_total(self, y: Array) -> Estimates:
+        """cdf and ccdf at y derived apart from each other, added up: 1 where the formula has a value."""
+        parts = [self._evaluate(kind, y) for kind in ("cdf", "ccdf")]
+        atoms = float(self._atoms.masses.sum())
+        error = parts[0].error + parts[1].error + float(self._atoms.errors.sum()) + 4e-16
+        return Estimates(parts[0].value + parts[1].value + atoms, error)
 
     def _end_density(self, end: float, side: float) -> tuple[float, float]:
         """The density at an end of the support as its limit from inside; inf where it grows without bound."""
@@ -333,36 +346,10 @@ class DerivedLaw(Law):
     # --- moments ------------------------------------------------------------------------------------
 
     def tails(self) -> tuple[Tail, Tail]:
-        """How the lower and the upper tail fall off, from the local exponent y f(y) / P(beyond y) at
-        probabilities down to 1e-128; a power tail shows a constant exponent (Embrechts, Klüppelberg and
-        Mikosch 1997, Modelling Extremal Events, section 3.3: regular variation and moments)."""
+        """How the lower and the upper tail fall off (`laws.tails`)."""
         if self._given_tails is None:
-            self._given_tails = (self._tail(-1), self._tail(1))
+            self._given_tails = (observed_tail(self, -1), observed_tail(self, 1))
         return self._given_tails
-
-    def _tail(self, side: int) -> Tail:
-        end = self._support[0 if side < 0 else 1]
-        if np.isfinite(end) or self._continuous_mass == 0:
-            return Tail(np.inf, True)
-        levels = np.array([1e-16, 1e-32, 1e-64, 1e-128])
-        levels = levels[levels > self.tail_probability]
-        y = self.rough_quantile(levels, upper=side > 0)
-        centre = float(self.icdf(0.5))
-        beyond = self.ccdf(y) if side > 0 else self.cdf(y)
-        with np.errstate(all="ignore"):
-            density = self.pdf(y)
-            # a density that underflows says nothing
-            exponent = np.where(density > 1e-300, np.abs(y - centre) * density / beyond, np.nan)
-        exponent = exponent[np.isfinite(exponent)]
-        if exponent.size < 3:
-            return Tail(np.inf, False)
-        second, third = exponent[-2:]
-        if third > 60 or abs(third - second) > 0.05 * third + 0.02:
-            return Tail(np.inf, False)
-        # logarithmic corrections fade like 1 / log y, which halves from level to level
-        limit = 2 * third - second
-        whole = round(limit)
-        return Tail(float(whole if abs(limit - whole) < 2e-3 else limit), False)
 
     def moment_exists(self, order: float) -> bool:
         return all(tail.exponent > order for tail in self.tails())

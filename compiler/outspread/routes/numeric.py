@@ -34,6 +34,7 @@ from outspread.numerics.slices.solve import PARAMETER
 Measure = LineMeasure | PlaneMeasure
 NO_PARAMETER = np.zeros(1)
 _NODES = 56
+_WORST_TOTAL = 1e-6
 _SAME = 2e-13  # values of discrete results closer than this (relatively) are one value
 
 
@@ -234,18 +235,7 @@ def _nodes(pieces: list[Piece], spread: Extent) -> Array:
     for piece in pieces:
         if piece.measure is None:
             continue
-        problem = piece.problem
-        grids = [Axis(name, problem.laws[name]).grid for name in problem.continuous]
-        step = max(1, piece.combos.count // 24)
-        picks = np.arange(0, piece.combos.count, step)
-        mesh = np.meshgrid(*grids, picks, indexing="ij")
-        environment = {name: axis.ravel() for name, axis in zip(problem.continuous, mesh, strict=False)}
-        index = mesh[-1].ravel().astype(int)
-        environment.update({name: value[index] for name, value in piece.combos.values.items()})
-        arguments = names(problem.expression)
-        with np.errstate(all="ignore"):
-            value = compile_numpy(problem.expression, arguments)(*(environment[n] for n in arguments))
-        value = np.ravel(np.asarray(value, float))
+        value = _on_grid(piece)
         found.append(np.unique(value[np.isfinite(value)]))
     if not found:
         return np.zeros(0)
@@ -253,6 +243,21 @@ def _nodes(pieces: list[Piece], spread: Extent) -> Array:
     if points.size > _NODES:
         points = points[np.unique(np.round(np.linspace(0, points.size - 1, _NODES)).astype(int))]
     return np.unique(np.concatenate([points, _far(points, spread)]))
+
+
+def _on_grid(piece: Piece) -> Array:
+    """The formula at a grid of graded continuous inputs, for up to some 24 combinations of discrete ones."""
+    problem = piece.problem
+    grids = [Axis(name, problem.laws[name]).grid for name in problem.continuous]
+    step = max(1, piece.combos.count // 24)
+    mesh = np.meshgrid(*grids, np.arange(0, piece.combos.count, step), indexing="ij")
+    environment = {name: axis.ravel() for name, axis in zip(problem.continuous, mesh, strict=False)}
+    index = mesh[-1].ravel().astype(int)
+    environment.update({name: value[index] for name, value in piece.combos.values.items()})
+    arguments = names(problem.expression)
+    with np.errstate(all="ignore"):
+        value = compile_numpy(problem.expression, arguments)(*(environment[n] for n in arguments))
+    return np.ravel(np.asarray(value, float))
 
 
 def _far(points: Array, spread: Extent) -> Array:
@@ -280,15 +285,25 @@ def _check_whole(result: NumericLaw) -> None:
     else:
         inner = law.nodes[1:-1] if law.nodes.size > 2 else law.nodes
         points = inner[np.unique(np.linspace(0, inner.size - 1, 5).astype(int))]
-        below, above = law.estimate("cdf", points), law.estimate("ccdf", points)
-        totals = below.value + above.value
-        worst = int(np.argmax(np.abs(totals - 1)))
-        total, doubt = float(totals[worst]), float(below.error[worst] + above.error[worst])
+        totals = law.raw_total(points)
+        worst = int(np.argmax(np.abs(totals.value - 1)))
+        total, doubt = float(totals.value[worst]), float(totals.error[worst])
     missing = 1.0 - total
-    if missing > 5 * doubt + 1e-12:
+    if abs(missing) <= 5 * doubt + 1e-12:
+        return
+    if missing > 0 and _undefined(result):
         raise DerivationError(
             f"the formula has no value with probability {missing:.3g} (a root or logarithm of a negative "
             "number, for example); limit the inputs by `truncate`, or say with if(…) what holds there"
         )
-    if missing < -(5 * doubt + 1e-12):
-        raise DerivationError(f"the derived probabilities add up to {total!r}; please report this model")
+    if abs(missing) > _WORST_TOTAL:
+        raise DerivationError(
+            f"the probabilities of the result, derived apart from each other, add up to {total!r} instead of 1"
+        )
+    law.floor_error = 2 * abs(missing)
+
+
+def _undefined(result: NumericLaw) -> bool:
+    """Whether the formula has no value somewhere on a grid over its inputs."""
+    pieces = [piece for piece in result.pieces if piece.measure is not None]
+    return any(bool(np.isnan(_on_grid(piece)).any()) for piece in pieces)

@@ -15,8 +15,9 @@ import numpy as np
 
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.tree import Name, Node, names
-from outspread.laws.derived import DerivedLaw, Tail
+from outspread.laws.derived import DerivedLaw
 from outspread.laws.law import Array, Atoms, Estimates, Law
+from outspread.laws.tails import Tail
 from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
 from outspread.numerics.slices.extent import extent

@@ -1,8 +1,8 @@
-"""Where the slices of a plane change their structure: folds and ends of the region, and turning points.
+"""Where the slices of a plane change their structure: folds and ends of the region, turning points, corners.
 
 A panel of the outer integral must not hide the place where a slice becomes empty or falls into two parts;
-`structure_cuts` brackets such places, `critical_points` finds the points around which whole regions of a level
-set can be small.
+`structure_cuts` brackets such places, `critical_points` and `corners` find the points around which whole
+regions of a level set can be small.
 """
 
 from __future__ import annotations
@@ -12,7 +12,7 @@ from collections.abc import Callable, Mapping
 import numpy as np
 import numpy.typing as npt
 
-from outspread.formula.calculus import derivative
+from outspread.formula.calculus import derivative, nonsmooth
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.tree import Node, names
 from outspread.numerics.sets import Array, Sets
@@ -20,8 +20,9 @@ from outspread.numerics.sets import Array, Sets
 Index = npt.NDArray[np.int64]
 _BISECTIONS = 22
 _STARTS = 13
-_NEWTON = 40
+_NEWTON = 30
 _MOST = 24
+_MOST_KINKS = 8
 
 
 def structure_cuts(
@@ -101,13 +102,44 @@ def critical_points(
     result grades panels and states nothing.
     """
     slopes = [derivative(expression, name) for name in pair]
-    bends = [derivative(slope, name) for slope in slopes for name in pair]
-    arguments = tuple(dict.fromkeys([*pair, *names(expression)]))
-    functions = [compile_numpy(node, arguments) for node in (*slopes, *bends)]
+    return _common_zeros(slopes[0], slopes[1], pair, grids, others)
+
+
+def corners(
+    expression: Node, pair: tuple[str, str], grids: tuple[Array, Array], others: Mapping[str, Array]
+) -> tuple[Array, Array]:
+    """Coordinates at which two kinks of the formula cross: the corners of its pieces."""
+    kinks = [
+        node
+        for node in dict.fromkeys([*nonsmooth(expression, pair[0]), *nonsmooth(expression, pair[1])])
+        if any(name in names(node) for name in pair)
+    ][:_MOST_KINKS]
+    found = [
+        _common_zeros(one, two, pair, grids, others)
+        for i, one in enumerate(kinks)
+        for two in kinks[:i]
+        if set(pair) <= {*names(one), *names(two)}
+    ]
+    if not found:
+        return np.zeros(0), np.zeros(0)
+    return _distinct(np.concatenate([f[0] for f in found])), _distinct(np.concatenate([f[1] for f in found]))
+
+
+def _common_zeros(
+    one: Node,
+    two: Node,
+    pair: tuple[str, str],
+    grids: tuple[Array, Array],
+    others: Mapping[str, Array],
+) -> tuple[Array, Array]:
+    bends = [derivative(node, name) for node in (one, two) for name in pair]
+    used = dict.fromkeys(name for node in (one, two, *bends) for name in names(node) if name not in pair)
+    arguments = (*pair, *used)
+    functions = [compile_numpy(node, arguments) for node in (one, two, *bends)]
     starts = [grid[np.unique(np.linspace(0, grid.size - 1, _STARTS).astype(int))] for grid in grids]
     mesh = np.meshgrid(*starts)
     x, z = mesh[0].ravel().astype(float), mesh[1].ravel().astype(float)
-    fixed = [others[name] for name in arguments[2:]]
+    fixed = [others[name] for name in used]
     with np.errstate(all="ignore"):
         for _ in range(_NEWTON):
             g1, g2, h11, h12, h21, h22 = (np.broadcast_to(f(x, z, *fixed), x.shape) for f in functions)
@@ -128,4 +160,4 @@ def _distinct(values: Array) -> Array:
         return ordered
     scale = max(float(np.abs(ordered).max()), 1e-300)
     keep = np.append(True, np.diff(ordered) > 1e-8 * scale)
-    return ordered[keep][:_MOST]
+    return np.asarray(ordered[keep][:_MOST], float)

@@ -21,7 +21,7 @@ from outspread.numerics.quadrature import integrate, panels_between
 from outspread.numerics.sets import Sets
 from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
-from outspread.numerics.slices.folds import critical_points, structure_cuts
+from outspread.numerics.slices.folds import corners, critical_points, structure_cuts
 from outspread.numerics.slices.inner import (
     ConditionalInner,
     IndependentInner,
@@ -71,9 +71,10 @@ class LineMeasure:
         sets_, environment = self._sets(event, y)
         value = probability(sets_, self.inner)
         edge = boundary(sets_)
-        shift = ROUNDING * (np.abs(environment[PARAMETER])[edge.problem] * edge.rate + np.abs(edge.x))
         with np.errstate(all="ignore"):
-            slip = self.inner.pdf(edge.x, None) * shift
+            shift = ROUNDING * (np.abs(environment[PARAMETER])[edge.problem] * edge.rate + np.abs(edge.x))
+            density = self.inner.pdf(edge.x, None)
+            slip = np.where(density == 0, 0.0, density * shift)
             slip = np.where(np.isfinite(slip), slip, np.sqrt(ROUNDING))
         lost = np.bincount(edge.problem, slip, value.size)
         error = self._relative * value + lost
@@ -152,9 +153,10 @@ class PlaneMeasure:
         picks = np.unique(np.linspace(0, self.combos.count - 1, 3).astype(int))
         for pick in picks.tolist():
             others = {name: value[pick] for name, value in self.combos.values.items()}
-            turns = critical_points(self.problem.expression, (outer, inner), grids, others)
-            for name, found in zip((outer, inner), turns, strict=True):
-                breaks[name] = (*breaks[name], *found.tolist())
+            for search in (critical_points, corners):
+                turns = search(self.problem.expression, (outer, inner), grids, others)
+                for name, found in zip((outer, inner), turns, strict=True):
+                    breaks[name] = (*breaks[name], *found.tolist())
         return {name: Axis(name, laws[name], breaks[name]) for name in (outer, inner)}
 
     def _breaks(self, name: str) -> tuple[float, ...]:
