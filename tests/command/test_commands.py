@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import builtins
 import json
 import os
 import subprocess
 import sys
 from pathlib import Path
+from typing import Any
 
 import pytest
 from running import outspread
@@ -111,16 +113,18 @@ def test_missing_system_library_still_writes_the_rest(folder: Path, monkeypatch:
     """Results and HTML are there, the message names the line to run, the status is 5."""
     from outspread.reporting import pdf
 
-    def broken(html: str, data: object) -> bytes:
-        raise OSError("cannot load library 'libpangoft2-1.0-0'\nand more")
+    real = builtins.__import__
 
-    monkeypatch.setattr(pdf, "render_pdf", broken)
+    def broken(name: str, *rest: Any) -> Any:
+        if name == "weasyprint":
+            raise OSError("cannot load library 'libpangoft2-1.0-0'\nand more")
+        return real(name, *rest)
+
+    monkeypatch.delitem(sys.modules, "weasyprint", raising=False)
+    monkeypatch.setattr(builtins, "__import__", broken)
     said = outspread("derive", "gap.yaml")
-    assert said.err == (
-        "gap.pdf: the PDF could not be made, because a library of the system is missing (cannot load library"
-        " 'libpangoft2-1.0-0'); install it: apt-get install -y --no-install-recommends libpangoft2-1.0-0"
-        " libharfbuzz-subset0\n"
-    )
+    assert said.err == "gap.pdf: " + pdf._MISSING.format("cannot load library 'libpangoft2-1.0-0'") + "\n"
+    assert "apt-get install -y --no-install-recommends libpangoft2-1.0-0 libharfbuzz-subset0" in said.err
     assert said.status == 5
     assert said.out.endswith("  wrote gap.results.json, gap.html\n")
     assert not (folder / "gap.pdf").exists()
