@@ -115,10 +115,10 @@ def test_missing_system_library_still_writes_the_rest(folder: Path, monkeypatch:
 
     real = builtins.__import__
 
-    def broken(name: str, *rest: Any) -> Any:
+    def broken(name: str, *rest: Any, **more: Any) -> Any:
         if name == "weasyprint":
             raise OSError("cannot load library 'libpangoft2-1.0-0'\nand more")
-        return real(name, *rest)
+        return real(name, *rest, **more)
 
     monkeypatch.delitem(sys.modules, "weasyprint", raising=False)
     monkeypatch.setattr(builtins, "__import__", broken)
