@@ -47,6 +47,7 @@ class Axis:
         self.frame = Frame(name, self.grid)
         spread = float(law.icdf(0.84)) - float(law.icdf(0.16))
         self.scale = spread / 2 if spread > 0 else max(abs(float(middle)), 1.0)
+        self.middle = float(middle)
 
     def coarse(self) -> Array:
         """A sparser grid: the ends, the middle, the breaks and a few tail points."""
@@ -84,8 +85,10 @@ class Axis:
         return np.unique(np.concatenate([self.to_t(inner), [-0.5, 0.0, 0.5]]))
 
     def length(self, x: Array) -> Array:
-        """A local length: the law's scale, shrinking to 0 towards an end where the density is unbounded."""
-        length = np.full_like(x, self.scale)
+        """A local length: the law's scale, growing with the distance from the middle far out, where a
+        coordinate has no digits left to tell details of the other one, and shrinking to 0 towards an end
+        where the density is unbounded."""
+        length = np.hypot(self.scale, x - self.middle)
         for end, singular in zip(self.support, self.singular, strict=True):
             if singular:
                 distance = np.abs(x - end)

@@ -257,7 +257,7 @@ class PlaneMeasure:
         environment = _environment(y, self.combos)
         axis, other, law = self.axes[outer], self.axes[inner], self.laws[inner]
         solver = self._solver(event, inner)
-        slope = self._slopes[outer]
+        slope, along = self._slopes[outer], self._slopes[inner]
         lower, upper, owner = self._panels(event, environment, count, outer, inner)
 
         def integrand(t: Array, who: Index) -> Array:
@@ -269,8 +269,12 @@ class PlaneMeasure:
             local[inner] = edge.x
             given = self.correlation * axis.scores(local[outer]) if self.correlation else None
             with np.errstate(all="ignore"):
-                across = slope(local, edge.x.size) * axis.length(local[outer]) * edge.rate
-                share = (across / other.length(edge.x)) ** 2
+                across = slope(local, edge.x.size)
+                # the two slopes lose the same digits at one point: their ratio, unlike slope times rate,
+                # is the same from both charts, so that the shares add up to 1
+                ratio = across / along(local, edge.x.size)
+                ratio = np.where(np.isfinite(ratio), ratio, across * edge.rate)
+                share = (ratio * axis.length(local[outer]) / other.length(edge.x)) ** 2
                 density = law.pdf(edge.x, given) * edge.rate / (1 + share)
             density = np.where(np.isfinite(density), density, 0.0)
             return np.bincount(edge.problem, density, x.size) * axis.weight(x)
