@@ -7,9 +7,8 @@ from collections.abc import Callable, Mapping
 import numpy as np
 
 from outspread.errors import DerivationError
-from outspread.formula.tree import COMPARISONS, Apply, Name, Node, Number, names, substitute
+from outspread.formula.tree import Apply, Node, Number, names, substitute
 from outspread.laws.law import Estimates, Law
-from outspread.numerics.slices.cases import FLIPPED
 from outspread.planning.dependence import normal_scores
 from outspread.planning.plan import Plan, PlanStep
 from outspread.reading.model import Model, Output
@@ -17,6 +16,7 @@ from outspread.routes import numeric, writing
 from outspread.routes.association import correlation
 from outspread.routes.closed_form.scored import recognise_with_scores
 from outspread.routes.derived import DerivedOutput, JointLaw, SymbolicDensity
+from outspread.routes.events import event_of_one
 from outspread.routes.jacobian import NotPossible, derive_joint, input_density
 from outspread.routes.sampling import derive_sampled
 
@@ -103,39 +103,12 @@ class Engine:
         """P(event) for an event over outputs, with a bound on the error: derived jointly in the inputs."""
         involved = names(event)
         if len(involved) == 1:
-            simple = self._simple(event)
-            if simple is not None:
-                return simple
+            law = next(item.law for item in self.derive() if item.output == involved[0])
+            found = event_of_one(event, involved[0], law)
+            if found is not None:
+                return found
         expressions = {output.name: output.expression for output in self.model.outputs}
         return self._event_in_inputs(substitute(event, expressions))
-
-    def _simple(self, event: Node) -> Estimates | None:
-        """Events like `clearance > 0.002` are read off the output's own law."""
-        if not isinstance(event, Apply) or event.operator not in COMPARISONS:
-            return None
-        left, right = event.arguments
-        operator = event.operator
-        if isinstance(left, Number) and isinstance(right, Name):
-            left, right, operator = right, left, FLIPPED[operator]
-        if not (isinstance(left, Name) and isinstance(right, Number)):
-            return None
-        return self._side(left.name, operator, right.value)
-
-    def _side(self, output: str, operator: str, limit: float) -> Estimates:
-        law = next(item.law for item in self.derive() if item.output == output)
-        if operator in ("equal", "not_equal"):
-            return _at(law, limit, operator == "not_equal")
-        kind = "cdf" if operator in ("less", "less_equal") else "ccdf"
-        estimate = stated(law, kind, limit)
-        value, error = float(estimate.value), float(estimate.error)
-        # cdf counts an atom at the limit, ccdf does not
-        atoms = law.atoms()
-        at = np.flatnonzero(atoms.values == limit)
-        if at.size and operator in ("less", "greater_equal"):
-            mass = float(atoms.masses[at[0]])
-            value += mass if operator == "greater_equal" else -mass
-            error += float(atoms.errors[at[0]])
-        return Estimates(np.asarray(min(max(value, 0.0), 1.0)), np.asarray(error))
 
     def _event_in_inputs(self, event: Node) -> Estimates:
         laws = self._used(event)
@@ -167,25 +140,6 @@ class Engine:
         laws = self._used(Apply("add", (expressions[a], expressions[b])))
         found = correlation(expressions[a], expressions[b], laws, self.scores, self.model.accuracy.seed)
         return Estimates(np.asarray(found.value), np.asarray(found.error))
-
-
-def _at(law: Law, point: float, elsewhere: bool) -> Estimates:
-    """P(Y = point), or P(Y != point)."""
-    atoms = law.atoms()
-    at = np.flatnonzero(atoms.values == point)
-    mass = float(atoms.masses[at[0]]) if at.size else 0.0
-    error = float(atoms.errors[at[0]]) if at.size else 0.0
-    return Estimates(np.asarray(1 - mass if elsewhere else mass), np.asarray(error))
-
-
-def stated(law: Law, kind: str, y: float) -> Estimates:
-    """cdf or ccdf at a point with its error, for derived and given laws alike."""
-    estimate = getattr(law, "estimate", None)
-    if estimate is not None:
-        result: Estimates = estimate(kind, y)
-        return result
-    value = law.cdf(y) if kind == "cdf" else law.ccdf(y)
-    return Estimates(value, np.abs(value) * max(law.relative_error, 1e-14))
 
 
 def _numeric_or_sampling(laws: Mapping[str, Law], scores: object, expression: Node) -> bool:

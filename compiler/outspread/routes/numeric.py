@@ -298,7 +298,7 @@ def _check_whole(result: NumericLaw) -> None:
         )
     if abs(missing) > _WORST_TOTAL:
         raise DerivationError(
-            f"the probabilities of the result, derived apart from each other, add up to {total!r} instead of 1"
+            f"the probabilities of the result, derived apart from each other, add up to {total!r}, not 1"
         )
     law.floor_error = 2 * abs(missing)
 

@@ -7,6 +7,8 @@ keep full resolution: P(X in A) = integral over t of 1{x(t) in A} dt.
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import numpy as np
 
 from outspread.laws.law import Array, Law
@@ -28,9 +30,7 @@ class Axis:
         self.breaks = breaks
         low, high = law.support()
         self.support = (low, high)
-        tails = np.array(_TAILS)
-        with np.errstate(all="ignore"):
-            lower, upper, middle = law.icdf(tails), law.iccdf(tails), law.icdf(0.5)
+        lower, upper, middle, spread = _quantiles(law)
         self.start = low if np.isfinite(low) else float(lower[0])
         self.end = high if np.isfinite(high) else float(upper[0])
         points = np.concatenate(
@@ -45,16 +45,13 @@ class Axis:
         if not self.by_probability:
             self.grid = np.unique(np.concatenate([self.grid, steps]))
         self.frame = Frame(name, self.grid)
-        spread = float(law.icdf(0.84)) - float(law.icdf(0.16))
         self.scale = spread / 2 if spread > 0 else max(abs(float(middle)), 1.0)
         self.middle = float(middle)
 
     def coarse(self) -> Array:
         """A sparser grid: the ends, the middle, the breaks and a few tail points."""
-        tails = np.array(_COARSE_TAILS)
-        with np.errstate(all="ignore"):
-            points = np.concatenate([self.law.icdf(tails), self.law.iccdf(tails), self.law.icdf([0.5])])
-        points = np.concatenate([points, [self.start, self.end, 0.0], self.law.breaks(), self.breaks])
+        ends = [self.start, self.end, 0.0]
+        points = np.concatenate([_coarse_quantiles(self.law), ends, self.law.breaks(), self.breaks])
         points = points[np.isfinite(points) & (points >= self.start) & (points <= self.end)]
         return np.unique(points)
 
@@ -97,6 +94,22 @@ class Axis:
 
     def scores(self, x: Array) -> Array:
         return normal_score(self.law, x)
+
+
+@lru_cache(maxsize=256)
+def _quantiles(law: Law) -> tuple[Array, Array, float, float]:
+    """Lower and upper tail quantiles, the median, and the distance from the 16 % to the 84 % quantile."""
+    tails = np.array(_TAILS)
+    with np.errstate(all="ignore"):
+        lower, upper, body = law.icdf(tails), law.iccdf(tails), law.icdf(np.array([0.16, 0.5, 0.84]))
+    return lower, upper, float(body[1]), float(body[2] - body[0])
+
+
+@lru_cache(maxsize=256)
+def _coarse_quantiles(law: Law) -> Array:
+    tails = np.array(_COARSE_TAILS)
+    with np.errstate(all="ignore"):
+        return np.concatenate([law.icdf(tails), law.iccdf(tails), law.icdf(np.array([0.5]))])
 
 
 def _steps(grid: Array, middle: float) -> Array:

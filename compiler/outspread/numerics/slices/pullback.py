@@ -12,6 +12,7 @@ from collections.abc import Callable
 import numpy as np
 import numpy.typing as npt
 
+from outspread.errors import DerivationError
 from outspread.numerics import sets
 from outspread.numerics.sets import Array, Sets
 
@@ -20,8 +21,14 @@ HALF_PI = np.pi / 2
 MOST_BRANCHES = 20_000
 
 
-class TooManyBranches(Exception):
+class TooManyBranches(DerivationError):
     """A periodic function runs through more periods than can be followed one by one."""
+
+    def __init__(self) -> None:
+        super().__init__(
+            f"a sine, cosine or tangent has more than {MOST_BRANCHES:,} periods; limit its argument, "
+            "for example by `truncate`"
+        )
 
 
 def monotone(
@@ -160,7 +167,8 @@ def sign(target: Sets) -> Sets:
 def floor(target: Sets) -> Sets:
     lower, upper = np.ceil(target.lower), np.floor(target.upper)
     full = (target.lower <= target.upper) & (lower <= upper)
-    return sets.make(np.where(full, lower, np.inf), np.where(full, upper + 1, -np.inf))
+    # upper + 1 itself is outside, which matters where what is below can jump to it
+    return sets.make(np.where(full, lower, np.inf), np.where(full, np.nextafter(upper + 1, -np.inf), -np.inf))
 
 
 def ceil(target: Sets) -> Sets:

@@ -14,7 +14,7 @@ import numpy as np
 import numpy.typing as npt
 
 from outspread.formula.calculus import derivative
-from outspread.formula.evaluate import compile_numpy
+from outspread.formula.evaluate import compile_numpy, fold
 from outspread.formula.interval import Interval, enclose
 from outspread.formula.tree import Apply, Name, Node, Number, names, occurrences, rebuild, subtract, walk
 from outspread.numerics import sets
@@ -249,6 +249,7 @@ def _target(operator: str, right: Node, peeled: Callable[[Sets, Environment], Se
 
 
 def _power(where: int, other: Node) -> Callable[[Sets, Environment], Sets]:
+    other = fold(other)  # -1 is typed as the negative of 1
     if (
         where == 0
         and isinstance(other, Number)
