@@ -19,6 +19,8 @@ from outspread.findings.results import Absent, Figure, Finding, OutputResults, R
 
 FLOOR = Decimal("1e-10")
 FORMAT = 1
+#: allowed differences below this are rounding and quadrature noise
+ROUNDING = 1e-9
 _WIDE = Context(prec=1000, Emin=-999999, Emax=999999)
 
 Value = dict[str, object]
@@ -73,6 +75,16 @@ def _significant(value: float, digits: int = 3) -> float | str:
     return float(f"{value:.{digits - 1}e}")
 
 
+def _difference(difference: float, allowed: float) -> Value:
+    """A difference and what is allowed. Where what is allowed is only rounding, both are given to powers of
+    ten, since the rounding itself differs from machine to machine."""
+    if not (math.isfinite(difference) and 0.0 < allowed < ROUNDING):
+        return {"largest_difference": _significant(difference), "allowed": _larger(allowed)}
+    power = math.ceil(math.log10(allowed))
+    shown = Decimal(difference).quantize(Decimal(1).scaleb(power - 1), rounding=ROUND_HALF_EVEN, context=_WIDE)
+    return {"largest_difference": float(shown) + 0.0, "allowed": float(Decimal(1).scaleb(power))}
+
+
 def _larger(value: float, digits: int = 3) -> float | str:
     """The same, never rounded down."""
     if not math.isfinite(value) or value == 0.0:
@@ -116,8 +128,7 @@ def as_document(results: Results) -> Value:
                 "output": row.output,
                 "against": row.against,
                 "points": row.points,
-                "largest_difference": _significant(row.largest_difference),
-                "allowed": _larger(row.allowed),
+                **_difference(row.largest_difference, row.allowed),
                 "agrees": row.agrees,
             }
             for row in results.evidence

@@ -157,10 +157,12 @@ def absolute(target: Sets) -> Sets:
 
 def sign(target: Sets) -> Sets:
     count = target.count
-    zero, infinite = np.zeros((1, count)), np.full((1, count), np.inf)
+    zero, least, infinite = (np.full((1, count), value) for value in (0.0, 5e-324, np.inf))
+    # 0 by itself has a sign of its own, which matters where what is below has a step there
     return sets.stack([
-        sets.where(_constant(target, -1.0), sets.make(-infinite, zero)),
-        sets.where(_constant(target, 1.0), sets.make(zero, infinite)),
+        sets.where(_constant(target, -1.0), sets.make(-infinite, -least)),
+        sets.where(_constant(target, 0.0), sets.make(zero, least)),
+        sets.where(_constant(target, 1.0), sets.make(least, infinite)),
     ])  # fmt: skip
 
 
