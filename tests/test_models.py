@@ -40,7 +40,11 @@ def test_there_are_six() -> None:
     assert {path.name for path in MODELS.glob("*.results.json")} == {f"{name}.results.json" for name in NAMES}
 
 
-@pytest.mark.parametrize("name", NAMES)
+#: The winch samples, for minutes.
+SLOW = [pytest.param(name, marks=[pytest.mark.slow] if "winch" in name else []) for name in NAMES]
+
+
+@pytest.mark.parametrize("name", SLOW)
 def test_results_follow_from_the_model(name: str, tmp_path: Path) -> None:
     """Deriving the model again gives the committed results, byte for byte, and the expected exit status."""
     shutil.copy(MODELS / f"{name}.yaml", tmp_path)

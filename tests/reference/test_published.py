@@ -222,7 +222,17 @@ def law_faults(derived: Any, check: published.Check) -> Iterator[str]:
         yield f"{published.label(check)}: law says {ours:.17g}; true error {off:.2e} > stated {allowed:.2e}"
 
 
-@pytest.mark.parametrize("case", published.covered(), ids=lambda case: case["id"])
+COVERED = [
+    pytest.param(
+        case,
+        id=case["id"],
+        marks=[pytest.mark.slow] if case["id"].split("-")[0] in published.SLOW else [],
+    )
+    for case in published.covered()
+]
+
+
+@pytest.mark.parametrize("case", COVERED)
 def test_published_case(case: published.Case) -> None:
     """Every check of the case holds: within the stated error, the promised one and the printed tolerance."""
     derived = derivation(case["id"])
