@@ -218,6 +218,8 @@ def merge_atoms(values: Array, masses: Array, errors: Array) -> Atoms:
     if np.isnan(values[masses > 0]).any():
         raise DerivationError("the formula has no value for some combinations of its discrete inputs")
     keep = masses > 0
+    if not keep.any():
+        return Atoms.none()
     values, masses, errors = values[keep], masses[keep], errors[keep]
     order = np.argsort(values, kind="stable")
     values, masses, errors = values[order], masses[order], errors[order]
@@ -286,6 +288,8 @@ def _check_whole(result: NumericLaw) -> None:
         inner = law.nodes[1:-1] if law.nodes.size > 2 else law.nodes
         points = inner[np.unique(np.linspace(0, inner.size - 1, 5).astype(int))]
         totals = law.raw_total(points)
+        if np.isnan(totals.value).any():
+            raise DerivationError("the derived probabilities are not numbers at some values of the result")
         worst = int(np.argmax(np.abs(totals.value - 1)))
         total, doubt = float(totals.value[worst]), float(totals.error[worst])
     missing = 1.0 - total

@@ -104,4 +104,4 @@ def gamma_density(shape: float, x: Array) -> Array:
         return np.exp(-x)
     limit = np.inf if shape < 1 else 0.0
     safe = np.where(x > 0, x, 1.0)
-    return np.asarray(np.where(x > 0, gamma_kernel(shape, safe) * (shape / safe), limit))
+    return np.asarray(np.where(x > 0, gamma_kernel(shape, safe) * shape / safe, limit))

@@ -203,12 +203,26 @@ def _own_cases(
     cases: list[Case] = []
     if node.operator == "multiply" or node.operator == "divide":
         factors = lists if node.operator == "multiply" else lists[:1]
-        cases += [(c, v) for part in factors for c, v in part if isinstance(v, Number) and v.value == 0]
+        cases += [case for part in factors for c, v in part for case in _where_equal(c, v, 0.0, ZERO)]
+    if node.operator == "power":
+        base, exponent = lists
+        one = Number(1.0)
+        cases += [case for c, v in exponent for case in _where_equal(c, v, 0.0, one)]
+        cases += [case for c, v in base for case in _where_equal(c, v, 1.0, one)]
+        positive = comparison("greater", node.arguments[1], ZERO)
+        cases += [case for c, v in base for case in _where_equal(both(c, positive), v, 0.0, ZERO)]
     if all(lists):
         for combination in product(*lists):
             condition = both(*(c for c, _ in combination))
             cases.append((condition, Apply(node.operator, tuple(v for _, v in combination))))
     return cases
+
+
+def _where_equal(condition: Node, value: Node, special: float, result: Node) -> list[Case]:
+    """The case that a part takes a special value, at which the other parts do not matter."""
+    if isinstance(value, Number):
+        return [(condition, result)] if value.value == special else []
+    return [(both(condition, comparison("equal", value, Number(special))), result)]
 
 
 def _extreme_cases(node: Apply, lists: list[list[Case]]) -> list[Case]:
