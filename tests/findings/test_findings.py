@@ -19,14 +19,14 @@ from outspread.reading.model import Model
 @pytest.mark.parametrize(
     ("value", "sense", "verdict"),
     [
-        (Figure(0.9991, 0.00005), "at_least", "met"),
-        (Figure(0.9990, 0.00005), "at_least", "undecided"),
-        (Figure(0.99904, 0.00005), "at_least", "undecided"),
-        (Figure(0.9989, 0.00005), "at_least", "not met"),
+        (Figure(0.9991, 0.00004), "at_least", "met"),
+        (Figure(0.9990, 0.00004), "at_least", "undecided"),
+        (Figure(0.99904, 0.00004), "at_least", "undecided"),
+        (Figure(0.9989, 0.00004), "at_least", "not met"),
         (Figure(0.999, 0.0), "at_least", "met"),  # exactly at the limit
         (Figure(0.999, 0.0), "at_most", "met"),
-        (Figure(0.9991, 0.00005), "at_most", "not met"),
-        (Figure(0.9989, 0.00005), "at_most", "met"),
+        (Figure(0.9991, 0.00004), "at_most", "not met"),
+        (Figure(0.9989, 0.00004), "at_most", "met"),
         (Figure(0.9989, float("inf")), "at_most", "undecided"),
         (Absent("it does not exist"), "at_least", "undecided"),
     ],

@@ -222,7 +222,7 @@ def judge_density(output: str, law: Law) -> Comparison:
         return Comparison(
             output, "the integral of the density", 0, 0.0, 0.0, True, note="no panel holds probability"
         )
-    worst = int(np.argmax(panels.difference - panels.allowed))
+    worst = int(np.argmax(panels.difference / panels.allowed))  # the panel that comes nearest to failing
     return Comparison(
         output,
         "the integral of the density",

@@ -93,6 +93,8 @@ def _largest(law: Law, knots: Array) -> Finding:
     chosen = max(rivals, key=lambda peak: peak[1])
     if not math.isfinite(chosen[2]):
         return Absent("the density is too flat near its peak for a position to be stated")
+    if not chosen[2] < 0.5 * (knots[-1] - knots[0]):
+        return Absent("the density is not known well enough to tell where it is largest")
     return Figure(chosen[0], chosen[2])
 
 

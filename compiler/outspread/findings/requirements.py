@@ -7,6 +7,7 @@ from collections.abc import Callable, Mapping
 
 from outspread.findings.figures import nearer_tail, quantile
 from outspread.findings.results import Absent, Figure, Finding, Verdict
+from outspread.findings.writing import rounded
 from outspread.formula.tree import Node
 from outspread.laws.law import Law
 from outspread.reading.model import Model, Requirement
@@ -18,7 +19,9 @@ def judge(value: Finding, limit: float, sense: str) -> str:
     """The verdict for a value with its error: no limit inside the error is called met or not met."""
     if isinstance(value, Absent) or not math.isfinite(value.error):
         return "undecided"
-    low, high = value.value - value.error, value.value + value.error
+    # judged on the figures as they are printed, so that a reader who checks them finds the same verdict
+    shown, error = rounded(value.value, value.error)
+    low, high = shown - error, shown + error
     if sense == "at_least":
         return "met" if low >= limit else "not met" if high < limit else "undecided"
     return "met" if high <= limit else "not met" if low > limit else "undecided"

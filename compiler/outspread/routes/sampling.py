@@ -240,12 +240,14 @@ def _judge(weights: Array, density: bool) -> tuple[float, float]:
     value = float(means.mean())
     error = student_factor(means.size) * float(means.std(ddof=1)) / np.sqrt(means.size)
     count = weights.size
-    total, squares = float(weights.sum()), float((weights * weights).sum())
+    total = float(weights.sum())
     if density:
         return value, error if total > 0 else float(np.max(weights, initial=0.0))
     if total == 0:
         return 0.0, 14.0 / count  # nothing seen: exp(-14) < 1e-6 is the chance to miss more than that
-    effective = total * total / squares
+    # weights are scaled first: the squares of tiny ones would underflow
+    largest = float(weights.max())
+    effective = (total / largest) ** 2 / float(((weights / largest) ** 2).sum())
     if effective < 400:  # few points carry the probability: their own scatter is not to be trusted
         error = max(error, 10 * value / np.sqrt(effective))
     return value, error + 1e-14 * value

@@ -106,7 +106,7 @@ def _greatest(
         highs = np.array([[high for _, high in supports]])
     else:
         lows, highs = _cells(grids)
-    best = -np.inf
+    best, at = -np.inf, np.zeros(len(used))
     bound = np.inf
     for _ in range(_ROUNDS):
         with np.errstate(all="ignore"):
@@ -119,7 +119,9 @@ def _greatest(
             values = sign * np.asarray(evaluate(*corner.T), float) + 0.0
         reach = np.where(np.isnan(reach), -np.inf, reach)
         finite = values[~np.isnan(values)]
-        best = max(best, float(finite.max())) if finite.size else best
+        if finite.size and float(finite.max()) > best:
+            best = float(finite.max())
+            at = corner[int(np.nanargmax(values))]
         bound = float(reach.max())
         if bound == np.inf or bound <= best or bound - best <= 1e-14 * max(abs(bound), abs(best)):
             break
@@ -130,7 +132,24 @@ def _greatest(
         lows, highs = _halved(lows, highs)
     if np.isinf(bound):
         return bound, 0.0
-    return bound, max(bound - best, 0.0) if np.isfinite(best) else 0.0
+    if not np.isfinite(best):
+        return bound, 0.0
+    return bound, max(bound - best, 0.0) + _rounding(expression, used, at, best)
+
+
+def _rounding(expression: Node, used: Sequence[str], at: Array, value: float) -> float:
+    """How far the value at an end may be off because its inputs are decimals that were rounded; 0 for an end
+    that is itself a short decimal."""
+    if len(repr(value)) <= 14:
+        return 0.0
+    box = {
+        name: Interval(np.array([np.nextafter(x, -np.inf)]), np.array([np.nextafter(x, np.inf)]))
+        for name, x in zip(used, at.tolist(), strict=True)
+    }
+    with np.errstate(all="ignore"):
+        span = enclose(expression, box)
+    width = float(np.ravel(span.upper)[0] - np.ravel(span.lower)[0])
+    return width if np.isfinite(width) else 0.0
 
 
 def _cells(grids: Sequence[Array]) -> tuple[Array, Array]:
