@@ -54,8 +54,9 @@ class ConditionalInner:
     def between(self, lower: Array, upper: Array, given: Array | None) -> Array:
         assert given is not None
         low, high = np.broadcast_arrays(np.asarray(lower, float), np.asarray(upper, float))
-        a = (normal_score(self.law, low) - given) / self.spread
-        b = (normal_score(self.law, high) - given) / self.spread
+        with np.errstate(invalid="ignore"):  # infinite scores beyond the ends of both
+            a = (normal_score(self.law, low) - given) / self.spread
+            b = (normal_score(self.law, high) - given) / self.spread
         width = None
         if getattr(self.law, "family", "") == "normal":
             # the ends' own difference keeps the digits that their scores round away
@@ -66,8 +67,8 @@ class ConditionalInner:
     def pdf(self, x: Array, given: Array | None) -> Array:
         assert given is not None
         z = normal_score(self.law, x)
-        w = (z - given) / self.spread
         with np.errstate(all="ignore"):
+            w = (z - given) / self.spread
             factor = np.exp(np.minimum(0.5 * (z - w) * (z + w), 700.0)) / self.spread
             value = self.law.pdf(x) * factor
         return np.where(np.isfinite(z), value, 0.0)
