@@ -81,7 +81,8 @@ def _difference(difference: float, allowed: float) -> Value:
     if not (math.isfinite(difference) and 0.0 < allowed < ROUNDING):
         return {"largest_difference": _significant(difference), "allowed": _larger(allowed)}
     power = math.ceil(math.log10(allowed))
-    shown = Decimal(difference).quantize(Decimal(1).scaleb(power - 1), rounding=ROUND_HALF_EVEN, context=_WIDE)
+    place = Decimal(1).scaleb(power - 1)
+    shown = Decimal(difference).quantize(place, rounding=ROUND_HALF_EVEN, context=_WIDE)
     return {"largest_difference": float(shown) + 0.0, "allowed": float(Decimal(1).scaleb(power))}
 
 

@@ -108,10 +108,18 @@ class Boundary:
 
 
 def boundary(where: Sets) -> Boundary:
+    """The moving ends. An interval whose two ends round to one number counts once, with the rate at which it
+    grows: its probability is lost, but not its density nor the rounding error."""
     full = where.lower < where.upper
+    point = (where.lower == where.upper) & np.isfinite(where.lower)
+    growth = np.where(point, where.upper_rate - where.lower_rate, 0.0)
     ends, rates, problems = [], [], []
-    for end, rate in ((where.lower, where.lower_rate), (where.upper, where.upper_rate)):
-        moving = full & (rate != 0) & np.isfinite(end)
+    for kept, end, rate in (
+        (full, where.lower, where.lower_rate),
+        (full, where.upper, where.upper_rate),
+        (point, where.upper, growth),
+    ):
+        moving = kept & (rate != 0) & np.isfinite(end)
         row, problem = np.nonzero(moving)
         ends.append(end[row, problem])
         rates.append(np.abs(rate[row, problem]))

@@ -55,70 +55,57 @@ class Branches:
             if names(node) == (name,):
                 isolator = Isolator(node, Number(0.0), "less_equal", name, grid, parameter)
                 points.append(isolator.boundaries({}, 1)[0])
-        self.ends = np.unique(np.concatenate(points))
+        ends = np.unique(np.concatenate(points))
+        self.start, self.end = ends[:-1], ends[1:]
+        self.low, self.first = self._inside(self.start, self.end, 1.0)
+        self.high, self.last = self._inside(self.end, self.start, -1.0)
+
+    def _inside(self, ends: Array, others: Array, side: float) -> tuple[Array, Array]:
+        """Where a branch begins and its value there: a pole, or a jump that shows as a value which does not
+        continue the branch, is left out by the least step inwards."""
+        inner = 1e-9 * np.abs(others - ends)
+        with np.errstate(all="ignore"):
+            at, near, far = (np.asarray(self.value(x), float) for x in (
+                ends, ends + side * inner, others - side * inner,
+            ))  # fmt: skip
+            jump = ~np.isfinite(at) | (np.abs(at - near) > 0.1 * np.abs(far - near) + 1e-6 * np.abs(near))
+            moved = np.where(jump, np.nextafter(ends, others), ends)
+            return moved, np.where(jump, np.asarray(self.value(moved), float), at)
 
     def solve(self, environment: Mapping[str, Array], count: int) -> Sets:
-        bound = np.broadcast_to(
-            np.asarray(self.right(*(environment[n] for n in self.right_arguments)), float), (count,)
-        )
-        speed = np.broadcast_to(
-            np.asarray(self.rate(*(environment[n] for n in self.right_arguments)), float), (count,)
-        )
-        low, high = self._inside(self.ends[:-1], 1), self._inside(self.ends[1:], -1)
-        rows = []
-        for a, b, start, end in zip(low, high, self.ends[:-1], self.ends[1:], strict=True):
-            rows.append(self._branch(float(a), float(b), float(start), float(end), bound, speed))
-        return sets.compact(sets.stack(rows))
-
-    def _inside(self, ends: Array, side: int) -> Array:
-        """The end of a branch, moved in by the least amount that gives it a value (poles, jumps)."""
-        moved = np.nextafter(ends, side * np.inf)
-        with np.errstate(all="ignore"):
-            at = np.asarray(self.value(ends), float)
-        return np.where(np.isfinite(at), ends, moved)
-
-    def _branch(self, a: float, b: float, start: float, end: float, bound: Array, speed: Array) -> Sets:
-        """One branch on [start, end], its values taken at a and b just inside."""
-        count = bound.size
-        inner = 1e-9 * (end - start)
-        with np.errstate(all="ignore"):
-            first, last = float(self.value(np.float64(a))), float(self.value(np.float64(b)))
-            near, far = float(self.value(np.float64(a + inner))), float(self.value(np.float64(b - inner)))
-        # a jump at an end shows as a value that does not continue the branch: the inner one counts
-        if not np.isfinite(first) or abs(first - near) > 0.1 * abs(far - near) + 1e-6 * abs(near):
-            a, first = float(np.nextafter(a, b)), near if not np.isfinite(first) else first
-            with np.errstate(all="ignore"):
-                first = float(self.value(np.float64(a)))
-        if not np.isfinite(last) or abs(last - far) > 0.1 * abs(far - near) + 1e-6 * abs(far):
-            b = float(np.nextafter(b, a))
-            with np.errstate(all="ignore"):
-                last = float(self.value(np.float64(b)))
-        if np.isnan(first) or np.isnan(last):
-            return sets.nothing(count)
-        rising = last >= first
-        least, most = min(first, last), max(first, last)
-        inside = (bound > least) & (bound < most)
-        index = np.flatnonzero(inside)
+        """One row for each branch."""
+        given = [environment[n] for n in self.right_arguments]
+        bound = np.broadcast_to(np.asarray(self.right(*given), float), (count,))
+        speed = np.broadcast_to(np.asarray(self.rate(*given), float), (count,))
+        first, last = self.first[:, None], self.last[:, None]
+        with np.errstate(invalid="ignore"):
+            least, most = np.minimum(first, last), np.maximum(first, last)
+            rising = last >= first
+            inside = (bound > least) & (bound < most)
+            holds_all = (bound >= most) if self.below else (bound <= least)
+        branch, problem = np.nonzero(inside)
         root, _ = bracketed_root(
-            lambda x, i: np.asarray(self.value(x), float) - bound[index[i]],
-            np.full(index.size, a), np.full(index.size, b), first - bound[index], last - bound[index],
+            lambda x, i: np.asarray(self.value(x), float) - bound[problem[i]],
+            self.low[branch], self.high[branch],
+            self.first[branch] - bound[problem], self.last[branch] - bound[problem],
         )  # fmt: skip
-        rate = np.zeros(count)
+        cut, rate = np.zeros(inside.shape), np.zeros(inside.shape)
         with np.errstate(all="ignore"):
-            rate[index] = speed[index] / np.asarray(self.slope(root), float)
-        rate = np.where(np.isfinite(rate), rate, 0.0)
-        cut = np.full(count, np.nan)
-        cut[index] = root
-        holds_all = bound >= most if self.below else bound <= least
-        from_start = self.below == rising
-        lower = np.where(inside & ~np.asarray(from_start), cut, start)
-        upper = np.where(inside & np.asarray(from_start), cut, end)
+            moving = speed[problem] / np.asarray(self.slope(root), float)
+        cut[branch, problem] = root
+        rate[branch, problem] = np.where(np.isfinite(moving), moving, 0.0)
+        from_start = np.broadcast_to(rising if self.below else ~rising, inside.shape)
         keep = inside | holds_all
-        return Sets(
-            np.where(keep, lower, np.inf)[None], np.where(keep, upper, -np.inf)[None],
-            np.where(inside & (not from_start), rate, 0.0)[None],
-            np.where(inside & from_start, rate, 0.0)[None],
-        )  # fmt: skip
+        lower = np.where(inside & ~from_start, cut, self.start[:, None])
+        upper = np.where(inside & from_start, cut, self.end[:, None])
+        return sets.compact(
+            Sets(
+                np.where(keep, lower, np.inf),
+                np.where(keep, upper, -np.inf),
+                np.where(inside & ~from_start, rate, 0.0),
+                np.where(inside & from_start, rate, 0.0),
+            )
+        )
 
 
 class Isolator:

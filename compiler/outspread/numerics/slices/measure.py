@@ -273,15 +273,23 @@ class PlaneMeasure:
                 # the two slopes lose the same digits at one point: their ratio, unlike slope times rate,
                 # is the same from both charts, so that the shares add up to 1
                 ratio = across / along(local, edge.x.size)
-                ratio = np.where(np.isfinite(ratio), ratio, across * edge.rate)
+                told = np.isfinite(ratio)
+                ratio = np.where(told, ratio, across * edge.rate)
                 share = (ratio * axis.length(local[outer]) / other.length(edge.x)) ** 2
-                density = law.pdf(edge.x, given) * edge.rate / (1 + share)
+                whole = law.pdf(edge.x, given) * edge.rate
+                density = whole / (1 + share)
             density = np.where(np.isfinite(density), density, 0.0)
-            return np.bincount(edge.problem, density, x.size) * axis.weight(x)
+            # where the slopes cannot be told apart any more, all of the density is in doubt
+            lost = np.where(~told & np.isfinite(whole), whole, 0.0)
+            sums = [np.bincount(edge.problem, part, x.size) for part in (density, lost)]
+            return np.stack(sums) * axis.weight(x)
 
-        result = integrate(integrand, lower, upper, owner, count, relative=self.relative, absolute=1e-300)
+        result = integrate(
+            integrand, lower, upper, owner, count, components=2, control=1, relative=self.relative,
+            absolute=1e-300,
+        )  # fmt: skip
         self.effort.evaluations += result.evaluations
-        return Estimates(result.value[0], result.error[0])
+        return Estimates(result.value[0], result.error[0] + result.value[1])
 
     def _panels(
         self, event: Node, environment: Mapping[str, Array], count: int, outer: str, inner: str

@@ -19,7 +19,7 @@ from outspread.laws.law import Array, Law
 from outspread.numerics.slices import cases
 
 MOST_COMBINATIONS = 2_000_000
-MOST_WHOLE_CASES = 2_000
+MOST_WHOLE_CASES = 3_500
 
 
 @dataclass(frozen=True)
