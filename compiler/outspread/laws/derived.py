@@ -44,6 +44,8 @@ class DerivedLaw(Law):
         self._given_tails = tails
         #: added to the error of every cdf and ccdf; a route sets it where a check leaves a doubt
         self.floor_error = 0.0
+        #: interior values at which the density is not smooth, as far as a route finds them
+        self.turning_values: tuple[float, ...] = ()
         self._seen: dict[str, dict[float, tuple[float, float]]] = {kind: {} for kind in KINDS}
         self._quantiles: dict[bool, dict[float, tuple[float, float]]] = {False: {}, True: {}}
         self._table: tuple[Array, Array, Array] | None = None
@@ -350,6 +352,9 @@ class DerivedLaw(Law):
         if self._given_tails is None:
             self._given_tails = (observed_tail(self, -1), observed_tail(self, 1))
         return self._given_tails
+
+    def breaks(self) -> tuple[float, ...]:
+        return self.turning_values
 
     def moment_exists(self, order: float) -> bool:
         return all(tail.exponent > order for tail in self.tails())

@@ -12,13 +12,15 @@ from dataclasses import dataclass
 import numpy as np
 
 from outspread.errors import DerivationError
+from outspread.formula.calculus import derivative, nonsmooth
 from outspread.formula.evaluate import compile_numpy
-from outspread.formula.tree import Name, Node, Number, names
+from outspread.formula.tree import Name, Node, Number, names, substitute
 from outspread.laws.derived import DerivedLaw, Evaluate
 from outspread.laws.law import Array, Atoms, Estimates, Law
 from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
 from outspread.numerics.slices.extent import Extent, extent
+from outspread.numerics.slices.isolate import Isolator
 from outspread.numerics.slices.measure import LineMeasure, PlaneMeasure
 from outspread.numerics.slices.problem import (
     Combinations,
@@ -35,6 +37,7 @@ Measure = LineMeasure | PlaneMeasure
 NO_PARAMETER = np.zeros(1)
 _NODES = 56
 _WORST_TOTAL = 1e-6
+_MOST_TURNS = 400
 _SAME = 2e-13  # values of discrete results closer than this (relatively) are one value
 
 
@@ -86,9 +89,34 @@ def derive(
         evaluate, (spread.lower, spread.upper), nodes, atoms, continuous_mass,
         (spread.lower_error, spread.upper_error),
     )  # fmt: skip
+    law.turning_values = tuple(
+        value for piece in pieces for value in _turning_values(piece) if spread.lower < value < spread.upper
+    )
     result = NumericLaw(law, tuple(pieces))
     _check_whole(result)
     return result
+
+
+def _turning_values(piece: Piece) -> list[float]:
+    """Values at turning points, kinks and breaks of a formula of one continuous input: its density is
+    unbounded or jumps there."""
+    if not isinstance(piece.measure, LineMeasure) or piece.combos.count > 1:
+        return []
+    problem, axis = piece.problem, piece.measure.axis
+    marks = [*problem.laws[axis.name].breaks()]
+    expression = substitute(
+        problem.expression, {name: Number(float(value[0])) for name, value in piece.combos.values.items()}
+    )
+    for node in (derivative(expression, axis.name), *nonsmooth(expression, axis.name)):
+        if names(node) == (axis.name,):
+            finder = Isolator(node, Number(0.0), "less_equal", axis.name, axis.grid, PARAMETER)
+            marks.extend(finder.boundaries({}, 1)[0].tolist())
+    points = np.array(marks, float)
+    with np.errstate(all="ignore"):
+        points = points[axis.law.pdf(points) * axis.scale > 1e-20]  # far out in the tails nothing shows
+        values = np.asarray(compile_numpy(expression, (axis.name,))(points), float)
+    found = sorted(set(values[np.isfinite(values)].tolist()))
+    return found if len(found) <= _MOST_TURNS else []
 
 
 def _tightened(spread: Extent, evaluate: Evaluate, atoms: Atoms) -> Extent:

@@ -86,16 +86,13 @@ def normal_score(law: Law, x: Array) -> Array:
 
 def probability(where: Sets, inner: Inner, given: Array | None = None) -> Array:
     """P(X in set) for each problem: shape (N,)."""
-    total = np.zeros(where.count)
-    for row in range(where.lower.shape[0]):
-        lower, upper = where.lower[row], where.upper[row]
-        full = np.flatnonzero(lower < upper)
-        if full.size == total.size:
-            total += inner.between(lower, upper, given)
-        elif full.size:
-            part = None if given is None else given[full]
-            total[full] += inner.between(lower[full], upper[full], part)
-    return total
+    full = where.lower < where.upper
+    if where.lower.shape[0] == 1 and full.all():
+        return inner.between(where.lower[0], where.upper[0], given)
+    row, problem = np.nonzero(full)
+    part = None if given is None else given[problem]
+    mass = inner.between(where.lower[row, problem], where.upper[row, problem], part)
+    return np.asarray(np.bincount(problem, mass, where.count), float)
 
 
 @dataclass(frozen=True)
