@@ -5,7 +5,7 @@ Closed forms without a source named are the textbook change of variables written
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -24,7 +24,16 @@ from outspread.numerics.slices.problem import Scores
 from outspread.reading.model import Distribution
 from outspread.routes.numeric import derive
 
-mp.mp.dps = 30
+mp.mp.dps = 30  # for the constants of the cases below
+
+
+@pytest.fixture(autouse=True)
+def _thirty_digits() -> Iterator[None]:
+    """Other test files set another working precision for the process."""
+    with mp.workdps(30):
+        yield
+
+
 Function = Callable[[Any], Any]
 
 
