@@ -37,6 +37,10 @@ SLOW = frozenset(
     }
 )
 
+#: Cases of them that take many minutes (both inputs stand in several places, or a formula of dozens of
+#: pieces): marked `long` as well, to be run by hand.
+LONG = frozenset({"o19", "o38"})
+
 _PARAMETERS: dict[str, dict[str, str]] = {
     "normal": {"mean": "mean", "sd": "sd"},
     "uniform": {"low": "lower", "high": "upper"},

@@ -226,10 +226,16 @@ COVERED = [
     pytest.param(
         case,
         id=case["id"],
-        marks=[pytest.mark.slow] if case["id"].split("-")[0] in published.SLOW else [],
+        marks=marks(case["id"].split("-")[0]),
     )
     for case in published.covered()
 ]
+
+
+def marks(number: str) -> list[pytest.MarkDecorator]:
+    """The marks of a case by the number that opens its name."""
+    found = [pytest.mark.slow] if number in published.SLOW else []
+    return [*found, pytest.mark.long] if number in published.LONG else found
 
 
 @pytest.mark.parametrize("case", COVERED)

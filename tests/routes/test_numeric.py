@@ -227,6 +227,7 @@ def test_two_inputs(name: str) -> None:
 
 
 @pytest.mark.slow
+@pytest.mark.long
 @pytest.mark.parametrize("name", SINGULAR)
 def test_two_inputs_with_unbounded_densities(name: str) -> None:
     check(SINGULAR[name])
