@@ -222,6 +222,12 @@ def law_faults(derived: Any, check: published.Check) -> Iterator[str]:
         yield f"{published.label(check)}: law says {ours:.17g}; true error {off:.2e} > stated {allowed:.2e}"
 
 
+def marks(number: str) -> list[pytest.MarkDecorator]:
+    """The marks of a case by the number that opens its name."""
+    found = [pytest.mark.slow] if number in published.SLOW else []
+    return [*found, pytest.mark.long] if number in published.LONG else found
+
+
 COVERED = [
     pytest.param(
         case,
@@ -230,12 +236,6 @@ COVERED = [
     )
     for case in published.covered()
 ]
-
-
-def marks(number: str) -> list[pytest.MarkDecorator]:
-    """The marks of a case by the number that opens its name."""
-    found = [pytest.mark.slow] if number in published.SLOW else []
-    return [*found, pytest.mark.long] if number in published.LONG else found
 
 
 @pytest.mark.parametrize("case", COVERED)
