@@ -37,9 +37,8 @@ SLOW = frozenset(
     }
 )
 
-#: Cases of them that take many minutes (both inputs stand in several places, or a formula of dozens of
-#: pieces): marked `long` as well, to be run by hand.
-LONG = frozenset({"o19", "o38"})
+#: Cases of them that take so long, evidence included, that they are marked `long` as well and run by hand.
+LONG = SLOW
 
 _PARAMETERS: dict[str, dict[str, str]] = {
     "normal": {"mean": "mean", "sd": "sd"},
