@@ -41,7 +41,8 @@ def test_there_are_six() -> None:
 
 
 #: The winch samples, for minutes.
-SLOW = [pytest.param(name, marks=[pytest.mark.slow, pytest.mark.long] if "winch" in name else []) for name in NAMES]
+LONG = [pytest.mark.slow, pytest.mark.long]
+SLOW = [pytest.param(name, marks=LONG if "winch" in name else []) for name in NAMES]
 
 
 @pytest.mark.parametrize("name", SLOW)
