@@ -20,7 +20,7 @@ from outspread.laws.law import Array, Atoms, Estimates, Law
 from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
 from outspread.numerics.slices.extent import Extent, extent
-from outspread.numerics.slices.isolate import Isolator
+from outspread.numerics.slices.isolate import Isolator, TooManyBoundaries
 from outspread.numerics.slices.measure import LineMeasure, PlaneMeasure
 from outspread.numerics.slices.problem import (
     Combinations,
@@ -110,7 +110,10 @@ def _turning_values(piece: Piece) -> list[float]:
     for node in (derivative(expression, axis.name), *nonsmooth(expression, axis.name)):
         if names(node) == (axis.name,):
             finder = Isolator(node, Number(0.0), "less_equal", axis.name, axis.grid, PARAMETER)
-            marks.extend(finder.boundaries({}, 1)[0].tolist())
+            try:
+                marks.extend(finder.boundaries({}, 1)[0].tolist())
+            except TooManyBoundaries:
+                return []
     points = np.array(marks, float)
     with np.errstate(all="ignore"):
         points = points[axis.law.pdf(points) * axis.scale > 1e-20]  # far out in the tails nothing shows

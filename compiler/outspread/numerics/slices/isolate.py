@@ -12,6 +12,7 @@ from collections.abc import Callable, Mapping
 import numpy as np
 import numpy.typing as npt
 
+from outspread.errors import DerivationError
 from outspread.formula.calculus import derivative, nonsmooth
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.interval import Interval, enclose
@@ -27,6 +28,16 @@ _MANY = 300  # problems from which on the quick way is taken
 _AUDIT = 48
 _SMALLEST = 4e-15
 _DEPTH = 64
+_MOST_BOXES = 1_000_000  # undecided at once: beyond this the formula has no end of boundaries
+
+
+class TooManyBoundaries(DerivationError):
+    """The sign changes of a formula cannot be told apart: there are too many, or one never gets isolated."""
+
+    def __init__(self) -> None:
+        super().__init__(
+            "the formula changes its sign at more places than can be told apart; limit the range of its inputs"
+        )
 
 
 Solve = Callable[[Mapping[str, Array], int], Sets]
@@ -204,7 +215,10 @@ class Isolator:
     def boundaries(
         self, environment: Mapping[str, Array], count: int
     ) -> tuple[Array, Index, npt.NDArray[np.bool_]]:
-        """All sign changes (and undecided spots): position, problem, whether it moves with the parameter."""
+        """All sign changes (and undecided spots): position, problem, whether it moves with the parameter.
+
+        Raises TooManyBoundaries.
+        """
         first = np.zeros(count, np.int64)
         last = np.full(count, self.grid.size - 1)
         low, high, owner = self.grid[first], self.grid[last], np.arange(count)
@@ -212,11 +226,15 @@ class Isolator:
         for depth in range(_DEPTH + 12):
             if not low.size:
                 break
+            if low.size > _MOST_BOXES:
+                raise TooManyBoundaries
             box = {key: Interval(value[owner], value[owner]) for key, value in environment.items()}
             box[self.name] = Interval(low, high)
             span = enclose(self.difference, box)
             # an empty enclosure (NaN) lies outside the domain and holds no root
+            # and where it is 0 throughout, nothing changes inside
             possible = np.broadcast_to((span.lower <= 0) & (span.upper >= 0), low.shape)
+            possible = possible & ((span.lower != 0) | (span.upper != 0))
             bounded = np.isfinite(span.lower) & np.isfinite(span.upper)
             bounded = np.broadcast_to(bounded, low.shape)[possible]
             low, high, owner = low[possible], high[possible], owner[possible]
