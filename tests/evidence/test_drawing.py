@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import Any
 
 import numpy as np
@@ -77,13 +77,19 @@ def test_density_by_formula(text: str, lower: float, upper: float, cdf: Any) -> 
     assert distance(draws, cdf) < LIMIT
 
 
+def linear(x: tuple[float, ...], cdf: tuple[float, ...]) -> Callable[[np.ndarray], np.ndarray]:
+    """The distribution function that joins these points by straight lines."""
+    return lambda at: np.interp(at, x, cdf)
+
+
 def test_data() -> None:
     """Table: straight lines; histogram: level classes; sample: its values; observations: scaled t."""
-    table = Distribution("table", {"x": (0.0, 1.0, 3.0), "density": (0.0, 1.0, 0.0)})
+    table = Distribution("table", {"x": (0.0, 1.0, 3.0), "pdf": (0.0, 2 / 3, 0.0)})
     assert distance(draw(table, generator(), COUNT), st.triang(1 / 3, 0, 3).cdf) < LIMIT
+    points = Distribution("table", {"x": (0.0, 1.0, 3.0), "cdf": (0.0, 0.7, 1.0)})
+    assert distance(draw(points, generator(), COUNT), linear((0, 1, 3), (0, 0.7, 1))) < LIMIT
     histogram = Distribution("histogram", {"edges": (0.0, 1.0, 4.0), "counts": (3.0, 1.0)})
-    edges = lambda x: np.interp(x, [0, 1, 4], [0, 0.75, 1])  # noqa: E731
-    assert distance(draw(histogram, generator(), COUNT), edges) < LIMIT
+    assert distance(draw(histogram, generator(), COUNT), linear((0, 1, 4), (0, 0.75, 1))) < LIMIT
     sample = Distribution("sample", {"values": (1.0, 2.0, 2.0, 5.0)})
     drawn = draw(sample, generator(), COUNT)
     assert np.mean(drawn == 2.0) == pytest.approx(0.5, abs=LIMIT)

@@ -62,7 +62,10 @@ def test_many_owners_are_integrated_at_once() -> None:
 
 def test_an_error_that_bisection_cannot_lower_stays_in_the_account() -> None:
     """Noise of size 1e-3 is not integrated to 1e-12, and the error says so."""
-    noise = lambda x, owner: 1 + 1e-3 * np.sin(1e15 * x * x)  # noqa: E731
+
+    def noise(x: Array, owner: Array) -> Array:
+        return 1 + 1e-3 * np.sin(1e15 * x * x)
+
     result = integrate(noise, np.zeros(1), np.ones(1), np.zeros(1, np.int64), 1, most_panels=2_000)
     assert abs(result.value[0, 0] - 1) <= result.error[0, 0]
     assert result.error[0, 0] > 1e-9

@@ -86,7 +86,8 @@ def _elliptical(
     scores = _correlated(generator, count, score_matrix(entry, distributions))
     if entry.family == "gaussian":
         return ndtr(scores), ndtr(-scores)
-    degrees = float(entry.parameters["degrees_of_freedom"])  # type: ignore[arg-type]
+    degrees = entry.parameters["degrees_of_freedom"]
+    assert isinstance(degrees, int | float)  # as the reader of the model makes it
     scores = scores / np.sqrt(generator.chisquare(degrees, count) / degrees)
     return stdtr(degrees, scores), stdtr(degrees, -scores)
 

@@ -58,6 +58,17 @@ def canonical(distribution: Distribution, given: Mapping[str, Array] | None = No
     return {**chosen.defaults, **values}
 
 
+def plain_number(d: Distribution, key: str) -> float:
+    """A parameter that is a number, infinity included.
+
+    Raises DerivationError where it depends on other inputs: such a distribution has no construction yet.
+    """
+    value = d.parameters[key]
+    if not isinstance(value, int | float):
+        raise DerivationError(f"{key} of a {d.family} that depends on other inputs cannot be drawn yet")
+    return float(value)
+
+
 def _whole(d: Distribution, generator: Generator, count: int, given: Mapping[str, Array]) -> Array:
     special = _SPECIAL.get(d.family)
     if special is not None:
@@ -153,7 +164,7 @@ def _density(d: Distribution, generator: Generator, count: int, given: Mapping[s
     if not isinstance(node, Node) or set(names(node)) - {"x"}:
         raise DerivationError("a density that depends on other inputs cannot be drawn yet")
     function = compile_numpy(node, ("x",))
-    support = [float(d.parameters[side]) for side in ("lower", "upper")]  # type: ignore[arg-type]
+    support = [plain_number(d, side) for side in ("lower", "upper")]
     start, width = (0.0, 1.0) if any(np.isinf(support)) else (support[0], support[1] - support[0])
     cells = 4096
 
@@ -203,9 +214,14 @@ def _stretched(t: Array, support: list[float]) -> tuple[Array, Array]:
 
 
 def _table(d: Distribution, generator: Generator, count: int, given: Mapping[str, Array]) -> Array:
-    """A density that is linear between points: a segment by its area, in it a mixture of two triangles."""
+    """Points joined by straight lines. A density: a segment by its area, in it a mixture of two triangles. A
+    distribution function: a segment by its rise, uniform in it."""
     x = np.asarray(d.parameters["x"], float)
-    height = np.asarray(d.parameters["density"], float)
+    if "cdf" in d.parameters:
+        rise = np.diff(np.asarray(d.parameters["cdf"], float))
+        segment, fraction = generator.choice(rise.size, size=count, p=rise / rise.sum()), generator.random(count)
+        return np.asarray(x[segment] + fraction * (x[segment + 1] - x[segment]))
+    height = np.asarray(d.parameters["pdf"], float)
     area = 0.5 * (height[1:] + height[:-1]) * np.diff(x)
     segment = generator.choice(area.size, size=count, p=area / area.sum())
     left, right = height[segment], height[segment + 1]
@@ -229,14 +245,10 @@ def _sample(d: Distribution, generator: Generator, count: int, given: Mapping[st
 
 def _observations(d: Distribution, generator: Generator, count: int, given: Mapping[str, Array]) -> Array:
     """Scaled and shifted t with count - 1 degrees of freedom (JCGM 101:2008, 6.4.9.2)."""
-    number = d.parameters["count"]
-    mean, sd = d.parameters["mean"], d.parameters["sd"]
-    if not all(isinstance(value, int | float) for value in (number, mean, sd)):
-        raise DerivationError("observations that depend on other inputs cannot be drawn yet")
-    size = float(number)  # type: ignore[arg-type]
+    mean, sd, size = (plain_number(d, key) for key in ("mean", "sd", "count"))
     normal, square = generator.standard_normal(count), generator.chisquare(size - 1, count)
     standard = normal / np.sqrt(square / (size - 1))
-    return np.asarray(float(mean) + float(sd) / np.sqrt(size) * standard)  # type: ignore[arg-type]
+    return np.asarray(mean + sd / np.sqrt(size) * standard)
 
 
 _SPECIAL = {
