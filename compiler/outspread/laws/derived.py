@@ -6,12 +6,13 @@ decides from the tails which moments exist. It knows nothing of formulas or inpu
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 
 import numpy as np
 import numpy.typing as npt
 
 from outspread.laws.law import Array, Atoms, Estimates, Law
+from outspread.laws.tabulated import Tabulated
 from outspread.laws.tails import Tail, observed_tail
 from outspread.numerics.roots import bracketed_root
 
@@ -34,6 +35,7 @@ class DerivedLaw(Law):
         tails: tuple[Tail, Tail] | None = None,
     ):
         self._evaluate = evaluate
+        self._tabulated: Tabulated | None = None
         self._support = support
         self.support_error = support_error
         self._atoms = Atoms.none() if atoms is None else atoms
@@ -51,12 +53,35 @@ class DerivedLaw(Law):
         self._table: tuple[Array, Array, Array] | None = None
         self._moments: tuple[Estimates, Array] | None = None
 
+    def tabulate(self, knots: Sequence[float] = ()) -> None:
+        """Keep the continuous part on panels from here on (`laws.tabulated`); `knots` are values at which it
+        may not be smooth, atoms and ends of the support apart. For routes whose every value is dear."""
+        if self._continuous_mass == 0 or self._tabulated:
+            return
+        low, centre, high = self.rough_quantile(np.array([0.16, 0.5, 0.84])).tolist()
+        scale = max(high - low, 1e-12 * abs(centre), 1e-300)
+        marks = {*knots, *self.turning_values, *self._atoms.values.tolist()}
+        if centre in marks:  # an atom holds the middle
+            centre += 0.1 * scale
+        table = Tabulated(
+            self._evaluate, self._support, sorted(marks), centre, scale, self._continuous_mass
+        )
+        self._evaluate, self._tabulated = table, table
+        self._seen = {kind: {} for kind in KINDS}
+        self._quantiles = {False: {}, True: {}}
+        self._table = None
+
     # --- values with errors -------------------------------------------------------------------------
 
     def estimate(self, kind: str, y: npt.ArrayLike) -> Estimates:
         """pdf, cdf or ccdf at y with bounds on the absolute errors."""
         points = np.asarray(y, float)
         flat = points.ravel()
+        if self._tabulated:
+            known = ~np.isnan(flat)
+            found = np.full((2, flat.size), np.nan)
+            found[:, known] = self._compute(kind, flat[known])
+            return Estimates(found[0].reshape(points.shape), found[1].reshape(points.shape))
         seen = self._seen[kind]
         missing = np.array(list(dict.fromkeys(v for v in flat.tolist() if v not in seen and v == v)))
         if missing.size:

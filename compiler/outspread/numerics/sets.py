@@ -123,6 +123,17 @@ def union(left: Sets, right: Sets) -> Sets:
     return compact(Sets(result_lower, upper, result_lower_rate, upper_rate))
 
 
+def symmetric_difference(left: Sets, right: Sets) -> Sets:
+    """What is in one of the two but not in both: between the ends of both, in order, every second gap."""
+    both = stack([left, right])
+    empty = ~(both.lower < both.upper)
+    ends = np.concatenate([np.where(empty, np.inf, both.lower), np.where(empty, np.inf, both.upper)])
+    rates = np.concatenate([both.lower_rate, both.upper_rate])
+    order = np.argsort(ends, axis=0, kind="stable")
+    ends, rates = np.take_along_axis(ends, order, 0), np.take_along_axis(rates, order, 0)
+    return compact(Sets(ends[0::2], ends[1::2], rates[0::2], rates[1::2]))
+
+
 def complement(sets: Sets) -> Sets:
     """What is not in the sets."""
     empty = ~(sets.lower < sets.upper)

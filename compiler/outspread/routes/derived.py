@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 
+from outspread.formula.tree import Node
 from outspread.laws.law import Array, Law
 
 
@@ -39,6 +40,32 @@ class SymbolicDensity:
 
 
 @dataclass(frozen=True)
+class SymbolicBranch:
+    """One limit of a region as written: `value` in the names of the outer input and of the result's value,
+    `slope` its derivative by that value; a solution where all `conditions` hold and it is a real number."""
+
+    value: Node
+    slope: Node
+    conditions: tuple[Node, ...] = ()
+
+
+@dataclass(frozen=True)
+class SymbolicIntegral:
+    """A density written as an integral over one input, f(y) = ∫ f(x, z_k(y, x)) |∂z_k/∂y| dx summed over the
+    branches z_k, for evidence that evaluates what is written.
+
+    `outer` and `inner` name the inputs x and z, `value` the name of y in the branches. Where the integral
+    is not written in symbols, or is not the whole density, `missing` says why and there are no branches.
+    """
+
+    inner: str
+    outer: str
+    value: str
+    branches: tuple[SymbolicBranch, ...] = ()
+    missing: str = ""
+
+
+@dataclass(frozen=True)
 class DerivedOutput:
     """The law of one output with its written-out derivation.
 
@@ -49,7 +76,7 @@ class DerivedOutput:
     route: str
     law: Law
     mathematics: tuple[Statement, ...] = ()
-    symbolic: SymbolicDensity | None = None
+    symbolic: SymbolicDensity | SymbolicIntegral | None = None
     numeric: Law | None = None
     evaluations: int = 0
     assumptions: tuple[str, ...] = ()

@@ -63,6 +63,7 @@ class Engine:
             text = writing.sampling(output, step, self.symbols)
             return DerivedOutput(output.name, step.route, law, text, evaluations=evaluations)
         result = numeric.derive(output.expression, self._used(output.expression), self.scores, step.outer)
+        numeric.tabulate(result)
         text, symbolic = writing.numeric(output, step, self.laws, self.symbols, result)
         return DerivedOutput(
             output.name, step.route, result.law, text, symbolic, evaluations=result.evaluations

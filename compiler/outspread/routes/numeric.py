@@ -21,6 +21,7 @@ from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
 from outspread.numerics.slices.extent import Extent, extent
 from outspread.numerics.slices.isolate import Isolator, TooManyBoundaries
+from outspread.numerics.slices.landmarks import MOST, landmarks
 from outspread.numerics.slices.measure import LineMeasure, PlaneMeasure
 from outspread.numerics.slices.problem import (
     Combinations,
@@ -95,6 +96,23 @@ def derive(
     result = NumericLaw(law, tuple(pieces))
     _check_whole(result)
     return result
+
+
+def tabulate(result: NumericLaw) -> None:
+    """Keep the law on panels where its values are integrals, each of them dear (`laws.tabulated`)."""
+    planes = [piece for piece in result.pieces if isinstance(piece.measure, PlaneMeasure)]
+    if planes:
+        low, high = result.law.support()
+        marks = {value for piece in planes for value in _landmarks(piece) if low < value < high}
+        result.law.tabulate(sorted(marks) if len(marks) <= 2 * MOST else ())
+
+
+def _landmarks(piece: Piece) -> tuple[float, ...]:
+    assert isinstance(piece.measure, PlaneMeasure)
+    axes = piece.measure.axes
+    grids = {name: axis.grid for name, axis in axes.items()}
+    marks = {name: np.array(axis.breaks, float) for name, axis in axes.items()}
+    return landmarks(piece.problem.expression, piece.problem.laws, grids, marks, piece.combos)
 
 
 def _turning_values(piece: Piece) -> list[float]:

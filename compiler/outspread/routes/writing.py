@@ -15,11 +15,11 @@ from outspread.formula.calculus import derivative
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.latex import estimated_width, symbol_for, to_latex
 from outspread.formula.latex_lines import breakable
-from outspread.formula.tree import Name, Node, Number, names, rebuild
+from outspread.formula.tree import Apply, Name, Node, Number, names, occurrences, rebuild, walk
 from outspread.laws.law import Array, Law
 from outspread.planning.plan import PlanStep
 from outspread.reading.model import Constant, Input, Model, Output
-from outspread.routes.derived import Statement, SymbolicDensity
+from outspread.routes.derived import Statement, SymbolicBranch, SymbolicDensity, SymbolicIntegral
 from outspread.routes.jacobian.branches import Branch, branches_for
 from outspread.routes.numeric import NumericLaw
 
@@ -41,11 +41,12 @@ def symbols(model: Model) -> dict[str, str]:
 
 def numeric(
     output: Output, step: PlanStep, laws: Mapping[str, Law], symbols: Mapping[str, str], result: NumericLaw
-) -> tuple[tuple[Statement, ...], SymbolicDensity | None]:
-    """The statements of a derivation by enumeration, change of variables or region integral."""
+) -> tuple[tuple[Statement, ...], SymbolicDensity | SymbolicIntegral | None]:
+    """The statements of a derivation by enumeration, change of variables or region integral, and the
+    density as it is written in them."""
     writer = _Writer(output, laws, symbols)
     statements: list[Statement] = [writer.definition()]
-    symbolic = None
+    symbolic: SymbolicDensity | SymbolicIntegral | None = None
     if step.route == "enumeration":
         statements += writer.enumeration(step)
     elif step.route == "change_of_variables":
@@ -53,8 +54,9 @@ def numeric(
         statements += more
     else:
         statements += writer.region(step.inner, step.outer[0], step, result)
+        symbolic = writer.integral(step)
     statements += writer.atoms(result.law.atoms().values.size if result.law.continuous_mass else 0)
-    if symbolic is not None:
+    if isinstance(symbolic, SymbolicDensity):
         symbolic = replace(symbolic, latex=symbolic.latex.replace(VALUE, writer.letter))
     return writer.finished(statements), symbolic
 
@@ -262,6 +264,27 @@ class _Writer:
             )
         return statements
 
+    def integral(self, step: PlanStep) -> SymbolicIntegral:
+        """The density of a region integral as written, or why it is not written in symbols."""
+        inner, outer = step.inner, step.outer[0]
+        found = self.branches(inner)
+        missing = ""
+        if found is None:
+            missing = f"the formula has no inverse in {inner} that can be written"
+        elif any(branch.parameters for branch in found):
+            missing = f"the inverse in {inner} has infinitely many branches"
+        elif _flattens(self.expression, inner):
+            missing = f"the formula does not depend on {inner} everywhere, which adds to what is written"
+        elif len(names(self.expression)) > 2:
+            missing = "the integral is summed over the values of discrete inputs"
+        if missing or found is None:
+            return SymbolicIntegral(inner, outer, self.value, (), missing)
+        branches = tuple(
+            SymbolicBranch(branch.value, derivative(branch.value, self.value), branch.conditions)
+            for branch in found
+        )
+        return SymbolicIntegral(inner, outer, self.value, branches)
+
     def atoms(self, count: int) -> list[Statement]:
         if not count:
             return []
@@ -273,6 +296,14 @@ class _Writer:
                 rf"P({self.y}=c)=P\left(\{{g=c\}}\right)", "note",
             )
         ]  # fmt: skip
+
+
+def _flattens(expression: Node, name: str) -> bool:
+    """Whether a minimum or maximum stands around the input, so that the formula stops depending on it."""
+    return any(
+        isinstance(part, Apply) and part.operator in ("min", "max") and occurrences(part, name) > 0
+        for part in walk(expression)
+    )
 
 
 def _shown(node: Node) -> Node:

@@ -36,7 +36,7 @@ class TooManyBoundaries(DerivationError):
 
     def __init__(self) -> None:
         super().__init__(
-            "the formula changes its sign at more places than can be told apart; limit the range of its inputs"
+            "the formula changes its sign at more places than can be told apart; limit its inputs' ranges"
         )
 
 

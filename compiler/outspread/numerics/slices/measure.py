@@ -223,6 +223,7 @@ class PlaneMeasure:
             relative=self.relative,
             absolute=1e-300,
             control=1,
+            noise=1,
         )
         self.effort.evaluations += result.evaluations
         error = result.error[0] + np.abs(result.value[1]) + self._relative_error * result.value[0]
@@ -258,6 +259,7 @@ class PlaneMeasure:
         axis, other, law = self.axes[outer], self.axes[inner], self.laws[inner]
         solver = self._solver(event, inner)
         slope, along = self._slopes[outer], self._slopes[inner]
+        ends = self.problem.laws[inner].support()
         lower, upper, owner = self._panels(event, environment, count, outer, inner)
 
         def integrand(t: Array, who: Index) -> Array:
@@ -278,15 +280,20 @@ class PlaneMeasure:
                 share = (ratio * axis.length(local[outer]) / other.length(edge.x)) ** 2
                 whole = law.pdf(edge.x, given) * edge.rate
                 density = whole / (1 + share)
+                # close to an end of the law, rounding moves the point by a share of its distance to it
+                shift = ROUNDING * (np.abs(local[PARAMETER]) * edge.rate + np.abs(edge.x))
+                near = np.minimum(np.abs(edge.x - ends[0]), np.abs(edge.x - ends[1]))
+                blurred = density * np.minimum(4 * shift / near, 1.0)
             density = np.where(np.isfinite(density), density, 0.0)
             # where the slopes cannot be told apart any more, all of the density is in doubt
             lost = np.where(~told & np.isfinite(whole), whole, 0.0)
+            lost += np.where(np.isfinite(blurred), blurred, 0.0)
             sums = [np.bincount(edge.problem, part, x.size) for part in (density, lost)]
             return np.stack(sums) * axis.weight(x)
 
         result = integrate(
             integrand, lower, upper, owner, count, components=2, control=1, relative=self.relative,
-            absolute=1e-300,
+            absolute=1e-300, noise=1,
         )  # fmt: skip
         self.effort.evaluations += result.evaluations
         return Estimates(result.value[0], result.error[0] + result.value[1])

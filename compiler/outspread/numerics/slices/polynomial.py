@@ -115,9 +115,7 @@ def quadratic_program(
 
     def quotient(environment: Environment, count: int) -> Sets:
         one, two = top_negative(environment, count), bottom_negative(environment, count)
-        differ = sets.union(
-            sets.intersect(one, sets.complement(two)), sets.intersect(two, sets.complement(one))
-        )
+        differ = sets.symmetric_difference(one, two)
         return differ if below else sets.complement(differ)
 
     return quotient
