@@ -8,6 +8,7 @@ from __future__ import annotations
 import math
 import subprocess
 import sys
+from fractions import Fraction
 from pathlib import Path
 
 import numpy as np
@@ -19,6 +20,7 @@ from outspread.formula.evaluate import compile_numpy
 from outspread.formula.parser import parse, parse_event
 from outspread.formula.tree import names
 from outspread.formula.unit import parse_unit
+from outspread.formula.unit_table import usual_unit, usual_words
 from outspread.formula.units import resolve_units, same_dimension, unit_is_known
 
 UNITS = {
@@ -258,11 +260,33 @@ def test_a_damaged_cache_of_unit_definitions_is_passed_over(
     assert unit_words._registry.__wrapped__().parse_units("mm") is not None
 
 
-def test_formulas_without_units_do_not_load_the_unit_library() -> None:
+def test_usual_units_are_those_of_the_unit_library() -> None:
+    """Factor, dimension and angle of every word of the table, as exact fractions, against pint's definitions.
+
+    But for mcd, which pint reads as a millionth of a day and the SI Brochure (9th edition, tables 2 and 7) as
+    the millicandela.
+    """
+    words = usual_words()
+    assert len(words) > 1500
+    differing = [word for word in words if usual_unit(word) != unit_words.library_definition(word)]
+    assert differing == ["mcd"]
+    assert usual_unit("mcd") == (Fraction(1, 1000), (("candela", Fraction(1)),), Fraction(0))
+
+
+@pytest.mark.parametrize("word", ["hbar", "mmm", "kmin", "metres", "furlong", "m2", "kkg", "millim", "k", ""])
+def test_other_words_are_left_to_the_unit_library(word: str) -> None:
+    """No prefix without a unit, none twice, none on a unit that takes none, and no symbol after a name."""
+    assert usual_unit(word) is None
+
+
+@pytest.mark.parametrize(
+    "unit", ["", "kg*m^2/s^2", "N*mm", "degC", "dBm", "µm", "°", "%", "1/K", "kilonewton", "mW/Hz"]
+)
+def test_formulas_in_usual_units_do_not_load_the_unit_library(unit: str) -> None:
     code = (
         "import sys; from outspread.formula.parser import parse\n"
         "from outspread.formula.units import resolve_units\n"
-        "resolve_units(parse('x + y'), {'x': ''}, '', 'x + y')\n"
+        f"resolve_units(parse('x - y'), {{'x': {unit!r}, 'y': {unit!r}}}, None, 'x - y')\n"
         "print([m for m in ('pint', 'scipy', 'sympy', 'ziamath') if m in sys.modules])"
     )
     done = subprocess.run(
