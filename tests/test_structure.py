@@ -27,7 +27,7 @@ ROAD = ("reading", "planning", "routes", "evidence", "findings", "reporting", "c
 LONGEST_MODULE = 400  # lines
 
 HEAVY = ("numpy", "scipy", "sympy", "pint", "matplotlib", "weasyprint", "ziamath", "jsonschema", "jinja2")
-HEAVY_FOR_CHECK = ("matplotlib", "weasyprint", "ziamath", "sympy", "scipy.stats")
+HEAVY_FOR_CHECK = ("matplotlib", "weasyprint", "ziamath", "sympy", "scipy", "pint")
 
 TEN_INPUTS = """\
 outspread: 1
@@ -258,7 +258,10 @@ def test_help_loads_nothing_heavy() -> None:
 
 
 def test_check_loads_no_library_of_later_stops(tmp_path: Path) -> None:
-    """`outspread check` reads and plans; it loads no plots, no typesetting, no symbolic engine."""
+    """`outspread check` reads and plans: no plots, no typesetting, no symbolic engine, for normal inputs (cut
+    ones too) no special functions, and for usual units no library of them."""
     model = tmp_path / "ten.yaml"
-    model.write_text(TEN_INPUTS, encoding="utf-8")
+    cut = TEN_INPUTS.replace("sd: 0.01}}}", "sd: 0.01}}, truncate: {lower: -9, upper: 9}}", 5)
+    assert cut.count("truncate") == 5
+    model.write_text(cut, encoding="utf-8")
     assert not set(loaded_by("check", str(model))) & set(HEAVY_FOR_CHECK)

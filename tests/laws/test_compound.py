@@ -75,6 +75,23 @@ def test_quantiles_next_to_a_cut_are_not_rounded_away() -> None:
     assert float(law.icdf(1e-200)) == pytest.approx(1e-200 * np.sqrt(np.pi / 2), rel=1e-14)
 
 
+@pytest.mark.parametrize("family", ["normal", "lognormal"])
+def test_what_an_elementary_bound_promises_is_there(family: str) -> None:
+    """Where a law surely meets an interval, scipy finds more than 0.1 of it there; not all are left open."""
+    names, published = (
+        (("mean", "sd"), stats.norm(1.5, 0.4))
+        if family == "normal"
+        else (("log_mean", "log_sd"), stats.lognorm(0.4, scale=np.exp(1.5)))
+    )
+    law = law_of(family, dict(zip(names, (1.5, 0.4), strict=True)))
+    edges = [-np.inf, -3.0, 0.0, *published.ppf([1e-9, 0.01, 0.2, 0.4, 0.6, 0.8, 0.99, 1 - 1e-9]), np.inf]
+    sure = [(a, b) for a in edges for b in edges if law.surely_meets(a, b)]
+    assert all(published.cdf(b) - published.cdf(a) > 0.1 for a, b in sure)
+    assert (edges[4], edges[9]) in sure
+    assert (edges[5], edges[9]) not in sure
+    assert not law.surely_meets(edges[9], edges[4])
+
+
 def test_truncating_a_discrete_law_renormalises_its_atoms() -> None:
     """Zero-truncated Poisson: mean λ / (1 - exp(-λ)); the limits themselves stay."""
     law = law_of("poisson", {"mean": 3.0}, lower=1.0)

@@ -122,6 +122,13 @@ class Law(ABC):
         both = np.where(above < 0.5, 1 - below - above, left)
         return np.where(upper > lower, np.maximum(np.where(below < 0.5, both, right), 0.0), 0.0)
 
+    def surely_meets(self, lower: float, upper: float) -> bool:
+        """Whether an elementary bound shows that P(lower < X < upper) is above 0.1, without working it out.
+
+        False where it does not, or where no such bound is at hand.
+        """
+        return False
+
     # Moments: nan = does not exist, inf = diverges.
     @abstractmethod
     def mean(self) -> float: ...

@@ -27,12 +27,11 @@ def truncate(base: Law, lower: float | None, upper: float | None) -> Law:
     if lower is not None and upper is not None and not lower < upper:
         message = f"upper is {upper:g} and lower is {lower:g}, and upper above lower would be right"
         raise LawError(message, "upper")
-    mass = float(base.between(np.nextafter(least, -INF), most)) if least <= most else 0.0
-    if not mass > 1e-280:
+    if not base.surely_meets(least, most) and not _mass(base, least, most) > 1e-280:
         blamed = "upper" if lower is None or most < lower else "lower"
         raise LawError(
-            f"the limits leave probability {mass:g}, and limits that meet the distribution"
-            f" (from {low:g} to {high:g}) would be right",
+            f"the limits leave probability {_mass(base, least, most):g}, and limits that meet the"
+            f" distribution (from {low:g} to {high:g}) would be right",
             blamed,
         )
     if base.continuous_mass == 0:
@@ -41,16 +40,21 @@ def truncate(base: Law, lower: float | None, upper: float | None) -> Law:
         law: Law = PointLaw(atoms.values[kept], atoms.masses[kept] / np.sum(atoms.masses[kept]))
         law.relative_error = 2 * base.relative_error + 1e-14
     else:
-        law = TruncatedLaw(base, least, most, mass)
+        law = TruncatedLaw(base, least, most)
     law.name = f"Truncated {base.name[0].lower()}{base.name[1:]}" if base.name else ""
     return law
+
+
+def _mass(base: Law, lower: float, upper: float) -> float:
+    """P(lower <= X <= upper)."""
+    return float(base.between(np.nextafter(lower, -INF), upper)) if lower <= upper else 0.0
 
 
 class TruncatedLaw(Law):
     """`base` between `lower` and `upper` (infinite: not cut), divided by its probability `mass` there."""
 
-    def __init__(self, base: Law, lower: float, upper: float, mass: float):
-        self.base, self.lower, self.upper, self.mass = base, lower, upper, mass
+    def __init__(self, base: Law, lower: float, upper: float):
+        self.base, self.lower, self.upper = base, lower, upper
         #: the point up to which probability is taken away: an atom on the limit itself stays
         self._smooth = base.atoms().values.size == 0
         self._open_lower = lower if self._smooth else float(np.nextafter(lower, -INF))
@@ -58,6 +62,10 @@ class TruncatedLaw(Law):
         # a tail that is cut has all moments
         first, last = base.tail_orders()
         self.moment_order = min(INF if np.isfinite(lower) else first, INF if np.isfinite(upper) else last)
+
+    @cached_property
+    def mass(self) -> float:
+        return _mass(self.base, self.lower, self.upper)
 
     def support(self) -> tuple[float, float]:
         return (self.lower, self.upper)

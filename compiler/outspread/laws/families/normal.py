@@ -50,6 +50,9 @@ class Normal(ScaledLaw):
             width = (high - low) / self.scale
         return normal_between(self._standardise(low), self._standardise(high), width)
 
+    def surely_meets(self, lower: float, upper: float) -> bool:
+        return _by_chebyshev((lower - self.location) / self.scale, (upper - self.location) / self.scale)
+
 
 class Lognormal(ScaledLaw):
     """exp(log_mean + log_sd * Z)."""
@@ -96,6 +99,17 @@ class Lognormal(ScaledLaw):
             low = self._normal(np.maximum(np.asarray(lower, float), 0.0))
             high = self._normal(np.maximum(np.asarray(upper, float), 0.0))
         return normal_between(*np.broadcast_arrays(low, high))
+
+    def surely_meets(self, lower: float, upper: float) -> bool:
+        if not upper > 0:
+            return False
+        low, high = (np.log(x) if x > 0 else -INF for x in (lower, upper))
+        return _by_chebyshev((low - self.log_mean) / self.log_sd, (high - self.log_mean) / self.log_sd)
+
+
+def _by_chebyshev(low: float, high: float) -> bool:
+    """P(low < Z < high) > 0.1 because P(|Z| < d) > 1 - 1/d² for a standardised variable."""
+    return bool(min(-low, high) > 1.1)
 
 
 def _normal_from_quantiles(p1: float, x1: float, p2: float, x2: float) -> Parameters:
