@@ -223,7 +223,7 @@ def _compare(model: Model, outputs: tuple[DerivedOutput, ...], sample: Sample) -
     found: list[Comparison] = []
     second: Sample | None = None
     for derived in outputs:
-        found.extend(judge_output(derived, sample))
+        found.extend(judge_output(derived, sample, model))
         if derived.route == "sampling":
             second = second or draw_sample(model, stream=SECOND_STREAM)
             draws = second.outputs[derived.output]

@@ -8,15 +8,20 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
+from outspread.evidence.adaptive import Index
 from outspread.evidence.comparison import Comparison
 from outspread.evidence.drawing import Sample
 from outspread.evidence.integrating import integrate_density
+from outspread.evidence.marginal_density import NotWritten
 from outspread.evidence.stating import Graded, StatesErrors, central_nodes, stated
-from outspread.laws.law import Array, Law
-from outspread.routes.derived import DerivedOutput
+from outspread.evidence.written import written_density
+from outspread.laws.law import Array, Estimates, Law
+from outspread.reading.model import Model
+from outspread.routes.derived import DerivedOutput, SymbolicDensity, SymbolicIntegral
 
 CONFIDENCE = 0.9999
 FIRST_POINTS = 401
@@ -24,6 +29,10 @@ FIRST_POINTS = 401
 POINTS_AT_MOST, POINTS_OF_COSTLY = 200_000, 401
 CURVE_POINTS = 400
 COMPARED_POINTS = 200
+#: tail probability to which a density written as an integral is evaluated
+INTEGRAL_TAIL = 1e-3
+#: relative difference below which two densities are one: the ten digits that a route promises
+TEN_DIGITS = 1e-10
 #: share of the scale of a law within which a draw is taken to be at an atom: rounding of the formula
 SNAP = 1e-11
 
@@ -33,8 +42,11 @@ def band(count: int, confidence: float = CONFIDENCE) -> float:
     return math.sqrt(math.log(2.0 / (1.0 - confidence)) / (2.0 * count))
 
 
-def judge_output(derived: DerivedOutput, sample: Sample) -> tuple[Comparison, ...]:
-    """Everything that can be compared for one output, in a fixed order."""
+def judge_output(
+    derived: DerivedOutput, sample: Sample, model: Model | None = None
+) -> tuple[Comparison, ...]:
+    """Everything that can be compared for one output, in a fixed order. Without the model, a density that
+    is written as an integral is not evaluated."""
     found: list[Comparison] = [
         judge_sample(derived.output, derived.law, sample.outputs[derived.output], sample.label)
     ]
@@ -43,8 +55,13 @@ def judge_output(derived: DerivedOutput, sample: Sample) -> tuple[Comparison, ..
         found.append(judge_density(derived.output, derived.law))
     if derived.numeric is not None:
         found.append(judge_law(derived.output, derived.law, derived.numeric))
-    if derived.symbolic is not None:
-        found.append(judge_symbolic(derived))
+    if isinstance(derived.symbolic, SymbolicDensity):
+        found.append(judge_symbolic(derived.output, derived.law, derived.symbolic))
+    elif derived.symbolic is not None and derived.law.continuous_mass > 0.0 and model is not None:
+        try:
+            found.append(judge_integral(derived.output, derived.law, derived.symbolic, model))
+        except NotWritten as reason:  # said beside the check of the density that could be made
+            found[-1] = replace(found[-1], note=f"not compared with a formula of the density: {reason}")
     return tuple(found)
 
 
@@ -274,20 +291,56 @@ def judge_law(output: str, law: Law, numeric: Law) -> Comparison:
     return _worst(output, "the numeric law, for the closed form", points.size, away, allowed)
 
 
-def judge_symbolic(derived: DerivedOutput) -> Comparison:
+def judge_symbolic(output: str, law: Law, symbolic: SymbolicDensity) -> Comparison:
     """The density written as a formula against the density of the law at 200 points."""
-    assert derived.symbolic is not None
-    points = comparison_points(derived.law)
+    points = comparison_points(law)
     with np.errstate(all="ignore"):
-        written = np.asarray(derived.symbolic.function(points), float)
-    rows = stated(derived.law, "pdf", points)
+        written = np.asarray(symbolic.function(points), float)
+    rows = stated(law, "pdf", points)
     finite = np.isfinite(rows.value)
     away = np.abs(written - rows.value)[finite]
     # a closed formula evaluated in double precision: rounding only, relative to its value
     allowed = (rows.error + 1e-10 * np.abs(rows.value))[finite]
-    return _worst(
-        derived.output, "the symbolic density", points.size, [np.zeros(1), away], [np.zeros(1), allowed]
-    )
+    return _worst(output, "the symbolic density", points.size, [np.zeros(1), away], [np.zeros(1), allowed])
+
+
+def judge_integral(output: str, law: Law, symbolic: SymbolicIntegral, model: Model) -> Comparison:
+    """The density written as an integral, evaluated by itself, against that of the law at 200 quantiles.
+
+    Differences are relative to the density. Allowed are the error that the law states, the bounds on the
+    quadrature and on the rounding of what is written, and at least 1e-10. A difference is looked at again
+    with a finer net of points before it counts. Raises NotWritten where there is nothing to evaluate.
+    """
+    points = body_points(law)
+    rows = stated(law, "pdf", points)
+    positive = np.isfinite(rows.value) & (rows.value > 0.0)
+    points, value, error = points[positive], rows.value[positive], rows.error[positive]
+    written = written_density(symbolic, model, points)
+
+    def relative(found: Estimates, at: Index) -> tuple[Array, Array]:
+        away, limit = np.abs(found.value - value[at]) / value[at], (found.error + error[at]) / value[at]
+        return away, np.maximum(limit, TEN_DIGITS)
+
+    everywhere = np.arange(points.size)
+    away, allowed = relative(written, everywhere)
+    doubtful = everywhere[~(away <= allowed)]
+    if doubtful.size:
+        again = written_density(symbolic, model, points[doubtful], finer=8)
+        away[doubtful], allowed[doubtful] = relative(again, doubtful)
+    against = f"the density as written, an integral over {symbolic.outer} (relative difference)"
+    return _worst(output, against, points.size, [np.zeros(1), away], [np.zeros(1), allowed])
+
+
+def body_points(law: Law, count: int = COMPARED_POINTS, tail: float = INTEGRAL_TAIL) -> Array:
+    """About `count` quantiles at equal steps of probability from `tail` to 1 - `tail`, without points at
+    which the law is not smooth; read off the nodes of a law whose quantiles are costly."""
+    levels = np.linspace(tail, 1.0 - tail, count)
+    if isinstance(law, Graded):
+        nodes = central_nodes(law, 0.1 * tail)
+        points = np.interp(levels, np.maximum.accumulate(np.asarray(law.cdf(nodes), float)), nodes)
+    else:
+        points = np.asarray(law.icdf(levels), float)
+    return _apart_from_marks(law, np.unique(points[np.isfinite(points)]))
 
 
 def _worst(

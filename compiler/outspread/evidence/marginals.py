@@ -219,7 +219,8 @@ def _table(d: Distribution, generator: Generator, count: int, given: Mapping[str
     x = np.asarray(d.parameters["x"], float)
     if "cdf" in d.parameters:
         rise = np.diff(np.asarray(d.parameters["cdf"], float))
-        segment, fraction = generator.choice(rise.size, size=count, p=rise / rise.sum()), generator.random(count)
+        segment = generator.choice(rise.size, size=count, p=rise / rise.sum())
+        fraction = generator.random(count)
         return np.asarray(x[segment] + fraction * (x[segment + 1] - x[segment]))
     height = np.asarray(d.parameters["pdf"], float)
     area = 0.5 * (height[1:] + height[:-1]) * np.diff(x)

@@ -14,7 +14,7 @@ from outspread.findings.results import Assumption
 from outspread.planning.plan import Plan, PlanStep
 from outspread.reading.distributions import parents
 from outspread.reading.model import Dependence, Distribution, Input, Model
-from outspread.routes.derived import DerivedOutput
+from outspread.routes.derived import DerivedOutput, SymbolicDensity
 
 PAIRS_NAMED = 6  # more independent pairs than these are put into one sentence
 
@@ -153,7 +153,7 @@ def _leaves(step: PlanStep) -> Iterable[PlanStep]:
 
 def _routes(plan: Plan, outputs: Sequence[DerivedOutput]) -> Iterable[Row]:
     for derived in outputs:
-        if derived.symbolic is not None and derived.symbolic.name:
+        if isinstance(derived.symbolic, SymbolicDensity) and derived.symbolic.name:
             source = f" ({derived.symbolic.source})" if derived.symbolic.source else ""
             text = f"The law of {derived.output} is taken to be the {derived.symbolic.name}{source}"
             checked = "; it was confirmed against the numeric law." if derived.numeric is not None else "."

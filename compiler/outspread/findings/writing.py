@@ -20,7 +20,7 @@ from outspread.findings.results import Absent, Figure, Finding, OutputResults, R
 FLOOR = Decimal("1e-10")
 FORMAT = 1
 #: allowed differences below this are rounding and quadrature noise
-ROUNDING = 1e-9
+ROUNDING = 1e-6
 _WIDE = Context(prec=1000, Emin=-999999, Emax=999999)
 
 Value = dict[str, object]

@@ -26,7 +26,7 @@ from outspread.reporting.numbers import exact, grouped, rounded
 from outspread.reporting.parts import Symbol
 from outspread.reporting.setup import Numbering, symbol
 from outspread.reporting.typeset import coded, display, sentence
-from outspread.routes.derived import DerivedOutput, JointLaw, Statement
+from outspread.routes.derived import DerivedOutput, JointLaw, Statement, SymbolicDensity
 
 FEWEST_POINTS = 20  # a comparison at fewer points is a row of the table, not a figure
 _LIBRARIES = ("numpy", "scipy", "sympy")
@@ -156,7 +156,7 @@ def _statements(statements: tuple[Statement, ...], numbering: Numbering) -> list
 def _derivation(report: ReportData, derived: DerivedOutput, numbering: Numbering) -> dict[str, Any]:
     statements = _statements(derived.mathematics, numbering)
     symbolic = None
-    if derived.symbolic is not None:
+    if isinstance(derived.symbolic, SymbolicDensity):
         latex = derived.symbolic.latex
         if not _is_equation(latex):
             latex = rf"f_{{{_symbol(report, derived.output)}}}(y)={latex}"

@@ -1,0 +1,264 @@
+"""Evaluates a density that a derivation wrote as an integral over one input, straight from what is written.
+
+The inverse, its derivative and the densities of the inputs go through sympy; the quadrature is `adaptive`'s.
+No code is shared with the routes, so that a slip in the formulas or in the numbers shows. Judging the
+difference is left to `judging`.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from outspread.evidence.adaptive import Index, Panels, integrate
+from outspread.evidence.dependence import score_matrix
+from outspread.evidence.marginal_density import MarginalDensity, NotWritten, marginal_density, typical
+from outspread.evidence.marginals import canonical
+from outspread.formula.symbolic import to_sympy
+from outspread.formula.tree import Apply, Name, Node, Number, rebuild
+from outspread.laws.law import Array, Estimates
+from outspread.reading.model import Dependence, Distribution, Model
+from outspread.routes.derived import SymbolicBranch, SymbolicIntegral
+
+#: shares of the draws of an input at which panels are cut
+LEVELS = (0.0, 0.02, 0.15, 0.5, 0.85, 0.98, 1.0)
+GRID = 128
+#: relative change of the leaves of a formula that stands for its rounding
+SLIP = 8 * float(np.finfo(float).eps)
+BISECTIONS = 70
+
+Truth = npt.NDArray[np.bool_]
+
+
+def written_density(written: SymbolicIntegral, model: Model, y: Array, finer: int = 1) -> Estimates:
+    """The density at `y` by the integral as written, with a bound on the error of the quadrature and of
+    the rounding; `finer` multiplies the points at which changes of structure are looked for.
+
+    Raises NotWritten, with the reason, where there is nothing to evaluate.
+    """
+    if written.missing:
+        raise NotWritten(written.missing)
+    inputs = {described.name: described.distribution for described in model.inputs}
+    outer, inner = inputs[written.outer], inputs[written.inner]
+    if outer is None or inner is None:
+        raise NotWritten("the inputs are described by a joint density or a joint sample")
+    joint = _Joint(outer, inner, _correlation(written, model, outer, inner))
+    integrand = _Integrand(written, joint)
+    panels = _panels(integrand, y, finer)
+    constants = np.array(integrand.constants)
+    steps = 1.0 + SLIP * np.eye(2 + constants.size)  # y, x and each constant, changed one at a time
+
+    def function(row: Index, x: Array) -> Array:
+        return integrand(y[row], x, constants)
+
+    def doubt(row: Index, x: Array) -> Array:
+        right = function(row, x)
+        total = np.zeros(x.size)
+        for step in steps:
+            change = np.abs(integrand(y[row] * step[0], x * step[1], constants * step[2:]) - right)
+            total += np.where(np.isfinite(change), change, np.abs(right))
+        return total
+
+    return integrate(function, doubt, panels, y.size)
+
+
+def _correlation(written: SymbolicIntegral, model: Model, outer: Distribution, inner: Distribution) -> float:
+    """The correlation of the normal scores of the two inputs; 0 where they are independent."""
+    for entry in model.dependence:
+        places = [entry.inputs.index(name) for name in (written.outer, written.inner) if name in entry.inputs]
+        if not places:
+            continue
+        if entry.kind != "copula" or entry.family != "gaussian":
+            raise NotWritten(f"a dependence by {_kind(entry)} is not written as a formula here")
+        if len(places) == 2:
+            distributions = [d for name in entry.inputs if (d := _given(model, name)) is not None]
+            return float(score_matrix(entry, distributions)[places[0], places[1]])
+    return 0.0
+
+
+def _kind(entry: Dependence) -> str:
+    return f"a {entry.family} copula" if entry.kind == "copula" else entry.kind.replace("_", " ")
+
+
+def _given(model: Model, name: str) -> Distribution | None:
+    return next(described.distribution for described in model.inputs if described.name == name)
+
+
+class _Joint:
+    """The joint density of the two inputs, and where the inner one stands in its law given the outer one."""
+
+    def __init__(self, outer: Distribution, inner: Distribution, correlation: float):
+        self.outer, self.inner = marginal_density(outer), marginal_density(inner)
+        self.outer_draws, self.inner_draws = typical(outer), typical(inner)
+        self.correlation = correlation
+        if correlation:
+            self._scores = (_score(outer), _score(inner))
+            self.rest = math.sqrt(1.0 - correlation**2)
+            self.marks = np.array([-7.0, -3.5, -1.5, 0.0, 1.5, 3.5, 7.0])
+        else:
+            ends = (self.inner.lower, *self.inner.corners, self.inner.upper)
+            levels = np.quantile(self.inner_draws, LEVELS)
+            self.marks = np.unique(np.concatenate([levels, [end for end in ends if math.isfinite(end)]]))
+
+    def position(self, x: Array, z: Array) -> Array:
+        """What `marks` are compared with: z, or its normal score given that of x."""
+        if not self.correlation:
+            return z
+        return np.asarray((self._scores[1](z) - self.correlation * self._scores[0](x)) / self.rest)
+
+    def __call__(self, x: Array, z: Array) -> Array:
+        density = self.outer(x) * self.inner(z)
+        if not self.correlation:
+            return np.asarray(density)
+        score = self._scores[1](z)
+        given = (score - self.correlation * self._scores[0](x)) / self.rest
+        return np.asarray(density * np.exp(0.5 * (score - given) * (score + given)) / self.rest)
+
+
+def _score(distribution: Distribution) -> Callable[[Array], Array]:
+    """The standard normal score of a value, for the families where it is an elementary formula."""
+    cut = distribution.lower is not None or distribution.upper is not None
+    if cut or distribution.family not in ("normal", "lognormal"):
+        kind = f"truncated {distribution.family}" if cut else distribution.family
+        raise NotWritten(f"a Gaussian copula over a {kind} input is not written as a formula here")
+    p = canonical(distribution)
+    if distribution.family == "normal":
+        return lambda x: np.asarray((x - p["mean"]) / p["sd"])
+    return lambda x: np.asarray((np.log(x) - p["log_mean"]) / p["log_sd"])
+
+
+class _Integrand:
+    """f(x, z_k(y, x)) |dz_k/dy| summed over the branches, as a function of arrays y and x and of the
+    constants that stand as terms of sums (so that their rounding can be told)."""
+
+    def __init__(self, written: SymbolicIntegral, joint: _Joint):
+        self.joint = joint
+        self.constants: list[float] = []
+        opened = [self._opened(branch) for branch in written.branches]
+        self.branches = [_compiled(branch, written, len(self.constants)) for branch in opened]
+
+    def _opened(self, branch: SymbolicBranch) -> SymbolicBranch:
+        return SymbolicBranch(self._terms_named(branch.value), branch.slope, branch.conditions)
+
+    def _terms_named(self, node: Node) -> Node:
+        """Numbers that are terms of a sum replaced by names."""
+
+        def named(part: Node) -> Node | None:
+            if not isinstance(part, Apply) or part.operator != "add":
+                return None
+            return Apply("add", tuple(self._term(argument) for argument in part.arguments))
+
+        return rebuild(node, named)
+
+    def _term(self, node: Node) -> Node:
+        if isinstance(node, Number) and node.value:
+            self.constants.append(node.value)
+            return Name(f"{_CONSTANT}{len(self.constants) - 1}")
+        return self._terms_named(node)
+
+    def solutions(self, y: Array, x: Array, constants: Array) -> list[tuple[Array, Array, Truth]]:
+        """z_k, dz_k/dy and whether z_k is a solution, for every branch."""
+        found = []
+        for value, slope, conditions in self.branches:
+            with np.errstate(all="ignore"):
+                z, rate = (np.asarray(f(y, x, *constants) + np.zeros(x.shape), float) for f in (value, slope))
+                holds = np.isfinite(z)
+                for condition in conditions:
+                    holds = holds & np.asarray(condition(y, x, *constants), bool)
+            found.append((z, rate, holds))
+        return found
+
+    def __call__(self, y: Array, x: Array, constants: Array) -> Array:
+        total = np.zeros(x.shape)
+        for z, rate, holds in self.solutions(y, x, constants):
+            with np.errstate(all="ignore"):
+                term = self.joint(x, np.where(holds, z, np.nan)) * np.abs(rate)
+            total += np.where(holds, term, 0.0)
+        return total
+
+
+_CONSTANT = "constant "
+
+
+def _compiled(
+    branch: SymbolicBranch, written: SymbolicIntegral, constants: int
+) -> tuple[Any, Any, list[Any]]:
+    """The branch by way of sympy, as functions of y, x and the constants."""
+    import sympy
+
+    symbols: Mapping[str, Any] = {
+        written.value: sympy.Symbol("y", real=True),
+        written.outer: sympy.Symbol("x", real=True),
+        **{f"{_CONSTANT}{i}": sympy.Symbol(f"c{i}", real=True) for i in range(constants)},
+    }
+
+    def function(node: Node) -> Any:
+        return sympy.lambdify(list(symbols.values()), to_sympy(node, symbols), ["scipy", "numpy"])
+
+    return function(branch.value), function(branch.slope), [function(node) for node in branch.conditions]
+
+
+def _panels(integrand: _Integrand, y: Array, finer: int) -> Panels:
+    """The range of the outer input cut, for each y, where a limit passes a mark of the inner input's law or
+    begins or ends, and at marks of the outer input's own law."""
+    joint = integrand.joint
+    outer, draws = joint.outer, joint.outer_draws
+    scale = float(draws[-1] - draws[0])
+    grid = _grid(outer, draws, finer)
+    row, place = _changes(integrand, y, grid)
+    fixed = np.concatenate([np.quantile(draws, LEVELS), outer.corners, [outer.lower, outer.upper]])
+    fixed = np.unique(fixed[(fixed >= outer.lower) & (fixed <= outer.upper)])
+    rows = np.concatenate([np.repeat(np.arange(y.size), fixed.size), row])
+    places = np.concatenate([np.tile(fixed, y.size), place])
+    order = np.lexsort((places, rows))
+    rows, places = rows[order], places[order]
+    whole = (rows[1:] == rows[:-1]) & (places[1:] > places[:-1])
+    start, stop = places[:-1][whole], places[1:][whole]
+    return Panels(rows[:-1][whole], start, stop, np.full(start.size, scale))
+
+
+def _grid(outer: MarginalDensity, draws: Array, finer: int) -> Array:
+    """Points of the outer input's range, dense where it is likely and closing in on its ends."""
+    inner = np.quantile(draws, np.linspace(0.0, 1.0, GRID * finer + 1))
+    spread = max(float(np.median(draws) - draws[0]), float(draws[-1] - np.median(draws)))
+    away = spread * np.geomspace(1e-3, 1e4, 24 * finer)
+    near = np.geomspace(1e-9, 1.0, 24 * finer)[:-1]
+    low = inner[0] - away if math.isinf(outer.lower) else outer.lower + (inner[0] - outer.lower) * near
+    high = inner[-1] + away if math.isinf(outer.upper) else outer.upper - (outer.upper - inner[-1]) * near
+    points: Array = np.unique(np.concatenate([low, inner, high]))
+    return points
+
+
+def _changes(integrand: _Integrand, y: Array, grid: Array) -> tuple[Index, Array]:
+    """Rows of y and places x between neighbouring points of the grid at which a limit passes a mark, begins,
+    ends or turns; bisected to the last digit."""
+    constants = np.array(integrand.constants)
+    marks = np.array([-np.inf, *integrand.joint.marks])  # above minus infinity: there is a solution
+
+    def above(row: Index, x: Array) -> Truth:
+        """Of shape (branches, marks and the sign of the derivative, places)."""
+        states = []
+        for z, rate, holds in integrand.solutions(y[row], x, constants):
+            with np.errstate(all="ignore"):
+                position = integrand.joint.position(x, np.where(holds, z, np.nan))
+            states.append(np.vstack([position[None, :] > marks[:, None], rate > 0.0]))
+        return np.stack(states)
+
+    shape = (y.size, grid.size)
+    rows = np.repeat(np.arange(y.size), grid.size)
+    state = above(rows, np.tile(grid, y.size))
+    kinds = state.shape[0] * state.shape[1]  # branches and marks
+    state = state.reshape(kinds, *shape)
+    which, row, cell = np.nonzero(state[:, :, 1:] != state[:, :, :-1])
+    low, high = grid[cell], grid[cell + 1]
+    before = state[which, row, cell]
+    for _ in range(BISECTIONS):
+        middle = low + 0.5 * (high - low)
+        now = above(row, middle).reshape(kinds, row.size)[which, np.arange(row.size)]
+        low, high = np.where(now == before, middle, low), np.where(now == before, high, middle)
+    # where solutions begin or end, the side that has them is the end of the panel
+    return row, np.where(before, low, high)
