@@ -21,9 +21,9 @@ Index = npt.NDArray[np.int64]
 #: values of the integrand of the integral `row` at x, arrays of one length
 Integrand = Callable[[Index, Array], Array]
 
-ORDERS = (14, 20)
+ORDERS = (14, 21)  # one even and one odd: a jump in the middle of a panel cannot give both the same
 REACH, STEP = 6.0, 1.0 / 12.0  # to 1e-275 of a panel: the power -0.95 of the distance can be integrated
-ROUNDS, EVALUATIONS = 40, 4_000_000
+SMOOTH_ROUNDS, ROUNDS, EVALUATIONS = 4, 40, 4_000_000
 ROUNDING = 2e-15  # of a sum of at most some hundred products
 
 
@@ -102,8 +102,11 @@ def integrate(
     """
     work = _Work(function, doubt, rows, relative)
     infinite = np.isinf(panels.start) | np.isinf(panels.stop)
-    pending = _joined(panels.of(infinite), work.settle(_gauss(), panels.of(~infinite), final=False))
-    # halves of what Gauss's rules did not settle may hold a peak between their nodes
+    smooth = panels.of(~infinite)
+    for _ in range(SMOOTH_ROUNDS):  # near a singular end Gauss's nodes round less than those of the other rule
+        smooth = work.settle(_gauss(), smooth, final=False).halves()
+    pending = _joined(panels.of(infinite), smooth)
+    # halves of an infinite panel may hold a peak between Gauss's nodes, so that only the other rule is used
     for turn in range(ROUNDS):
         last = turn == ROUNDS - 1 or work.evaluations > EVALUATIONS
         pending = work.settle(_double_exponential(), pending, final=last).halves()

@@ -29,7 +29,8 @@ LEVELS = (0.0, 0.02, 0.15, 0.5, 0.85, 0.98, 1.0)
 GRID = 128
 #: relative change of the leaves of a formula that stands for its rounding
 SLIP = 8 * float(np.finfo(float).eps)
-BISECTIONS = 70
+BISECTIONS, REFINEMENTS = 70, 24
+NEAR = 1e-14
 
 Truth = npt.NDArray[np.bool_]
 
@@ -209,16 +210,33 @@ def _panels(integrand: _Integrand, y: Array, finer: int) -> Panels:
     outer, draws = joint.outer, joint.outer_draws
     scale = float(draws[-1] - draws[0])
     grid = _grid(outer, draws, finer)
-    row, place = _changes(integrand, y, grid)
+    row, place, ends = _changes(integrand, y, grid)
     fixed = np.concatenate([np.quantile(draws, LEVELS), outer.corners, [outer.lower, outer.upper]])
     fixed = np.unique(fixed[(fixed >= outer.lower) & (fixed <= outer.upper)])
     rows = np.concatenate([np.repeat(np.arange(y.size), fixed.size), row])
     places = np.concatenate([np.tile(fixed, y.size), place])
-    order = np.lexsort((places, rows))
-    rows, places = rows[order], places[order]
-    whole = (rows[1:] == rows[:-1]) & (places[1:] > places[:-1])
+    firm = np.concatenate([np.tile((fixed == outer.lower) | (fixed == outer.upper), y.size), ends])
+    order = np.lexsort((~firm, places, rows))
+    rows, places, firm = rows[order], places[order], firm[order]
+    kept = ~_too_near(rows, places, firm)
+    rows, places = rows[kept], places[kept]
+    whole = rows[1:] == rows[:-1]
     start, stop = places[:-1][whole], places[1:][whole]
     return Panels(rows[:-1][whole], start, stop, np.full(start.size, scale))
+
+
+def _too_near(rows: Index, places: Array, firm: Truth) -> Truth:
+    """Places within rounding of one before them, or of a firm one after them: a panel of a few last digits
+    would hold nothing but rounding. Firm places, where solutions begin or end, stay unless they are equal."""
+    same = rows[1:] == rows[:-1]
+    with np.errstate(invalid="ignore"):
+        gap = places[1:] - places[:-1]
+        near = same & (gap <= NEAR * np.maximum(np.abs(places[1:]), np.abs(places[:-1])))
+    equal = same & (gap == 0.0)
+    drop = np.zeros(places.size, bool)
+    drop[1:] = (near & ~firm[1:]) | equal
+    drop[:-1] |= near & firm[1:] & ~firm[:-1]
+    return drop
 
 
 def _grid(outer: MarginalDensity, draws: Array, finer: int) -> Array:
@@ -233,32 +251,62 @@ def _grid(outer: MarginalDensity, draws: Array, finer: int) -> Array:
     return points
 
 
-def _changes(integrand: _Integrand, y: Array, grid: Array) -> tuple[Index, Array]:
+def _changes(integrand: _Integrand, y: Array, grid: Array) -> tuple[Index, Array, Truth]:
     """Rows of y and places x between neighbouring points of the grid at which a limit passes a mark, begins,
-    ends or turns; bisected to the last digit."""
+    ends or turns, bisected to the last digit; and whether it begins or ends there."""
     constants = np.array(integrand.constants)
     marks = np.array([-np.inf, *integrand.joint.marks])  # above minus infinity: there is a solution
 
-    def above(row: Index, x: Array) -> Truth:
-        """Of shape (branches, marks and the sign of the derivative, places)."""
-        states = []
-        for z, rate, holds in integrand.solutions(y[row], x, constants):
-            with np.errstate(all="ignore"):
-                position = integrand.joint.position(x, np.where(holds, z, np.nan))
-            states.append(np.vstack([position[None, :] > marks[:, None], rate > 0.0]))
-        return np.stack(states)
+    def position(row: Index, x: Array) -> tuple[Array, Array]:
+        """Where the solutions stand (nan: none) and their derivatives, of shape (branches, places)."""
+        found = integrand.solutions(y[row], x, constants)
+        with np.errstate(all="ignore"):
+            places = [integrand.joint.position(x, np.where(holds, z, np.nan)) for z, _, holds in found]
+        return np.stack(places), np.stack([rate for _, rate, _ in found])
 
-    shape = (y.size, grid.size)
-    rows = np.repeat(np.arange(y.size), grid.size)
-    state = above(rows, np.tile(grid, y.size))
-    kinds = state.shape[0] * state.shape[1]  # branches and marks
-    state = state.reshape(kinds, *shape)
-    which, row, cell = np.nonzero(state[:, :, 1:] != state[:, :, :-1])
-    low, high = grid[cell], grid[cell + 1]
-    before = state[which, row, cell]
+    def state(row: Index, x: Array) -> Truth:
+        """Of shape (branches times marks and the sign of the derivative, places)."""
+        z, rate = position(row, x)
+        with np.errstate(invalid="ignore"):
+            above = np.concatenate([z[:, None] > marks[:, None], (rate > 0.0)[:, None]], axis=1)
+        return above.reshape(-1, x.size)
+
+    rows, points = _refined(lambda row, x: position(row, x)[0], y.size, grid)
+    seen = state(rows, points)
+    which, cell = np.nonzero((seen[:, 1:] != seen[:, :-1]) & (rows[1:] == rows[:-1]))
+    row, low, high = rows[cell], points[cell], points[cell + 1]
+    before = seen[which, cell]
     for _ in range(BISECTIONS):
         middle = low + 0.5 * (high - low)
-        now = above(row, middle).reshape(kinds, row.size)[which, np.arange(row.size)]
+        now = state(row, middle)[which, np.arange(row.size)]
         low, high = np.where(now == before, middle, low), np.where(now == before, high, middle)
     # where solutions begin or end, the side that has them is the end of the panel
-    return row, np.where(before, low, high)
+    return row, np.where(before, low, high), which % (marks.size + 1) == 0
+
+
+def _refined(position: Callable[[Index, Array], Array], count: int, grid: Array) -> tuple[Index, Array]:
+    """The grid for each row, with points added in cells over which a solution does not run straight on: there
+    is a pole or a turn inside, and what lies beside it may be narrow."""
+    rows = np.repeat(np.arange(count), grid.size - 1)
+    low, high = np.tile(grid[:-1], count), np.tile(grid[1:], count)
+    added_rows, added = [np.repeat(np.arange(count), grid.size)], [np.tile(grid, count)]
+    for _ in range(REFINEMENTS):
+        if not rows.size:
+            break
+        width = high - low
+        with np.errstate(invalid="ignore"):
+            first, second, third, last = (
+                position(rows, at) for at in (low, low + width / 64, high - width / 64, high)
+            )
+            signs = [np.sign(second - first), np.sign(last - third), np.sign(last - first)]
+        bent = np.any((signs[0] != signs[2]) | (signs[1] != signs[2]), axis=0) & np.isfinite(width)
+        bent &= ~np.all(np.isnan(first + last), axis=0)
+        rows, low, high = rows[bent], low[bent], high[bent]
+        middle = low + 0.5 * (high - low)
+        added_rows.append(rows)
+        added.append(middle)
+        rows = np.concatenate([rows, rows])
+        low, high = np.concatenate([low, middle]), np.concatenate([middle, high])
+    row, point = np.concatenate(added_rows), np.concatenate(added)
+    order = np.lexsort((point, row))
+    return row[order], point[order]
