@@ -5,6 +5,8 @@ C. Loader (2000), Fast and accurate computation of binomial probabilities.
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import numpy as np
 import numpy.typing as npt
 
@@ -21,6 +23,16 @@ def stirling_error(n: npt.ArrayLike) -> Array:
     Stirling's series from n = 16 on; below, the recurrence from n to n + 1, term by term small.
     """
     n = np.asarray(n, float)
+    # a parameter is one number for many points, asked for again and again
+    return np.asarray(_one_stirling_error(float(n))) if n.ndim == 0 else _stirling_error(n)
+
+
+@lru_cache(maxsize=256)
+def _one_stirling_error(n: float) -> float:
+    return float(_stirling_error(np.array([n]))[0])
+
+
+def _stirling_error(n: Array) -> Array:
     correction = np.zeros(n.shape)
     shifted = n
     for _ in range(16):
@@ -40,20 +52,33 @@ def stirling_error(n: npt.ArrayLike) -> Array:
 def deviance(x: npt.ArrayLike, mean: npt.ArrayLike) -> Array:
     """x log(x/mean) + mean - x, without cancellation where x is near the mean."""
     x, mean = np.broadcast_arrays(np.asarray(x, float), np.asarray(mean, float))
-    total, difference = x + mean, x - mean
-    near = np.abs(difference) < 0.1 * total
-    v = np.where(near, difference / np.where(total > 0, total, 1.0), 0.0)
+    shape, x, mean = x.shape, x.ravel(), mean.ravel()
+    difference = x - mean
+    near = np.abs(difference) < 0.1 * (x + mean)
+    result = np.empty_like(x)
+    close, beyond = np.flatnonzero(near), np.flatnonzero(~near)
+    result[close] = _near_deviance(x[close], mean[close], difference[close])
+    result[beyond] = _far_deviance(x[beyond], mean[beyond])
+    return result.reshape(shape)
+
+
+def _near_deviance(x: Array, mean: Array, difference: Array) -> Array:
+    v = difference / (x + mean)
     series = np.zeros_like(v)
     for j in range(12, 0, -1):
         series = (series + 1 / (2 * j + 1)) * v * v
-    close = difference * v + 2 * x * v * series
+    return np.asarray(difference * v + 2 * x * v * series)
+
+
+def _far_deviance(x: Array, mean: Array) -> Array:
     with np.errstate(all="ignore"):
-        # log of a quotient that may overflow, as a difference of logarithms
-        logarithm = np.where(near | (x <= 0), 0.0, np.log(x) - np.log(mean))
-        quotient = np.where(near | (x <= 0), 1.0, x / mean)
-        plain = np.isfinite(quotient) & (quotient > 1e-300)
-        logarithm = np.where(plain, np.log(np.where(plain, quotient, 1.0)), logarithm)
-        return np.asarray(np.where(near, close, x * logarithm + (mean - x)))
+        quotient = x / mean
+        logarithm = np.where(x > 0, np.log(quotient), 0.0)
+        # log of a quotient that overflows, as a difference of logarithms
+        wild = (x > 0) & ~((quotient > 1e-300) & np.isfinite(quotient))
+        if np.any(wild):
+            logarithm[wild] = np.log(x[wild]) - np.log(mean[wild])
+        return np.asarray(x * logarithm + (mean - x))
 
 
 def gamma_kernel(a: npt.ArrayLike, x: npt.ArrayLike) -> Array:
