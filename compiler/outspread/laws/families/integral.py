@@ -27,6 +27,8 @@ END_SHARE = 1e-8
 STEEPEST = 1e-5
 #: masses below this carry no relative accuracy: doubles thin out below 1e-308
 NEGLIGIBLE = 1e-302
+#: a panel at a special point that is still too wide after so many rounds is cut all the way at once
+LADDER = 4
 CHUNK = 20_000
 Tail = tuple[float, float]
 
@@ -101,10 +103,14 @@ class IntegralLaw(ScaledLaw):
             rest = ~accepted
             if not np.any(rest):
                 break
-            depth = np.tile(np.where(near_end, 0.0, depth + 1)[rest], 2)
+            cut_often = rest & near_end & (round_ >= LADDER)
+            rungs = [self._ladder(low[index], high[index]) for index in np.flatnonzero(cut_often)]
+            rest &= ~cut_often
+            deeper = np.tile(np.where(near_end, 0.0, depth + 1)[rest], 2)
+            depth = np.concatenate((deeper, np.zeros(sum(rung.size - 1 for rung in rungs))))
             low, high = (
-                np.concatenate((low[rest], middle[rest])),
-                np.concatenate((middle[rest], high[rest])),
+                np.concatenate((low[rest], middle[rest], *(rung[:-1] for rung in rungs))),
+                np.concatenate((middle[rest], high[rest], *(rung[1:] for rung in rungs))),
             )
         lows, highs, masses, differences = (np.concatenate(parts) for parts in zip(*done, strict=True))
         order = np.argsort(lows)
@@ -114,6 +120,16 @@ class IntegralLaw(ScaledLaw):
             differences[order],
             (self._remainder(edges[0]), self._remainder(edges[-1])),
         )
+
+    def _ladder(self, low: float, high: float) -> Array:
+        """Edges that cut a panel towards its special point by factors of 16 down to the shortest, at once."""
+        special = (*self.ends, *self.corners)
+        at_low = low in special
+        point, width = (low, high - low) if at_low else (high, high - low)
+        count = np.ceil(np.log(width / (1e-290 + END_SHARE * abs(point))) / np.log(16.0))
+        steps = width * 16.0 ** -np.arange(count + 1)
+        edges = point + steps if at_low else point - steps
+        return np.unique(np.append(edges, (low, high)))
 
     def _split(self, low: Array, high: Array) -> tuple[Array, Mask, Mask]:
         """Where to cut: in the middle, but by factors of 16 towards an end of the support or a corner.
