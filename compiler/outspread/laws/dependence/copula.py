@@ -9,12 +9,13 @@ Rosenblatt transform: w_k = C(u_k | u_1 … u_{k-1}) turns dependent levels into
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 import numpy as np
 
 from outspread.laws.dependence.levels import Levels
 from outspread.laws.law import Array
+from outspread.numerics.quadrature import Index
 
 
 class Copula(ABC):
@@ -42,6 +43,19 @@ class Copula(ABC):
     @abstractmethod
     def margin(self, order: Sequence[int]) -> Copula:
         """The copula of the inputs `order` (two or more positions), in that order."""
+
+    def following_score(self, scores: Array) -> Callable[[Array, Index], Array]:
+        """For integrals over a pair: the second normal score, given the first scores (N,).
+
+        The result takes normal scores of the conditional level and which first score each belongs to.
+        """
+        first = Levels.from_scores(scores)
+
+        def following(conditional: Array, owner: Index) -> Array:
+            given = Levels(first.lower[None, owner], first.upper[None, owner])
+            return self.conditional_inverse(given, Levels.from_scores(conditional)).scores()
+
+        return following
 
     def log_density(self, levels: Levels) -> Array:
         """Logarithm of the copula density c(u), shape (…)."""

@@ -7,17 +7,19 @@ A singular matrix has no density and is refused here; `matrices` says which comb
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
+from functools import lru_cache
 
 import numpy as np
 import numpy.typing as npt
 
 from outspread.errors import LawError
 from outspread.laws.dependence.copula import Copula
-from outspread.laws.dependence.levels import Levels
-from outspread.laws.functions.normal import normal_cdf
+from outspread.laws.dependence.levels import LARGEST_SCORE, Levels
+from outspread.laws.dependence.score_table import ScoreTable
 from outspread.laws.functions.student import log_inverse_beta, student_tail, student_tail_inverse
 from outspread.laws.law import Array
+from outspread.numerics.quadrature import Index
 
 #: below this smallest eigenvalue the conditionals would lose more than four of sixteen digits
 LEAST_EIGENVALUE = 1e-12
@@ -97,9 +99,13 @@ class GaussianCopula(EllipticalCopula):
         centre, scale, _ = self._place(given)
         score = at.scores()
         white = (score - centre) / scale
-        # (z - e)(z + e) does not cancel where both are large; nor does z - e from its parts
-        difference = (centre - (1.0 - scale) * score) / scale
+        # e² - z² as (e - z)(e + z), with e - z from its parts: no cancellation where both are large
+        difference = ((1.0 - scale) * score - centre) / scale
         return np.asarray(-0.5 * difference * (white + score) - np.log(scale))
+
+    def following_score(self, scores: Array) -> Callable[[Array, Index], Array]:
+        centre, scale = self.matrix[1, 0] * scores, self._factor[1, 1]
+        return lambda conditional, owner: centre[owner] + scale * conditional
 
     def margin(self, order: Sequence[int]) -> Copula:
         return GaussianCopula(self.matrix[np.ix_(order, order)])
@@ -154,6 +160,18 @@ class StudentCopula(EllipticalCopula):
         inner = log_student_pdf(nu + len(white), (score - centre) / spread)
         return np.asarray(inner - np.log(spread) - log_student_pdf(nu, score))
 
+    def following_score(self, scores: Array) -> Callable[[Array, Index], Array]:
+        nu = self.degrees_of_freedom
+        own, conditional_table, back = _score_table(nu), _score_table(nu + 1.0), _normal_score_table(nu)
+        first = np.sinh(own(scores))
+        centre = self.matrix[1, 0] * first
+        spread = self._factor[1, 1] * self._stretch(first[None])
+
+        def following(conditional: Array, owner: Index) -> Array:
+            return back(np.arcsinh(centre[owner] + spread[owner] * np.sinh(conditional_table(conditional))))
+
+        return following
+
     def margin(self, order: Sequence[int]) -> Copula:
         return StudentCopula(self.matrix[np.ix_(order, order)], self.degrees_of_freedom)
 
@@ -180,6 +198,20 @@ def log_student_pdf(nu: float, t: Array) -> Array:
     return np.asarray(log_inverse_beta(nu / 2) - 0.5 * np.log(nu) - (nu + 1.0) * power)
 
 
-def gaussian_levels(scores: Array) -> Levels:
-    """Levels of standard normal scores, shape kept."""
-    return Levels.pair(normal_cdf(scores), normal_cdf(-scores))
+@lru_cache(maxsize=16)
+def _score_table(nu: float) -> ScoreTable:
+    """asinh of the Student t quantile as a function of the normal score."""
+    least = float(student_tail(nu, np.array(1e280)))
+    return ScoreTable(
+        lambda z: np.arcsinh(_student_scores(nu, Levels.from_scores(z), least)),
+        np.array([-LARGEST_SCORE, -8.0, 0.0, 8.0, LARGEST_SCORE]),
+        4e-15,
+    )
+
+
+@lru_cache(maxsize=16)
+def _normal_score_table(nu: float) -> ScoreTable:
+    """The normal score as a function of asinh of the Student t quantile."""
+    end = float(np.arcsinh(1e280))
+    edges = np.array([-end, -64.0, -8.0, 0.0, 8.0, 64.0, end])
+    return ScoreTable(lambda w: _student_levels(nu, np.sinh(w)).scores(), edges, 4e-15)

@@ -47,7 +47,7 @@ def nearest_correlation(matrix: npt.ArrayLike, least_eigenvalue: float = 0.0) ->
         change, gap = np.max(np.abs(following - current)), np.max(np.abs(following - projected))
         current = following
         if change <= 1e-14 and gap <= 1e-13:
-            return current
+            return np.asarray(current)
     raise DerivationError("the nearest correlation matrix was not found: the projections do not settle")
 
 
@@ -59,9 +59,9 @@ def suggested_correlation(matrix: npt.ArrayLike, digits: int = 4) -> Array:
     """
     least = 10.0**-digits
     while least < 1.0:
-        rounded = np.round(nearest_correlation(matrix, least), digits) + 0.0
+        rounded: Array = np.round(nearest_correlation(matrix, least), digits) + 0.0
         if smallest_eigenvalue(rounded) > 1e-9:
-            return np.asarray(rounded)
+            return rounded
         least *= 2.0
     raise DerivationError(f"no valid correlation matrix with {digits} decimals is near to the one given")
 
@@ -128,7 +128,7 @@ def _symmetric(matrix: npt.ArrayLike) -> Array:
         raise LawError("the matrix has as many rows as columns, of finite numbers", "matrix")
     if not np.allclose(own, own.T, rtol=1e-12, atol=0.0):
         raise LawError("the matrix is not symmetric", "matrix")
-    return 0.5 * (own + own.T)
+    return np.asarray(0.5 * (own + own.T))
 
 
 def _reduced(rows: Array, negligible: float) -> Array:

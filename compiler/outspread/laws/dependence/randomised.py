@@ -2,7 +2,7 @@
 
 Separation of variables (Genz 1992, Journal of Computational and Graphical Statistics 1, 141–149): score by
 score, the probability of its side given the earlier ones, and a point inside it; sides that constrain most
-come first (Gibson, Glasbey and Elston 1994). The points are scrambled Sobol' points (Owen 1995) in independent
+come first (Gibson, Glasbey and Elston 1994). Points: scrambled Sobol' points (Owen 1995) in independent
 replicates, whose spread gives the error. Tails keep their digits: every factor is relative to itself.
 """
 
