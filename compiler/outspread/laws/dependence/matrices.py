@@ -96,8 +96,11 @@ def degeneracy(covariance: npt.ArrayLike, names: Sequence[str]) -> Degeneracy:
             f"the matrix has a negative eigenvalue ({values[0]:.3g}); no inputs have such a covariance",
             "covariance",
         )
-    null = vectors[:, values <= least].T / unit
-    reduced = _reduced(null, np.sqrt(least))
+    null = vectors[:, values <= least].T
+    # reduced in standard deviations, so that units do not matter; only then in the inputs' own units
+    reduced = _reduced(null, np.sqrt(least)) / unit
+    if len(reduced):
+        reduced = reduced / reduced[np.arange(len(reduced)), np.argmax(reduced != 0.0, axis=1)][:, None]
     words = tuple(_words(row, names) for row in reduced)
     return Degeneracy(size - len(null), tuple(tuple(float(c) for c in row) for row in reduced), words)
 
