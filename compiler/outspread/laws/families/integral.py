@@ -233,13 +233,21 @@ class IntegralLaw(ScaledLaw):
         return self._tail(z, True)
 
     def standard_icdf(self, p: Array) -> Array:
-        return np.where(p <= 0.5, self._invert(p, False), self._invert(1 - p, True))
+        return self._quantile(p, False)
 
     def standard_iccdf(self, q: Array) -> Array:
-        return np.where(q <= 0.5, self._invert(q, True), self._invert(1 - q, False))
+        return self._quantile(q, True)
+
+    def _quantile(self, p: Array, upper: bool) -> Array:
+        """z whose upper (or lower) tail is p, from whichever tail is the smaller."""
+        small = p <= 0.5
+        result = np.empty_like(p)
+        result[small] = self._invert(p[small], upper)
+        result[~small] = self._invert(1 - p[~small], not upper)
+        return result
 
     def _invert(self, tail: Array, upper: bool) -> Array:
-        """z whose upper (or lower) tail is `tail` <= 1/2; others give some number."""
+        """z whose upper (or lower) tail is `tail` <= 1/2."""
         panels = self.panels
         goal = np.clip(tail, 5e-324, 0.5)
         if upper:
