@@ -170,7 +170,8 @@ def _figures(output: OutputResults) -> str:
     unit = f" {output.unit}" if output.unit and output.unit != "1" else ""
     text = f"{output.name}: mean {_shown(output.mean)}{unit}, standard deviation "
     text += f"{_shown(output.standard_deviation)}{unit}"
-    for row in output.coverage[:1]:
+    row = output.headline_interval()
+    if row is not None:
         interval = f"[{_shown(row.lower)}, {_shown(row.upper)}]{unit}"
         text += f", {100 * row.probability:g} % interval {interval}"
     return text

@@ -146,6 +146,7 @@ def _output(
             if _about(event) == {output.name}
         ),
         largest_error=largest_cdf_error(law),
+        headline=readings.headline,
     )
 
 

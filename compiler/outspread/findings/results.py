@@ -73,6 +73,12 @@ class OutputResults:
     values: tuple[ValueRow, ...]
     probabilities: tuple[tuple[str, Finding], ...]  # event text -> probability (events in this output only)
     largest_error: float  # stated bound on |cdf error|
+    headline: float = 0.95  # probability of the coverage interval that stands for the whole
+
+    def headline_interval(self) -> Coverage | None:
+        """The symmetric interval at the headline's probability, whose ends may be absent."""
+        symmetric = (row for row in self.coverage if row.kind == "symmetric")
+        return next((row for row in symmetric if row.probability == self.headline), None)
 
 
 @dataclass(frozen=True)

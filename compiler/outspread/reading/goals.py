@@ -159,6 +159,7 @@ def build_readings(context: Context, outputs: tuple[str, ...]) -> Readings:
         quantiles=tuple(float(value) for value in written.get("quantiles", default.quantiles)),
         probabilities=tuple(events),
         values=values,
+        headline=max(map(float, written.get("coverage", ())), default=default.headline),
     )
 
 

@@ -117,10 +117,14 @@ class Requirement:
 
 @dataclass(frozen=True)
 class Readings:
+    """What the model asks to be stated; `headline` is the coverage of the interval that stands for the whole:
+    the largest that the model lists, 0.95 where it lists none."""
+
     coverage: tuple[float, ...] = (0.95, 0.99)
     quantiles: tuple[float, ...] = (0.001, 0.025, 0.5, 0.975, 0.999)
     probabilities: tuple[tuple[str, Node], ...] = ()  # (text, event over outputs)
     values: Mapping[str, tuple[float, ...]] = field(default_factory=dict)
+    headline: float = 0.95
 
 
 @dataclass(frozen=True)

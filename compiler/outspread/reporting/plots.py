@@ -103,7 +103,7 @@ def law_picture(subject: Subject) -> Picture:
     with _figure(3.55) as (figure, urls):
         above = figure.add_axes((0.13, 0.55, width, 0.37))
         below = figure.add_axes((0.13, 0.125, width, 0.37), sharex=above)
-        band = central(output.coverage)
+        band = central(output)
         for axes in (above, below):
             if band is not None:
                 axes.axvspan(band[1].value, band[2].value, color=BAND, lw=0, zorder=0)

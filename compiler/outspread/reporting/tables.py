@@ -93,16 +93,12 @@ def intervals(coverage: tuple[Coverage, ...], scale: float) -> list[Span]:
     return rows
 
 
-def central(coverage: tuple[Coverage, ...]) -> tuple[float, Figure, Figure] | None:
-    """Probability and ends of the symmetric interval that stands for the whole: 0.95 or the nearest to it."""
-    found = [
-        (interval.probability, interval.lower, interval.upper)
-        for interval in coverage
-        if interval.kind == "symmetric"
-        and isinstance(interval.lower, Figure)
-        and isinstance(interval.upper, Figure)
-    ]
-    return min(found, key=lambda row: abs(row[0] - 0.95), default=None)
+def central(output: OutputResults) -> tuple[float, Figure, Figure] | None:
+    """Probability and ends of the interval that stands for the whole; None where it has no finite ends."""
+    row = output.headline_interval()
+    if row is None or not (isinstance(row.lower, Figure) and isinstance(row.upper, Figure)):
+        return None
+    return row.probability, row.lower, row.upper
 
 
 @dataclass(frozen=True)

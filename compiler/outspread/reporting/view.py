@@ -218,7 +218,7 @@ def _output(report: ReportData, output: OutputResults, subject: plots.Subject | 
         "atoms": atoms,
         "more_atoms": more,
         "largest_error": grouped(rounded(output.largest_error, 1, upwards=True)),
-        "shaded": exact(shaded[0]) if (shaded := tables.central(output.coverage)) else "",
+        "shaded": exact(shaded[0]) if (shaded := tables.central(output)) else "",
         "limits": [(exact(limit.at), limit.requirement) for limit in (subject.limits if subject else ())],
         "pictures": {
             "law": plots.law_picture(subject) if subject else None,

@@ -88,7 +88,7 @@ def _share(number: int, total: int) -> str:
 def _range_sentence(output: OutputResults) -> str:
     """The interval that stands for the whole, in words."""
     unit = unit_suffix(output.unit)
-    interval = central(output.coverage)
+    interval = central(output)
     if interval is None:
         return ""
     probability, lower, upper = interval

@@ -15,13 +15,14 @@ from outspread.formula.calculus import derivative
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.latex import estimated_width, symbol_for, to_latex
 from outspread.formula.latex_lines import breakable
-from outspread.formula.tree import Apply, Name, Node, Number, names, occurrences, rebuild, walk
+from outspread.formula.tree import Apply, Name, Node, names, occurrences, walk
 from outspread.laws.law import Array, Law
 from outspread.planning.plan import PlanStep
 from outspread.reading.model import Constant, Input, Model, Output
 from outspread.routes.derived import Statement, SymbolicBranch, SymbolicDensity, SymbolicIntegral
 from outspread.routes.jacobian.branches import Branch, branches_for
 from outspread.routes.numeric import NumericLaw
+from outspread.routes.readable import readable, shortened
 
 VALUE = "§"  # stands for the value of the result; a letter that no input uses is put in at the end
 MOST_BRANCHES = 4
@@ -117,13 +118,13 @@ class _Writer:
         )
 
     def latex(self, node: Node) -> str:
-        return to_latex(_shown(node), self.symbols)
+        return to_latex(shortened(node, self.expression), self.symbols)
 
     def wrapped(self, head: str, node: Node) -> str:
         text = self.latex(node)
         if estimated_width(head + text) <= PAGE:
             return head + text
-        lines = breakable(_shown(node), self.symbols, PAGE - 8)
+        lines = breakable(shortened(node, self.expression), self.symbols, PAGE - 8)
         return (head + lines[0]) + "".join(rf"\\ \quad {line}" for line in lines[1:])
 
     def formula_short(self) -> str:
@@ -155,7 +156,14 @@ class _Writer:
         found = branches_for(self.expression, name, Name(self.value))
         if found is None or not 0 < len(found) <= MOST_BRANCHES:
             return None
-        return found
+        return tuple(replace(branch, value=self.readable(branch.value)) for branch in found)
+
+    def readable(self, node: Node) -> Node:
+        return readable(node, self.expression)
+
+    def slope(self, branch: Branch) -> Node:
+        """The derivative of a branch by the value of the result."""
+        return self.readable(derivative(branch.value, self.value))
 
     def limits(self, name: str) -> list[Statement]:
         """The region solved for one input."""
@@ -198,7 +206,7 @@ class _Writer:
                 rf"f_{{{self.y}}}(§)=\sum_k \frac{{f_{{{x}}}(x_k)}}{{\left|g'(x_k)\right|}}", "density",
             ))  # fmt: skip
             return statements, None
-        slopes = [derivative(branch.value, self.value) for branch in found]
+        slopes = [self.slope(branch) for branch in found]
         jacobian = r"\\ ".join(
             self.wrapped(r"\frac{\mathrm{d}" + x + r"}{\mathrm{d}§}=", slope) for slope in slopes
         )
@@ -253,10 +261,16 @@ class _Writer:
         ))  # fmt: skip
         if found is not None and len(found) <= 2:
             text = r"\\ ".join(
-                self.wrapped(rf"\frac{{\partial {z}}}{{\partial §}}=", derivative(branch.value, self.value))
+                self.wrapped(rf"\frac{{\partial {z}}}{{\partial §}}=", self.slope(branch))
                 for branch in found
             )
             statements.append(Statement("with the derivative of each limit", text, "jacobian"))
+        if _flattens(self.expression, inner):
+            statements.append(Statement(
+                f"Where the formula does not depend on ${z}$ over an interval, that interval enters the "
+                f"region as a whole: the density there of the formula, a function of ${x}$ alone, is added, "
+                "weighted with the probability of the interval."
+            ))  # fmt: skip
         if step.inputs and len(step.inputs) > 2:
             rest = r",\,".join(self.symbols[name] for name in step.inputs if name not in (inner, outer))
             statements.append(
@@ -280,7 +294,7 @@ class _Writer:
         if missing or found is None:
             return SymbolicIntegral(inner, outer, self.value, (), missing)
         branches = tuple(
-            SymbolicBranch(branch.value, derivative(branch.value, self.value), branch.conditions)
+            SymbolicBranch(branch.value, self.slope(branch), branch.conditions)
             for branch in found
         )
         return SymbolicIntegral(inner, outer, self.value, branches)
@@ -304,17 +318,6 @@ def _flattens(expression: Node, name: str) -> bool:
         isinstance(part, Apply) and part.operator in ("min", "max") and occurrences(part, name) > 0
         for part in walk(expression)
     )
-
-
-def _shown(node: Node) -> Node:
-    """Computed numbers shortened to nine digits for reading; numbers as typed stay."""
-
-    def shorter(part: Node) -> Node | None:
-        if isinstance(part, Number) and not part.text and len(repr(part.value)) > 11:
-            return Number(part.value, f"{part.value:.9g}")
-        return None
-
-    return rebuild(node, shorter)
 
 
 def _limits(law: Law) -> tuple[str, str]:

@@ -42,6 +42,7 @@ MOST_BRANCHES = 8  # written out; the rest is counted
 LARGEST_DETERMINANT = 60  # nodes
 LARGEST_MATRIX = 12
 LARGEST_ENTRY = 30
+_DIGITS = 8  # of a decimal that is written out
 _SLASHED = 2  # depth at which the typesetter writes fractions with a slash
 
 
@@ -123,15 +124,15 @@ class Writer:
         return _matrix([[self.symbols[name]] for name in names])
 
     def _affine(self, affine: AffineMap, where: str) -> list[Statement]:
-        matrix = _matrix([[_fraction(value) for value in row] for row in affine.matrix])
-        inverse = _matrix([[_fraction(value) for value in row] for row in affine.inverse])
+        matrix = _matrix([[_exact(value) for value in row] for row in affine.matrix])
+        inverse = _inverse(affine)
         shifted = self._vector(self.outputs)
         forward = f"{matrix}{self._vector(self.inputs)}"
         if any(affine.offset):
-            offset = _matrix([[_fraction(value)] for value in affine.offset])
+            offset = _matrix([[_exact(value)] for value in affine.offset])
             forward += f" + {offset}"
             shifted = rf"\left({shifted} - {offset}\right)"
-        determinant = _fraction(affine.determinant)
+        determinant = _exact(affine.determinant)
         return [
             Statement(where + "The map is affine.", f"{self._vector(self.outputs)} = {forward}", "note"),
             Statement("Its inverse is", f"{self._vector(self.inputs)} = {inverse}{shifted}", "inverse"),
@@ -226,8 +227,8 @@ class Writer:
         affine = affine_map(parts[0][0].piece.outputs, self.inputs) if len(parts) == 1 else None
         if affine is not None:
             text = "The joint density of the outputs is that of the inputs at the inverse, divided by"
-            factor = _fraction(1 / abs(affine.determinant))
-            right = ("" if factor == "1" else rf"{factor}\,") + f"{density}({self.names(self.inputs)})"
+            size, right = _exact(abs(affine.determinant)), f"{density}({self.names(self.inputs)})"
+            right = right if size == "1" else rf"\frac{{1}}{{{size}}}\,{right}"
             return Statement(f"{text} $|\\det J|$.", f"{left} = {right}", "density")
         if total == 1 and len(parts) == 1 and not parts[0][1][0].parameters and not parts[0][2]:
             solution = parts[0][1][0]
@@ -329,11 +330,32 @@ def _matrix(rows: Sequence[Sequence[str]]) -> str:
     return r"\begin{pmatrix}" + r" \\ ".join(" & ".join(row) for row in rows) + r"\end{pmatrix}"
 
 
-def _fraction(value: Fraction) -> str:
-    """A short fraction as such, else the nearest double."""
-    if value.denominator == 1 and abs(value.numerator) < 10**9:
-        return str(value.numerator)
-    short = value.limit_denominator(10_000)
-    if abs(short - value) <= abs(value) * Fraction(1, 10**15) and short.denominator <= 1000:
-        return f"{short.numerator}/{short.denominator}" if short.denominator > 1 else str(short.numerator)
-    return to_latex(Number(float(value)), {})
+def _inverse(affine: AffineMap) -> str:
+    """The inverse matrix, with the determinant taken out where that leaves short decimals."""
+    whole = [[value * affine.determinant for value in row] for row in affine.inverse]
+    short = all(_decimal(value) for value in (affine.determinant, *(v for row in whole for v in row)))
+    if short and _exact(abs(affine.determinant)) != "1":
+        factor = rf"\frac{{1}}{{{_exact(affine.determinant)}}}"
+        return factor + _matrix([[_exact(value) for value in row] for row in whole])
+    return _matrix([[_exact(value) for value in row] for row in affine.inverse])
+
+
+def _decimal(value: Fraction) -> str:
+    """The number as a decimal of few digits, as engineers type it; "" where it is none."""
+    text = f"{float(value):.{_DIGITS}g}"
+    return text if _near(Fraction(text), value) and "e" not in text else ""
+
+
+def _near(short: Fraction, value: Fraction) -> bool:
+    """Whether two numbers are the same but for the rounding of decimals to doubles."""
+    return abs(short - value) <= abs(value) * Fraction(2, 10**15)
+
+
+def _exact(value: Fraction) -> str:
+    """A short decimal or fraction as such, else the number to nine digits."""
+    short = value.limit_denominator(99)
+    if _decimal(value):
+        return _decimal(value)
+    if _near(short, value) and abs(short.numerator) < 10**6:
+        return f"{short.numerator}/{short.denominator}"
+    return to_latex(Number(float(value), f"{float(value):.9g}"), {})
