@@ -269,7 +269,7 @@ def test_usual_units_are_those_of_the_unit_library() -> None:
     words = usual_words()
     assert len(words) > 1500
     differing = [word for word in words if usual_unit(word) != unit_words.library_definition(word)]
-    assert differing == ["mcd"]
+    assert set(differing) <= {"mcd"}
     assert usual_unit("mcd") == (Fraction(1, 1000), (("candela", Fraction(1)),), Fraction(0))
 
 

@@ -1,7 +1,7 @@
 """Units as values: reads unit text, knows scales exactly, and writes units for people.
 
 Plain units (mm, kg/m^3), units with an offset (degC, degF) and levels (dBm, dB(1/K)) are told apart; which
-of them may be added or multiplied is for `units`. Definitions come from pint; the syntax is read here.
+of them may be added or multiplied is for `units`. Definitions come from `unit_words`; the syntax is read here.
 """
 
 from __future__ import annotations
@@ -24,7 +24,7 @@ LEVELS: dict[str, str] = {
     "dBW/Hz": "W/Hz", "dBm/Hz": "mW/Hz", "dBW/K/Hz": "W/K/Hz",
 }  # fmt: skip
 
-# Units that definitions of pint treat otherwise than is wanted here.
+# Units that the definitions treat otherwise than is wanted here.
 _RATIO_LEVELS = {"dB": Fraction(1), "dBi": Fraction(1), "dBc": Fraction(1)}
 _OFFSETS = {
     **dict.fromkeys(("degC", "°C", "degree_Celsius"), (Fraction(1), Fraction(27315, 100))),
