@@ -1,7 +1,7 @@
 """Units as values: reads unit text, knows scales exactly, and writes units for people.
 
 Plain units (mm, kg/m^3), units with an offset (degC, degF) and levels (dBm, dB(1/K)) are told apart; which
-of them may be added or multiplied is for `units`. Definitions come from `unit_words`; the syntax is read here.
+of them may be added or multiplied is for `units`. Words are defined by `unit_words`; the syntax is read here.
 """
 
 from __future__ import annotations
