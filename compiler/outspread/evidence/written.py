@@ -29,7 +29,8 @@ LEVELS = (0.0, 0.02, 0.15, 0.5, 0.85, 0.98, 1.0)
 GRID = 128
 #: relative change of the leaves of a formula that stands for its rounding
 SLIP = 8 * float(np.finfo(float).eps)
-BISECTIONS, REFINEMENTS = 70, 24
+BISECTIONS, REFINEMENTS = 70, 48
+MOST_BENT = 40  # cells a row; a formula that turns more often is noise
 NEAR = 1e-14
 
 Truth = npt.NDArray[np.bool_]
@@ -101,7 +102,8 @@ class _Joint:
             self.rest = math.sqrt(1.0 - correlation**2)
             self.marks = np.array([-7.0, -3.5, -1.5, 0.0, 1.5, 3.5, 7.0])
         else:
-            ends = (self.inner.lower, *self.inner.corners, self.inner.upper)
+            # powers and quotients turn or have a pole where a quantity is 0
+            ends = (0.0, self.inner.lower, *self.inner.corners, self.inner.upper)
             levels = np.quantile(self.inner_draws, LEVELS)
             self.marks = np.unique(np.concatenate([levels, [end for end in ends if math.isfinite(end)]]))
 
@@ -211,7 +213,7 @@ def _panels(integrand: _Integrand, y: Array, finer: int) -> Panels:
     scale = float(draws[-1] - draws[0])
     grid = _grid(outer, draws, finer)
     row, place, ends = _changes(integrand, y, grid)
-    fixed = np.concatenate([np.quantile(draws, LEVELS), outer.corners, [outer.lower, outer.upper]])
+    fixed = np.concatenate([np.quantile(draws, LEVELS), outer.corners, [outer.lower, 0.0, outer.upper]])
     fixed = np.unique(fixed[(fixed >= outer.lower) & (fixed <= outer.upper)])
     rows = np.concatenate([np.repeat(np.arange(y.size), fixed.size), row])
     places = np.concatenate([np.tile(fixed, y.size), place])
@@ -247,7 +249,8 @@ def _grid(outer: MarginalDensity, draws: Array, finer: int) -> Array:
     near = np.geomspace(1e-9, 1.0, 24 * finer)[:-1]
     low = inner[0] - away if math.isinf(outer.lower) else outer.lower + (inner[0] - outer.lower) * near
     high = inner[-1] + away if math.isinf(outer.upper) else outer.upper - (outer.upper - inner[-1]) * near
-    points: Array = np.unique(np.concatenate([low, inner, high]))
+    middle = [0.0] if outer.lower < 0.0 < outer.upper else []
+    points: Array = np.unique(np.concatenate([low, inner, high, middle]))
     return points
 
 
@@ -271,7 +274,7 @@ def _changes(integrand: _Integrand, y: Array, grid: Array) -> tuple[Index, Array
             above = np.concatenate([z[:, None] > marks[:, None], (rate > 0.0)[:, None]], axis=1)
         return above.reshape(-1, x.size)
 
-    rows, points = _refined(lambda row, x: position(row, x)[0], y.size, grid)
+    rows, points, bent, turn = _refined(lambda row, x: np.concatenate(position(row, x)), y.size, grid)
     seen = state(rows, points)
     which, cell = np.nonzero((seen[:, 1:] != seen[:, :-1]) & (rows[1:] == rows[:-1]))
     row, low, high = rows[cell], points[cell], points[cell + 1]
@@ -281,32 +284,37 @@ def _changes(integrand: _Integrand, y: Array, grid: Array) -> tuple[Index, Array
         now = state(row, middle)[which, np.arange(row.size)]
         low, high = np.where(now == before, middle, low), np.where(now == before, high, middle)
     # where solutions begin or end, the side that has them is the end of the panel
-    return row, np.where(before, low, high), which % (marks.size + 1) == 0
+    place, ends = np.where(before, low, high), which % (marks.size + 1) == 0
+    return (
+        np.concatenate([row, bent]), np.concatenate([place, turn]), np.concatenate([ends, bent < 0])
+    )  # fmt: skip
 
 
-def _refined(position: Callable[[Index, Array], Array], count: int, grid: Array) -> tuple[Index, Array]:
-    """The grid for each row, with points added in cells over which a solution does not run straight on: there
-    is a pole or a turn inside, and what lies beside it may be narrow."""
+def _refined(
+    follow: Callable[[Index, Array], Array], count: int, grid: Array
+) -> tuple[Index, Array, Index, Array]:
+    """The grid for each row, with points added in cells over which a solution or its derivative does not run
+    straight on: there is a pole or a turn inside, and what lies beside it may be narrow. And the rows and the
+    places of these poles and turns, to within rounding."""
     rows = np.repeat(np.arange(count), grid.size - 1)
     low, high = np.tile(grid[:-1], count), np.tile(grid[1:], count)
     added_rows, added = [np.repeat(np.arange(count), grid.size)], [np.tile(grid, count)]
     for _ in range(REFINEMENTS):
-        if not rows.size:
-            break
         width = high - low
+        ends = [follow(rows, at) for at in (low, low + width / 64, high - width / 64, high)]
         with np.errstate(invalid="ignore"):
-            first, second, third, last = (
-                position(rows, at) for at in (low, low + width / 64, high - width / 64, high)
-            )
-            signs = [np.sign(second - first), np.sign(last - third), np.sign(last - first)]
-        bent = np.any((signs[0] != signs[2]) | (signs[1] != signs[2]), axis=0) & np.isfinite(width)
-        bent &= ~np.all(np.isnan(first + last), axis=0)
+            signs = [np.sign(ends[1] - ends[0]), np.sign(ends[3] - ends[2]), np.sign(ends[3] - ends[0])]
+        bent = np.any((signs[0] != signs[2]) | (signs[1] != signs[2]), axis=0)
+        bent &= np.any(np.isfinite(ends[0]) & np.isfinite(ends[3]), axis=0)
         rows, low, high = rows[bent], low[bent], high[bent]
         middle = low + 0.5 * (high - low)
-        added_rows.append(rows)
-        added.append(middle)
-        rows = np.concatenate([rows, rows])
-        low, high = np.concatenate([low, middle]), np.concatenate([middle, high])
+        wide = high - low > NEAR * np.abs(middle)
+        if not np.any(wide) or rows.size > MOST_BENT * count:
+            break
+        added_rows.append(rows[wide])
+        added.append(middle[wide])
+        rows, low, middle, high = (part[wide] for part in (rows, low, middle, high))
+        rows, low, high = np.tile(rows, 2), np.concatenate([low, middle]), np.concatenate([middle, high])
     row, point = np.concatenate(added_rows), np.concatenate(added)
     order = np.lexsort((point, row))
-    return row[order], point[order]
+    return row[order], point[order], rows, low + 0.5 * (high - low)
