@@ -53,9 +53,13 @@ class DerivedLaw(Law):
         self._table: tuple[Array, Array, Array] | None = None
         self._moments: tuple[Estimates, Array] | None = None
 
-    def tabulate(self, knots: Sequence[float] = ()) -> None:
+    def tabulate(
+        self, knots: Sequence[float] = (), density: bool = True, inherited: float = 0.0
+    ) -> None:
         """Keep the continuous part on panels from here on (`laws.tabulated`); `knots` are values at which it
-        may not be smooth, atoms and ends of the support apart. For routes whose every value is dear."""
+        may not be smooth, atoms and ends of the support apart. For routes whose every value is dear. Without
+        `density` that is the slope of the cdf. `inherited`: the share of the relative error that comes with
+        the inputs' laws."""
         if self._continuous_mass == 0 or self._tabulated:
             return
         low, centre, high = self.rough_quantile(np.array([0.16, 0.5, 0.84])).tolist()
@@ -64,12 +68,31 @@ class DerivedLaw(Law):
         if centre in marks:  # an atom holds the middle
             centre += 0.1 * scale
         table = Tabulated(
-            self._evaluate, self._support, sorted(marks), centre, scale, self._continuous_mass
-        )
+            self._evaluate, self._support, sorted(marks), centre, scale, self._continuous_mass,
+            density=density, inherited=inherited,
+        )  # fmt: skip
         self._evaluate, self._tabulated = table, table
+        self.relative_error, self.floor = table.bounds()
+        if not density:  # an input of a next step, which breaks its panels at them
+            self.turning_values = tuple(sorted(m for m in marks if self._support[0] < m < self._support[1]))
         self._seen = {kind: {} for kind in KINDS}
         self._quantiles = {False: {}, True: {}}
         self._table = None
+
+    def singular_ends(self) -> tuple[bool, bool]:
+        """Whether the density grows without bound towards a finite end, as its values there show."""
+        if not self._tabulated:
+            return super().singular_ends()
+        found = []
+        width = float(np.diff(self.rough_quantile(np.array([0.16, 0.84])))[0])
+        for end, side in zip(self._support, (1.0, -1.0), strict=True):
+            steps = np.maximum(width * np.array([1e-6, 1e-9]), abs(end) * np.array([1e-10, 1e-13]))
+            if not np.isfinite(end):
+                found.append(False)
+                continue
+            far, near = self.estimate("pdf", end + side * steps).value.tolist()
+            found.append(near > 1.2 * far)
+        return found[0], found[1]
 
     # --- values with errors -------------------------------------------------------------------------
 

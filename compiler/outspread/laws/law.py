@@ -39,10 +39,12 @@ class Atoms:
 
 @dataclass(frozen=True)
 class Estimates:
-    """Values with bounds on their absolute errors, arrays of one shape."""
+    """Values with bounds on their absolute errors, arrays of one shape. `rounding`, where known: the part of
+    the error that is a rounding of the argument in its last places."""
 
     value: Array
     error: Array
+    rounding: Array | None = None
 
 
 class Law(ABC):
@@ -55,6 +57,9 @@ class Law(ABC):
 
     #: bound on the relative error of cdf, ccdf and pdf wherever they exceed 1e-290
     relative_error: float = 1e-13
+
+    #: bound on the absolute error of cdf and ccdf where they are smaller than the relative one can tell
+    floor: float = 0.0
 
     #: what the law is called in text ("Normal distribution"); "" where it has no name
     name: str = ""

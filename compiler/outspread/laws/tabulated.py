@@ -15,6 +15,9 @@ import numpy.typing as npt
 from outspread.laws.law import Array, Estimates
 from outspread.numerics.panels import PanelFunction, expand, panels_over
 
+_POORER = 10.0  # than in the body
+FADING = 1e-100  # probabilities below this are kept, but not promised to be exact relative to themselves
+
 Evaluate = Callable[[str, Array], Estimates]
 
 
@@ -31,17 +34,27 @@ class Tabulated:
         scale: float,
         mass: float,
         relative: float = 1e-13,
+        density: bool = True,
+        inherited: float = 0.0,
     ):
-        self._evaluate, self._mass, self._centre = evaluate, mass, centre
+        self._evaluate, self._mass, self._centre, self._inherited = evaluate, mass, centre, inherited
         low, high = support
         self.knots = np.array(sorted({k for k in (*knots, low, high) if np.isfinite(k)}))
         # the middle is no knot: no panel may be graded towards it
         below = panels_over([k for k in knots if k < centre], low, centre, centre, scale, (True, False))
         above = panels_over([k for k in knots if k > centre], centre, high, centre, scale, (False, True))
-        self._below = expand(lambda y: evaluate("cdf", y), below, relative)
-        self._above = expand(lambda y: evaluate("ccdf", y), above, relative)
+        self._below = expand(lambda y: self._own("cdf", y), below, relative)
+        self._above = expand(lambda y: self._own("ccdf", y), above, relative)
         start = [*self._below.panels, *self._above.panels]
-        self._density = expand(lambda y: evaluate("pdf", y), start, relative, self._room)
+        self._density: PanelFunction | None = None
+        if density:
+            self._density = expand(lambda y: self._own("pdf", y), start, relative, self._room)
+
+    def _own(self, kind: str, y: Array) -> Estimates:
+        """Values with the error of their own computation alone: what is inherited is no noise."""
+        found = self._evaluate(kind, y)
+        error = np.maximum(found.error - self._inherited * found.value, 0.0)
+        return Estimates(found.value, error, found.rounding)
 
     def _room(self, y: Array) -> Array:
         """What a panel of the density may be off by in mass: nothing to be seen in the nearer tail."""
@@ -49,8 +62,22 @@ class Tabulated:
         return 1e-14 * tail + 1e-300
 
     def __call__(self, kind: str, y: Array) -> Estimates:
+        found = self._kept(kind, y)
+        return Estimates(found.value, found.error + self._inherited * found.value)
+
+    def _slope(self, y: Array) -> Estimates:
+        """The density as the slope of the cdf or of the ccdf, whichever is small."""
+        value, error = np.zeros(y.size), np.zeros(y.size)
+        near = y < self._centre
+        for part, function, sign in ((near, self._below, 1.0), (~near, self._above, -1.0)):
+            if part.any():
+                found = function.slope(y[part])
+                value[part], error[part] = np.maximum(sign * found.value, 0.0), found.error
+        return Estimates(value, error)
+
+    def _kept(self, kind: str, y: Array) -> Estimates:
         if kind == "pdf":
-            return self._at_knots(self._density(y), y)
+            return self._slope(y) if self._density is None else self._at_knots(self._density(y), y)
         own, other = (self._below, self._above) if kind == "cdf" else (self._above, self._below)
         near = y <= self._centre if kind == "cdf" else y >= self._centre
         value, error = np.empty(y.size), np.empty(y.size)
@@ -70,6 +97,14 @@ class Tabulated:
             found.value[at], found.error[at] = exact.value, exact.error
         return found
 
-    def functions(self) -> tuple[PanelFunction, PanelFunction, PanelFunction]:
-        """cdf below the middle, ccdf above it, density."""
-        return self._below, self._above, self._density
+    def bounds(self) -> tuple[float, float]:
+        """(relative error, absolute error beside it) of cdf below and ccdf above the middle, for a next step,
+        which takes account of roundings itself. Panels with hardly any digits count absolutely."""
+        relative, absolute = 0.0, 0.0
+        for function in (self._below, self._above):
+            shares, sizes = function.firm.T
+            body = float(np.max(shares[function.peaks > 1e-3], initial=0.0))
+            poor = (shares > _POORER * body) | (function.peaks < FADING)
+            relative = max(relative, float(np.max(shares[~poor], initial=0.0)))
+            absolute = max(absolute, float(np.max(sizes[poor], initial=0.0)))
+        return relative + self._inherited, absolute + FADING

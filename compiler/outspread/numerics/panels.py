@@ -17,6 +17,7 @@ from itertools import pairwise
 
 import numpy as np
 import numpy.typing as npt
+from numpy.polynomial import chebyshev
 
 from outspread.laws.law import Estimates
 
@@ -26,8 +27,10 @@ Evaluate = Callable[[Array], Estimates]
 
 SIZE = 20  # nodes, and coefficients, of a panel
 LEAST = 1e-290  # below this a value is taken for 0, and stated to be off by as much
+_FADED = 1e-285  # a panel that ends in zeros and stays below this counts as 0 throughout
 _LEBESGUE = 2.9  # of 20 Chebyshev points: 2/pi log(20) + 0.97
 _FLAT, _LOG, _ZERO = 0, 1, 2
+_DIFFERENTIATED = 620.0  # a quarter of the sum of k^2 below SIZE: the tail sums four coefficients
 _MOST = 2_500  # panels
 _LINEAR_ATTEMPTS = 2  # bisections at a knot before the logarithm of the distance is taken
 _NODES: Array = np.cos(np.pi * (np.arange(SIZE) + 0.5) / SIZE)[::-1]
@@ -63,19 +66,24 @@ class Panel:
         half = max(0.5 * (self.last - self.first), 1e-300)
         s = self.coordinates()
         if not self.side:
-            return 2.3e-16 * np.abs(s) / half
+            return np.asarray(2.3e-16 * np.abs(s) / half, float)
         distance = np.exp(s)
-        return 2.3e-16 * (1 + np.abs(self.anchor) / distance + np.abs(s)) / half
+        return np.asarray(2.3e-16 * (1 + np.abs(self.anchor) / distance + np.abs(s)) / half, float)
 
 
 def linear(lower: float, upper: float, knots: tuple[bool, bool], depth: int = 0) -> Panel:
     return Panel(lower, upper, first=lower, last=upper, knots=knots, depth=depth)
 
 
-def logarithmic(anchor: float, side: int, first: float, last: float, depth: int = 0) -> Panel:
-    """From distance exp(first) to distance exp(last) on one side of the anchor."""
+def logarithmic(
+    anchor: float, side: int, first: float, last: float, depth: int = 0, innermost: bool = False
+) -> Panel:
+    """From distance exp(first) to distance exp(last) on one side of the anchor; the innermost panel answers
+    for all that is closer, too."""
     near, far = (anchor + side * float(np.exp(s)) for s in (first, last))
-    return Panel(min(near, far), max(near, far), anchor, side, first, last, (False, False), depth)
+    near = anchor if innermost else near
+    knots = (innermost and side > 0, innermost and side < 0)
+    return Panel(min(near, far), max(near, far), anchor, side, first, last, knots, depth)
 
 
 def panels_over(
@@ -122,11 +130,25 @@ def _ray(anchor: float, side: int, start: float) -> list[Panel]:
 class PanelFunction:
     """The function on its panels: call it with values for `Estimates`. Outside all panels it is 0."""
 
-    def __init__(self, panels: list[Panel], series: Array, forms: Index, relative: Array, absolute: Array):
+    def __init__(
+        self,
+        panels: list[Panel],
+        series: Array,
+        forms: Index,
+        relative: Array,
+        absolute: Array,
+        tails: Array,
+        peaks: Array,
+        firm: Array,
+    ):
         order = np.argsort([panel.lower for panel in panels], kind="stable")
         self.panels = [panels[i] for i in order.tolist()]
         self.forms, self.relative, self.absolute = forms[order], relative[order], absolute[order]
+        self.tails, self.peaks = tails[order], peaks[order]
+        #: (relative, absolute) error of each panel without what is a rounding of the argument
+        self.firm = firm[order]
         self.series = np.ascontiguousarray(series[order].T)
+        self._slopes = np.asarray(chebyshev.chebder(self.series, axis=0), float)
         self.lower = np.array([panel.lower for panel in self.panels])
         self.upper = np.array([panel.upper for panel in self.panels])
         self._anchor = np.array([panel.anchor for panel in self.panels])
@@ -138,7 +160,7 @@ class PanelFunction:
     def __call__(self, y: Array) -> Estimates:
         if not self.lower.size:
             return Estimates(np.zeros(y.size), np.zeros(y.size))
-        index = np.clip(np.searchsorted(self.lower, y, side="right") - 1, 0, self.lower.size - 1)
+        index = self._panel(y)
         inside = (y >= self.lower[index]) & (y <= self.upper[index])
         value = self._series_at(y, index)
         form = self.forms[index]
@@ -148,7 +170,36 @@ class PanelFunction:
         error = np.where(inside, self.absolute[index] + self.relative[index] * value, 0.0)
         return Estimates(value, error)
 
-    def _series_at(self, y: Array, index: Index) -> Array:
+    def slope(self, y: Array) -> Estimates:
+        """The derivative, from that of the series. Its error is judged by the noise that the series' own last
+        coefficients show; differentiating lifts it by the square of the degree."""
+        if not self.lower.size:
+            return Estimates(np.zeros(y.size), np.zeros(y.size))
+        index = self._panel(y)
+        inside = (y >= self.lower[index]) & (y <= self.upper[index])
+        form = self.forms[index]
+        value = self(y).value
+        with np.errstate(all="ignore"):
+            rate, stretch = self._series_at(y, index, self._slopes), self._stretch(y, index)
+            size = np.where(form == _LOG, value, 1.0) * np.abs(stretch)
+            slope = np.where(form == _LOG, value * rate, rate) * stretch
+        live = inside & (form != _ZERO) & np.isfinite(slope)
+        error = np.where(live, _DIFFERENTIATED * self.tails[index] * size, 0.0)
+        return Estimates(np.where(live, slope, 0.0), np.where(np.isfinite(error), error, np.inf))
+
+    def _stretch(self, y: Array, index: Index) -> Array:
+        """du/dy of the panels' own variable u in [-1, 1]."""
+        side = self._side[index]
+        distance = side * (y - self._anchor[index])
+        per = np.where(side == 0, 1.0, side / np.where(side == 0, 1.0, np.maximum(distance, 1e-305)))
+        return np.asarray(per / self._half[index], float)
+
+    def _panel(self, y: Array) -> Index:
+        found = np.searchsorted(self.lower, y, side="right") - 1
+        return np.clip(found, 0, self.lower.size - 1)
+
+    def _series_at(self, y: Array, index: Index, series: Array | None = None) -> Array:
+        series = self.series if series is None else series
         side = self._side[index]
         with np.errstate(all="ignore"):
             distance = side * (y - self._anchor[index])
@@ -156,9 +207,9 @@ class PanelFunction:
             u = np.clip((s - self._middle[index]) / self._half[index], -1.0, 1.0)
         one = two = np.zeros_like(u)
         twice = 2 * u
-        for k in range(SIZE - 1, 0, -1):
-            one, two = self.series[k][index] + twice * one - two, one
-        return np.asarray(self.series[0][index] + u * one - two, float)
+        for k in range(len(series) - 1, 0, -1):
+            one, two = series[k][index] + twice * one - two, one
+        return np.asarray(series[0][index] + u * one - two, float)
 
 
 def expand(
@@ -179,10 +230,14 @@ def expand(
     forms: list[int] = []
     relatives: list[float] = []
     absolutes: list[float] = []
+    tails: list[float] = []
+    peaks: list[float] = []
+    firm: list[tuple[float, float]] = []
     while pending:
         points = np.stack([panel.nodes() for panel in pending])
         found = evaluate(points.ravel())
         values, errors = found.value.reshape(points.shape), found.error.reshape(points.shape)
+        roundings = errors if found.rounding is None else found.rounding.reshape(points.shape)
         expansion = _expand(values, errors, np.stack([panel.rounding() for panel in pending]))
         middles = points[:, SIZE // 2]
         room = np.zeros(len(pending)) if enough is None else np.asarray(enough(middles), float)
@@ -192,7 +247,8 @@ def expand(
             tail, noise, size = expansion.tail[i], expansion.noise[i], expansion.size[i]
             holds = bool(tail <= relative * size + noise)
             # the error of the worst node is stated for the whole panel: it may not differ much between them
-            closed = holds and (noise <= 10 * max(expansion.least[i], relative * size) or _narrow(panel))
+            even = noise <= 10 * max(expansion.least[i], relative * size) or expansion.least[i] > 0.1 * size
+            closed = holds and (even or _narrow(panel))
             if not holds:
                 closed = _missed(expansion, i) * (panel.upper - panel.lower) <= room[i]
             parts = [] if closed or full else _halves(panel)
@@ -201,16 +257,22 @@ def expand(
                 continue
             done.append(panel)
             series.append(expansion.series[i])
+            tails.append(float(min(tail, size)))
+            peaks.append(float(expansion.peak[i]))
+            is_log = bool(expansion.forms[i] == _LOG)
+            rough = 2 * tail if holds else min(3 * expansion.rough[i], 2 * size)
+            own = errors[i] if found.rounding is None else errors[i] - roundings[i]
+            firm.append(_firm(values[i], np.maximum(own, 0.0), float(rough), is_log))
             forms.append(int(expansion.forms[i]))
             # a series that does not decay is no interpolant to trust between its nodes
-            doubt = _LEBESGUE * noise + (2 * tail if holds else 3 * expansion.rough[i])
-            is_log = expansion.forms[i] == _LOG
+            doubt = _LEBESGUE * noise + (2 * tail if holds else min(3 * expansion.rough[i], 2 * size))
             relatives.append(float(doubt) + 1e-15 if is_log else 1e-15)
-            absolutes.append(LEAST if is_log else float(doubt) + LEAST)
+            absolutes.append(LEAST if is_log else float(doubt) + _FADED)
         pending = following
     return PanelFunction(
         done, np.array(series).reshape(-1, SIZE), np.array(forms, np.int64), np.array(relatives),
-        np.array(absolutes),
+        np.array(absolutes), np.array(tails), np.array(peaks),
+        np.array(firm).reshape(-1, 2),
     )  # fmt: skip
 
 
@@ -229,6 +291,18 @@ class _Expansion:
     rough: Array  # the upper half of the series
 
 
+def _firm(values: Array, errors: Array, rough: float, is_log: bool) -> tuple[float, float]:
+    """(relative, absolute) error of a panel from the errors of its values and what the series misses."""
+    peak = float(values.max())
+    if peak <= 0:
+        return 0.0, float(errors.max())
+    with np.errstate(all="ignore"):
+        relative = float(np.max(errors / values)) if is_log else float(errors.max()) / peak
+    missed = rough if is_log else rough / peak
+    relative = _LEBESGUE * relative + missed + 4e-16
+    return relative, min(_LEBESGUE * float(errors.max()) + missed * peak, 2 * peak)
+
+
 def _missed(expansion: _Expansion, i: int) -> float:
     """What the series misses of the function, in its own units."""
     peak = expansion.peak[i] if expansion.forms[i] == _LOG else 1.0
@@ -238,8 +312,10 @@ def _missed(expansion: _Expansion, i: int) -> float:
 def _expand(values: Array, errors: Array, shifts: Array) -> _Expansion:
     values = np.where(np.isfinite(values), values, 0.0)
     peak = values.max(axis=1)
-    zero = np.asarray(peak <= LEAST)
     positive = np.asarray((values > LEAST).all(axis=1))
+    zero = np.asarray((peak <= _FADED) & ~positive)
+    # a power that fades out below the smallest numbers is followed by halving, not by a polynomial
+    fading = ~positive & ((values > 0) & (values < 1e-30 * peak[:, None])).any(axis=1) & ~zero
     forms = np.where(zero, _ZERO, np.where(positive, _LOG, _FLAT))
     with np.errstate(all="ignore"):
         logs = np.log(np.where(positive[:, None], values, 1.0))
@@ -249,7 +325,7 @@ def _expand(values: Array, errors: Array, shifts: Array) -> _Expansion:
     series = (terms - base[:, None]) @ _TRANSFORM.T  # a large constant would leave its rounding everywhere
     series[:, 0] += base
     # the last coefficients of both parities: an even or odd function shows in one of them only
-    tail = np.abs(series[:, -4:]).sum(axis=1)
+    tail = np.where(fading, np.inf, np.abs(series[:, -4:]).sum(axis=1))
     depth = np.abs(logs).max(axis=1, keepdims=True)
     own = own + np.where(positive[:, None], 2.3e-16 * np.maximum(depth, 4.0), 1e-15 * peak[:, None])
     own = own + np.abs(np.gradient(terms, _NODES, axis=1)) * shifts
@@ -269,12 +345,12 @@ def _halves(panel: Panel) -> list[Panel]:
     """The panel in two, or none where it cannot be halved any more."""
     depth = panel.depth + 1
     if panel.side:
-        if panel.last - panel.first < 1e-9 or panel.upper - panel.lower <= 1e-14 * abs(panel.upper):
+        if panel.last - panel.first < 1e-9 or panel.upper - panel.lower <= 1e-14 * abs(panel.anchor):
             return []
         middle = 0.5 * (panel.first + panel.last)
         return [
-            logarithmic(panel.anchor, panel.side, a, b, depth)
-            for a, b in ((panel.first, middle), (middle, panel.last))
+            logarithmic(panel.anchor, panel.side, panel.first, middle, depth, any(panel.knots)),
+            logarithmic(panel.anchor, panel.side, middle, panel.last, depth),
         ]
     lower, upper = panel.lower, panel.upper
     middle = 0.5 * (lower + upper)
@@ -285,7 +361,8 @@ def _halves(panel: Panel) -> list[Panel]:
         anchor, side = (lower, 1) if left else (upper, -1)
         nearest, furthest = _closest(anchor, upper - lower), float(np.log(middle - lower))
         rest = (middle, upper) if left else (lower, middle)
-        return [logarithmic(anchor, side, nearest, furthest, depth), linear(*rest, (False, False), depth)]
+        graded = logarithmic(anchor, side, nearest, furthest, depth, innermost=True)
+        return [graded, linear(*rest, (False, False), depth)]
     return [linear(lower, middle, (left, False), depth), linear(middle, upper, (False, right), depth)]
 
 

@@ -183,7 +183,7 @@ def _measure(problem: Problem, outer: tuple[str, ...], relative: float) -> Measu
 
 def _evaluator(pieces: list[Piece]) -> Evaluate:
     def evaluate(kind: str, y: Array) -> Estimates:
-        value, error = np.zeros(y.size), np.zeros(y.size)
+        value, error, rounding = np.zeros((3, y.size))
         for piece in pieces:
             if piece.measure is None:
                 continue
@@ -197,7 +197,9 @@ def _evaluator(pieces: list[Piece]) -> Evaluate:
             part = method(event, y)
             value += part.value
             error += part.error
-        return Estimates(value, error)
+            if part.rounding is not None:
+                rounding += part.rounding
+        return Estimates(value, error, rounding)
 
     return evaluate
 

@@ -1,8 +1,10 @@
 """One continuous input as an axis of integration: a grid graded by probability, and the coordinate t.
 
-Where the density is bounded, t is the input itself. Where it is unbounded at an end, t is a probability
-counted from the nearer end (negative for the upper half), so that the singularity is gone and both ends
-keep full resolution: P(X in A) = integral over t of 1{x(t) in A} dt.
+Where the density is bounded, t is the input itself. Where the law spreads over many magnitudes, t is an
+inverse hyperbolic sine; where it begins at 0 with an unbounded density or spreads over many magnitudes from
+there, the logarithm. Where the density is unbounded at another end, t is a probability counted from the
+nearer end (negative for the upper half), so that the singularity is gone and both ends keep full resolution:
+P(X in A) = integral over t of 1{x(t) in A} dt.
 """
 
 from __future__ import annotations
@@ -17,14 +19,18 @@ from outspread.numerics.slices.solve import Frame
 
 _WIDEST = 50.0  # ratio of the distances from the middle of two neighbouring grid points
 _MOST_STEPS = 40
+_FURTHEST = 1e145  # the square is still a number, and so is the density of a heavy tail
 _TAILS = (1e-300, 1e-200, 1e-120, 1e-70, 1e-40, 1e-22, 1e-12, 1e-7, 1e-4, 0.01, 0.12)
 _COARSE_TAILS = (1e-300, 1e-120, 1e-40, 1e-12, 1e-4, 0.05, 0.25, 0.45, 0.499)
 
 
 class Axis:
-    """`frame` is what solvers see of the input; `breaks` are further points where a panel must end."""
+    """`frame` is what solvers see of the input; `breaks` are further points where a panel must end;
+    `multiplicative`: the formula takes the input as a factor, so that ratios to it matter."""
 
-    def __init__(self, name: str, law: Law, breaks: tuple[float, ...] = ()):
+    def __init__(
+        self, name: str, law: Law, breaks: tuple[float, ...] = (), multiplicative: bool = False
+    ):
         self.name, self.law = name, law
         self.mass = law.continuous_mass
         self.breaks = breaks
@@ -38,15 +44,34 @@ class Axis:
         )
         points = points[np.isfinite(points) & (points >= self.start) & (points <= self.end)]
         self.grid: Array = np.unique(points)
+        self.scale = spread / 2 if spread > 0 else max(abs(float(middle)), 1.0)
+        self.middle = float(middle)
         self.singular = law.singular_ends() if self.mass == 1.0 else (False, False)
         steps = _steps(self.grid, float(middle))
         # a tail over many magnitudes has its mass in a sliver of each panel, unless t counts probability
-        self.by_probability = self.mass == 1.0 and (any(self.singular) or steps.size > _MOST_STEPS)
-        if not self.by_probability:
+        wide = self.mass == 1.0 and (any(self.singular) or steps.size > _MOST_STEPS)
+        self.by_logarithm = (wide or multiplicative) and low == 0.0 and not self.singular[1]
+        self.by_logarithm &= self.mass == 1.0
+        wide &= not self.by_logarithm
+        self.by_probability = wide and any(self.singular)
+        self.by_sinh = wide and not any(self.singular)
+        if not (wide or self.by_logarithm):
             self.grid = np.unique(np.concatenate([self.grid, steps]))
+        #: probability beyond the ends of the grid, where the density underflows
+        self.outside = 0.0
+        if self.by_logarithm or self.by_sinh:
+            self._limit()
         self.frame = Frame(name, self.grid)
-        self.scale = spread / 2 if spread > 0 else max(abs(float(middle)), 1.0)
-        self.middle = float(middle)
+
+    def _limit(self) -> None:
+        """End the grid where the density is still a number: beyond, the mass is given up and stated."""
+        start, end = max(-_FURTHEST, self.start), min(_FURTHEST, self.end)
+        if start > self.start:
+            self.outside += float(self.law.cdf(start))
+        if end < self.end:
+            self.outside += float(self.law.ccdf(end))
+        self.start, self.end = start, end
+        self.grid = np.unique(np.clip(self.grid, start, end))
 
     def coarse(self) -> Array:
         """A sparser grid: the ends, the middle, the breaks and a few tail points."""
@@ -57,6 +82,12 @@ class Axis:
 
     def to_t(self, x: Array) -> Array:
         """The coordinate of points; NaN stays NaN."""
+        if self.by_logarithm:
+            with np.errstate(all="ignore"):
+                t = np.log(x)
+            return np.where(np.isinf(t), np.nan, t)
+        if self.by_sinh:
+            return np.asarray(np.arcsinh((x - self.middle) / self.scale), float)
         if not self.by_probability:
             return x
         below, above = self.law.cdf(x), self.law.ccdf(x)
@@ -64,6 +95,10 @@ class Axis:
         return np.where(np.isnan(x), np.nan, t)
 
     def to_x(self, t: Array) -> Array:
+        if self.by_logarithm:
+            return np.asarray(np.exp(t), float)
+        if self.by_sinh:
+            return np.asarray(self.middle + self.scale * np.sinh(t), float)
         if not self.by_probability:
             return t
         lower = np.maximum(t, 0.0)
@@ -72,10 +107,18 @@ class Axis:
 
     def weight(self, x: Array) -> Array:
         """dP/dt at x."""
+        if self.by_logarithm:
+            return np.asarray(self.law.pdf(x) * x, float)
+        if self.by_sinh:
+            return np.asarray(self.law.pdf(x) * np.hypot(self.scale, x - self.middle), float)
         return np.ones_like(x) if self.by_probability else self.law.pdf(x)
 
     def fixed_points(self) -> Array:
         """Panel ends in t that hold for every problem."""
+        if self.by_logarithm:
+            return np.unique(self.to_t(self.grid[self.grid > 1e-305]))
+        if self.by_sinh:
+            return np.unique(self.to_t(self.grid))
         if not self.by_probability:
             return self.grid
         inner = self.grid[1:-1]

@@ -77,7 +77,7 @@ class LineMeasure:
             slip = np.where(density == 0, 0.0, density * shift)
             slip = np.where(np.isfinite(slip), slip, np.sqrt(ROUNDING))
         lost = np.bincount(edge.problem, slip, value.size)
-        error = self._relative * value + lost
+        error = self._relative * value + lost + self.problem.laws[self.name].floor
         return Estimates(value.reshape(shape), error.reshape(shape))
 
     def _sets(self, event: Node, y: Array) -> tuple[Sets, Mapping[str, Array]]:
@@ -141,6 +141,7 @@ class PlaneMeasure:
         self._solvers: dict[tuple[Node, str], Solver] = {}
         self._slopes = {name: _compiled(derivative(problem.expression, name)) for name in (outer, inner)}
         self._relative_error = laws[outer].relative_error + laws[inner].relative_error + 1e-14
+        self._floor = laws[outer].floor + laws[inner].floor
 
     def exact(self, event: Node) -> bool:
         return self._solver(event, self.inner).exact
@@ -157,7 +158,10 @@ class PlaneMeasure:
                 turns = search(self.problem.expression, (outer, inner), grids, others)
                 for name, found in zip((outer, inner), turns, strict=True):
                     breaks[name] = (*breaks[name], *found.tolist())
-        return {name: Axis(name, laws[name], breaks[name]) for name in (outer, inner)}
+        return {
+            name: Axis(name, laws[name], breaks[name], _is_factor(self.problem.expression, name))
+            for name in (outer, inner)
+        }
 
     def _breaks(self, name: str) -> tuple[float, ...]:
         """Where the formula changes its nature in one input alone, whatever the other: kinks, poles, and
@@ -227,15 +231,19 @@ class PlaneMeasure:
         )
         self.effort.evaluations += result.evaluations
         error = result.error[0] + np.abs(result.value[1]) + self._relative_error * result.value[0]
+        error += axis.outside + self._floor
         shape = (y.size, self.combos.count)
-        return Estimates(result.value[0].reshape(shape), error.reshape(shape))
+        lost = np.abs(result.value[1]).reshape(shape)
+        return Estimates(result.value[0].reshape(shape), error.reshape(shape), lost)
 
     def event(self, event: Node, y: Array) -> Estimates:
         return _over_blocks(self._event, event, y, max(1, 2_000 // self.combos.count))
 
     def _event(self, event: Node, y: Array) -> Estimates:
         parts = self.by_combination(event, y)
-        return Estimates(parts.value @ self.combos.weights, parts.error @ self.combos.weights)
+        weights = self.combos.weights
+        lost = None if parts.rounding is None else parts.rounding @ weights
+        return Estimates(parts.value @ weights, parts.error @ weights, lost)
 
     def rate(self, event: Node, y: Array) -> Estimates:
         """d/dy P(event), as two integrals along the level curve: over one input where the curve is steep in
@@ -323,6 +331,18 @@ class PlaneMeasure:
         return structure_cuts(slices, self.axes[inner].start, self.axes[inner].end, panels)
 
 
+def _is_factor(expression: Node, name: str) -> bool:
+    """Whether the input, or a power of it, stands in a product or a quotient."""
+    for part in walk(expression):
+        if isinstance(part, Apply) and part.operator in ("multiply", "divide"):
+            for argument in part.arguments:
+                if isinstance(argument, Apply) and argument.operator in ("power", "sqrt"):
+                    argument = argument.arguments[0]
+                if argument == Name(name):
+                    return True
+    return False
+
+
 def _environment(y: Array, combos: Combinations) -> dict[str, Array]:
     environment = {name: np.tile(value, y.size) for name, value in combos.values.items()}
     environment[PARAMETER] = np.repeat(y, combos.count)
@@ -346,7 +366,11 @@ def _over_blocks(
     if y.size <= block:
         return method(event, y)
     parts = [method(event, y[start : start + block]) for start in range(0, y.size, block)]
-    return Estimates(np.concatenate([p.value for p in parts]), np.concatenate([p.error for p in parts]))
+    return Estimates(
+        np.concatenate([p.value for p in parts]),
+        np.concatenate([p.error for p in parts]),
+        np.concatenate([np.zeros(p.value.size) if p.rounding is None else p.rounding for p in parts]),
+    )
 
 
 __all__ = ["ROUNDING", "Effort", "LineMeasure", "PlaneMeasure"]
