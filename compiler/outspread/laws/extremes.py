@@ -7,11 +7,12 @@ logarithms; for the minimum the sides change places. Dependent quantities are no
 from __future__ import annotations
 
 from collections.abc import Callable
-from functools import cached_property
 
 import numpy as np
 import numpy.typing as npt
 
+from outspread.laws.computed_moments import ComputedMoments
+from outspread.laws.families.shapes import Moments
 from outspread.laws.law import Array, Atoms, Law
 from outspread.laws.quantile_moments import quantile_moments
 from outspread.numerics.roots import ordinal_middle
@@ -20,7 +21,7 @@ INF = float("inf")
 Side = Callable[[Array], Array]
 
 
-class IndependentExtreme(Law):
+class IndependentExtreme(ComputedMoments):
     """Maximum (`largest`) or minimum of independent quantities with the given laws.
 
     All of them are continuous or all are discrete; ValueError otherwise.
@@ -162,8 +163,7 @@ class IndependentExtreme(Law):
         at_high = any(ends[1] == high and singular[1] for ends, singular in own)
         return at_low, at_high
 
-    @cached_property
-    def _moments(self) -> tuple[float, float, float, float]:
+    def compute_moments(self) -> Moments:
         if self._mass == 1.0:
             return quantile_moments(self)
         atoms = self.atoms()
@@ -174,15 +174,3 @@ class IndependentExtreme(Law):
         if variance == 0:
             return mean, 0.0, float("nan"), float("nan")
         return mean, variance, third / variance**1.5, fourth / variance**2
-
-    def mean(self) -> float:
-        return self._moments[0]
-
-    def variance(self) -> float:
-        return self._moments[1]
-
-    def skewness(self) -> float:
-        return self._moments[2]
-
-    def kurtosis(self) -> float:
-        return self._moments[3]

@@ -8,11 +8,12 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from functools import cached_property
 
 import numpy as np
 import numpy.typing as npt
 
+from outspread.laws.computed_moments import ComputedMoments
+from outspread.laws.families.shapes import Moments
 from outspread.laws.law import Array, Atoms, Law
 from outspread.laws.quantile_moments import quantile_moments
 
@@ -148,7 +149,7 @@ LOG_MAP = Map("log", np.log, np.exp, np.exp)
 EXP_MAP = Map("exp", np.exp, np.log, lambda y: 1.0 / y)
 
 
-class Transformed(Law):
+class Transformed(ComputedMoments):
     """The law of a monotone map of X, where X has the continuous law `base`.
 
     `ends` is the support of the result, `singular` says at which of its ends the density is unbounded,
@@ -225,21 +226,8 @@ class Transformed(Law):
     def singular_ends(self) -> tuple[bool, bool]:
         return self._singular
 
-    @cached_property
-    def _moments(self) -> tuple[float, float, float, float]:
+    def compute_moments(self) -> Moments:
         return quantile_moments(self)
-
-    def mean(self) -> float:
-        return self._moments[0]
-
-    def variance(self) -> float:
-        return self._moments[1]
-
-    def skewness(self) -> float:
-        return self._moments[2]
-
-    def kurtosis(self) -> float:
-        return self._moments[3]
 
 
 @dataclass(frozen=True)

@@ -8,11 +8,12 @@ import numpy as np
 import numpy.typing as npt
 
 from outspread.laws.compound.inverse import quantiles
+from outspread.laws.computed_moments import ComputedMoments
 from outspread.laws.families.shapes import INF, NAN, Moments
 from outspread.laws.law import Array, Atoms, Law
 
 
-class MixtureLaw(Law):
+class MixtureLaw(ComputedMoments):
     """`weights` above 0 adding up to 1, one for each of `laws`."""
 
     name = "Mixture"
@@ -114,8 +115,7 @@ class MixtureLaw(Law):
                 found[side] |= law.singular_ends()[side] and law.support()[side] == ends[side]
         return (found[0], found[1])
 
-    @cached_property
-    def _moments(self) -> Moments:
+    def compute_moments(self) -> Moments:
         """From the components' central moments, shifted to the common mean (binomial expansion)."""
         means = np.array([law.mean() for law in self.laws])
         variances = np.array([law.variance() for law in self.laws])
@@ -137,15 +137,3 @@ class MixtureLaw(Law):
         if np.isinf(np.sum(third)):
             total4 = NAN if np.isnan(total4) else total4
         return (mean, variance, float(total3 / variance**1.5), float(total4 / variance**2))
-
-    def mean(self) -> float:
-        return self._moments[0]
-
-    def variance(self) -> float:
-        return self._moments[1]
-
-    def skewness(self) -> float:
-        return self._moments[2]
-
-    def kurtosis(self) -> float:
-        return self._moments[3]

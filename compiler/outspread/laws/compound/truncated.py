@@ -9,6 +9,7 @@ import numpy.typing as npt
 
 from outspread.errors import LawError
 from outspread.laws.compound.moments import central_moments
+from outspread.laws.computed_moments import ComputedMoments
 from outspread.laws.families.lattice import PointLaw
 from outspread.laws.families.shapes import INF, NAN, Moments
 from outspread.laws.law import Array, Atoms, Law
@@ -50,7 +51,7 @@ def _mass(base: Law, lower: float, upper: float) -> float:
     return float(base.between(np.nextafter(lower, -INF), upper)) if lower <= upper else 0.0
 
 
-class TruncatedLaw(Law):
+class TruncatedLaw(ComputedMoments):
     """`base` between `lower` and `upper` (infinite: not cut), divided by its probability `mass` there."""
 
     def __init__(self, base: Law, lower: float, upper: float):
@@ -156,18 +157,5 @@ class TruncatedLaw(Law):
         first, last = self.base.singular_ends()
         return (first and self.lower == low, last and self.upper == high)
 
-    @cached_property
-    def _moments(self) -> Moments:
+    def compute_moments(self) -> Moments:
         return central_moments(self)
-
-    def mean(self) -> float:
-        return self._moments[0]
-
-    def variance(self) -> float:
-        return self._moments[1]
-
-    def skewness(self) -> float:
-        return self._moments[2]
-
-    def kurtosis(self) -> float:
-        return self._moments[3]
