@@ -313,7 +313,7 @@ def _refined(
             break
         added_rows.append(rows[wide])
         added.append(middle[wide])
-        rows, low, middle, high = (part[wide] for part in (rows, low, middle, high))
+        rows, low, middle, high = rows[wide], low[wide], middle[wide], high[wide]
         rows, low, high = np.tile(rows, 2), np.concatenate([low, middle]), np.concatenate([middle, high])
     row, point = np.concatenate(added_rows), np.concatenate(added)
     order = np.lexsort((point, row))

@@ -15,6 +15,7 @@ from outspread.laws.law import Array, Law
 from outspread.reading.model import Model
 
 MOST_POINTS = 400
+LETTER, GAP = 4.6, 4.0  # mean width of a character in a label, and the room between labels, in points
 #: depth of the tails that a plot of tails may show
 DEEPEST_TAIL = 1e-12
 
@@ -25,6 +26,38 @@ class Limit:
 
     at: float
     requirement: str
+
+
+@dataclass(frozen=True)
+class Place:
+    """Where a label stands over its line: `shift` points to the right of it, in a row above the axes."""
+
+    shift: float
+    row: int
+
+
+def placed_labels(at: list[float], texts: list[str], width: float) -> list[Place]:
+    """Places for labels over the lines `at` (ascending, in points from the left of axes of that width) so
+    that none covers another or runs far out of the axes: over its line, else beside it, else a row higher."""
+    taken: list[tuple[float, float, int]] = []
+    places = []
+    for i, (x, text) in enumerate(zip(at, texts, strict=True)):
+        half = 0.5 * LETTER * len(text)
+        follows = at[i + 1] - LETTER * len(texts[i + 1]) / 2 if i + 1 < len(at) else np.inf
+        shifts = (0.0, 1.0 - half, half - 1.0) if x + half <= follows else (1.0 - half, 0.0, half - 1.0)
+        choices = [Place(shift, row) for row in range(3) for shift in shifts]
+
+        def free(place: Place, x: float = x, half: float = half) -> bool:
+            left, right = x + place.shift - half, x + place.shift + half
+            inside = left >= -half and right <= width + half
+            return inside and all(
+                row != place.row or right + GAP <= start or left >= stop + GAP for start, stop, row in taken
+            )
+
+        place = next((choice for choice in choices if free(choice)), choices[-1])
+        taken.append((x + place.shift - half, x + place.shift + half, place.row))
+        places.append(place)
+    return places
 
 
 @dataclass(frozen=True)
@@ -106,6 +139,7 @@ def reach(law: Law) -> Reach:
         left = np.unique(np.maximum(low - body * (steps - 0.25), lower))[::-1]
         right = np.unique(np.minimum(high + body * (steps - 0.25), upper))
         below = np.minimum.accumulate(np.asarray(law.cdf(left), float))
+        below[left <= lower] = 0.0  # an atom at the end of the support leaves nothing beyond it
         above = np.minimum.accumulate(np.asarray(law.ccdf(right), float))
     return Reach((low, high), (left, below), (right, above))
 

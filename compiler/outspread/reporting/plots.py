@@ -167,14 +167,17 @@ def _draw_distribution(axes: Axes, law: Law, output: OutputResults, both: curves
             continue
         axes.plot([quantile.value], [p], "o", mfc="white", mec=RUST, mew=1.1, ms=4.6, zorder=5, clip_on=False)
         if p - labelled > 0.08:
-            right = quantile.value < low + 0.72 * (high - low)
+            share = (quantile.value - low) / (high - low)
+            # the curve rises: above it on its left, below it on its right, there is room
+            above = p < 0.1
+            left = share > 0.1 if above else share > 0.72
             axes.annotate(
                 f"{p:g}",
                 (quantile.value, p),
-                xytext=(6 if right else -6, 3 if p < 0.1 else -7),
+                xytext=(-4 if left and above else -6 if left else 6, 4 if above else -7),
                 textcoords="offset points",
-                ha="left" if right else "right",
-                va="bottom" if p < 0.1 else "center",
+                ha="right" if left else "left",
+                va="bottom" if above else "center",
                 color=RUST,
                 fontsize=7.5,
             )
@@ -184,18 +187,19 @@ def _draw_distribution(axes: Axes, law: Law, output: OutputResults, both: curves
 def _mark_limits(axes: Axes, limits: tuple[Limit, ...], low: float, high: float, named: bool) -> None:
     """Vertical lines at the values that requirements name, numbered above the upper panel."""
     seen = [limit for limit in limits if low <= limit.at <= high]
-    last, level = -np.inf, 0
     for limit in seen:
         axes.axvline(limit.at, color="#22282d", lw=1.0, ls=(0, (5, 2, 1, 2)), zorder=3)
-        if not named:
-            continue
-        level = 1 - level if (limit.at - last) < 0.16 * (high - low) else 0
-        last = limit.at
+    if not named:
+        return
+    texts = [f"limit {brief(limit.at, 0.0)}" for limit in seen]
+    points = axes.get_position().width * WIDTH * 72.0
+    at = [points * (limit.at - low) / (high - low) for limit in seen]
+    for limit, text, place in zip(seen, texts, curves.placed_labels(at, texts, points), strict=True):
         axes.annotate(
-            f"limit {brief(limit.at, 0.0)}",
+            text,
             (limit.at, 1.0),
             xycoords=("data", "axes fraction"),
-            xytext=(0, 3 + 10 * level),
+            xytext=(place.shift, 3 + place.row * 9.5),
             textcoords="offset points",
             ha="center",
             va="bottom",

@@ -336,7 +336,7 @@ def _inverse(affine: AffineMap) -> str:
     short = all(_decimal(value) for value in (affine.determinant, *(v for row in whole for v in row)))
     if short and _exact(abs(affine.determinant)) != "1":
         factor = rf"\frac{{1}}{{{_exact(affine.determinant)}}}"
-        return factor + _matrix([[_exact(value) for value in row] for row in whole])
+        return rf"{factor}\," + _matrix([[_exact(value) for value in row] for row in whole])
     return _matrix([[_exact(value) for value in row] for row in affine.inverse])
 
 
