@@ -170,13 +170,14 @@ def _draw_distribution(axes: Axes, law: Law, output: OutputResults, both: curves
             share = (quantile.value - low) / (high - low)
             # the curve rises: above it on its left, below it on its right, there is room
             above = p < 0.1
-            left = share > 0.1 if above else share > 0.72
+            edge = share < 0.075
+            left = above or share > 0.72
             axes.annotate(
                 f"{p:g}",
                 (quantile.value, p),
-                xytext=(-4 if left and above else -6 if left else 6, 4 if above else -7),
+                xytext=(0 if edge else -4 if above else -6 if left else 6, 7 if edge else 4 if above else -7),
                 textcoords="offset points",
-                ha="right" if left else "left",
+                ha="center" if edge else "right" if left else "left",
                 va="bottom" if above else "center",
                 color=RUST,
                 fontsize=7.5,

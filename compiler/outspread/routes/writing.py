@@ -96,6 +96,14 @@ def sampling(output: Output, step: PlanStep, symbols: Mapping[str, str]) -> tupl
     return writer.finished(statements)
 
 
+def finished(
+    output: Output, symbols: Mapping[str, str], statements: list[Statement]
+) -> tuple[Statement, ...]:
+    """The definition of the result and the statements, with a letter for its value put in."""
+    writer = _Writer(output, {}, symbols)
+    return writer.finished([writer.definition(), *statements])
+
+
 class _Writer:
     def __init__(self, output: Output, laws: Mapping[str, Law], symbols: Mapping[str, str]):
         self.output, self.laws = output, laws
@@ -179,9 +187,17 @@ class _Writer:
                     "region",
                 )
             ]
-        text = r"\\ ".join(self.wrapped(rf"{x}=", branch.value) for branch in found)
+        marks = self.marks(found)
+        text = r"\\ ".join(
+            self.wrapped(f"{x}{mark}=", branch.value) for mark, branch in zip(marks, found, strict=True)
+        )
         one = "The limit" if len(found) == 1 else "The limits"
         return [Statement(f"{one} of the region in ${x}$, from solving $g=§$:", text, "inverse")]
+
+    @staticmethod
+    def marks(found: tuple[Branch, ...]) -> list[str]:
+        """What tells the branches apart: nothing where there is one."""
+        return [""] if len(found) == 1 else [f"_{k}" for k in range(1, len(found) + 1)]
 
     def _clipped(self, node: Node) -> str:
         text = self.latex(node)
@@ -207,14 +223,19 @@ class _Writer:
             ))  # fmt: skip
             return statements, None
         slopes = [self.slope(branch) for branch in found]
+        one, marks = len(found) == 1, self.marks(found)
         jacobian = r"\\ ".join(
-            self.wrapped(r"\frac{\mathrm{d}" + x + r"}{\mathrm{d}§}=", slope) for slope in slopes
+            self.wrapped(rf"\frac{{\mathrm{{d}}{x}{mark}}}{{\mathrm{{d}}§}}=", slope)
+            for mark, slope in zip(marks, slopes, strict=True)
         )
-        statements.append(Statement("The derivative of each branch is its Jacobian:", jacobian, "jacobian"))
         statements.append(Statement(
-            "Change of variables, summed over the branches:",
-            rf"f_{{{self.y}}}(§)=\sum_k f_{{{x}}}\left({x}_k(§)\right)"
-            rf"\left|\frac{{\mathrm{{d}}{x}_k}}{{\mathrm{{d}}§}}\right|", "density",
+            f"The derivative of {'the' if one else 'each'} branch is its Jacobian:", jacobian, "jacobian"
+        ))  # fmt: skip
+        total, k = ("", "") if one else (r"\sum_k ", "_k")
+        statements.append(Statement(
+            "Change of variables" + (":" if one else ", summed over the branches:"),
+            rf"f_{{{self.y}}}(§)={total}f_{{{x}}}\left({x}{k}(§)\right)"
+            rf"\left|\frac{{\mathrm{{d}}{x}{k}}}{{\mathrm{{d}}§}}\right|", "density",
         ))  # fmt: skip
         if beside or any(branch.parameters for branch in found) or self.laws[name].continuous_mass < 1:
             return statements, None
@@ -251,20 +272,23 @@ class _Writer:
                 "cdf",
             ),
         ]  # fmt: skip
-        slope = rf"\left|\frac{{\partial {z}_k}}{{\partial §}}\right|"
+        one = found is not None and len(found) == 1
+        total, k = ("", "") if one else (r"\sum_k ", "_k")
+        slope = rf"\left|\frac{{\partial {z}{k}}}{{\partial §}}\right|"
         statements.append(Statement(
-            "The density follows by differentiating under the integral sign; the limits move with $§$ "
-            "(Leibniz rule).",
+            "The density follows by differentiating under the integral sign; "
+            f"{'the limit moves' if one else 'the limits move'} with $§$ (Leibniz rule).",
             rf"f_{{{self.y}}}(§)=\int_{{{low}}}^{{{high}}} f_{{{x}}}({x})"
-            rf"\sum_k {law}\left({z}_k(§,{x})\right){slope}\;\mathrm{{d}}{x}",
+            rf"{total}{law}\left({z}{k}(§,{x})\right){slope}\;\mathrm{{d}}{x}",
             "density",
         ))  # fmt: skip
         if found is not None and len(found) <= 2:
             text = r"\\ ".join(
-                self.wrapped(rf"\frac{{\partial {z}}}{{\partial §}}=", self.slope(branch))
-                for branch in found
+                self.wrapped(rf"\frac{{\partial {z}{mark}}}{{\partial §}}=", self.slope(branch))
+                for mark, branch in zip(self.marks(found), found, strict=True)
             )
-            statements.append(Statement("with the derivative of each limit", text, "jacobian"))
+            of = "the limit" if one else "each limit"
+            statements.append(Statement(f"with the derivative of {of}", text, "jacobian"))
         if _flattens(self.expression, inner):
             statements.append(Statement(
                 f"Where the formula does not depend on ${z}$ over an interval, that interval enters the "
@@ -283,7 +307,9 @@ class _Writer:
         inner, outer = step.inner, step.outer[0]
         found = self.branches(inner)
         missing = ""
-        if found is None:
+        if step.substeps:
+            missing = "laws that come out of earlier steps enter, which have no formula"
+        elif found is None:
             missing = f"the formula has no inverse in {inner} that can be written"
         elif any(branch.parameters for branch in found):
             missing = f"the inverse in {inner} has infinitely many branches"
