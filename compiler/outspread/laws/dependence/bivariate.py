@@ -13,10 +13,11 @@ from collections.abc import Callable
 import numpy as np
 import numpy.typing as npt
 
-from outspread.laws.functions.normal import normal_between, normal_cdf, normal_pdf
+from outspread.laws.functions.normal import log_normal_cdf, normal_between, normal_cdf, normal_pdf
 from outspread.laws.law import Array, Estimates
 from outspread.numerics.quadrature import Index, integrate, panels_between
 
+_UNDERFLOW = 1e-300  # a probability below this may be stated as 0
 _FAR = 38.5  # beyond this score no double precision probability is left
 _STEPS = np.array([0.0, 0.2, 0.8, 3.0, 12.0])  # panel ends on either side of a peak, in its least width
 _UNITS = np.array([-12.0, -6.0, -2.5, -1.0, 1.0, 2.5, 6.0, 12.0])  # and in the widest one
@@ -73,7 +74,7 @@ def _integrated(lower: Array, upper: Array, rho: Array) -> Estimates:
 
     start, end = np.maximum(lower[0], -_FAR), np.minimum(upper[0], _FAR)
     start, end = np.minimum(start, _FAR), np.maximum(end, -_FAR)
-    mode = _peak(slope, start, end)
+    mode = _peak(slope, start, end, float(np.min(scale)))
     # the rounding of the nearer limit z at the peak moves Φ(z) by z² ulp relative to itself
     low, high = limits(mode, np.arange(rho.size))
     nearest = np.where(low > 0, low, np.where(high < 0, -high, 0.0))
@@ -81,7 +82,8 @@ def _integrated(lower: Array, upper: Array, rho: Array) -> Estimates:
     with np.errstate(invalid="ignore"):
         rounding = 4e-16 * nearest * (np.abs(rho * mode) + np.abs(side)) / scale
     rounding = np.where(np.isfinite(rounding), rounding, 0.0)
-    return integrate_peak(density, start, end, mode, np.minimum(scale, 1.0), 2e-15, rounding)
+    extra = step_points(np.stack([lower[1], upper[1]]), np.stack([rho, rho]), np.stack([scale, scale])).T
+    return integrate_peak(density, start, end, mode, np.minimum(scale, 1.0), 2e-15, rounding, extra)
 
 
 def _truncated_mean(low: Array, high: Array) -> Array:
@@ -93,11 +95,24 @@ def _truncated_mean(low: Array, high: Array) -> Array:
         return np.where((mass > 1e-290) & np.isfinite(inner), inner, nearest)
 
 
-def _peak(slope: Callable[[Array, Index], Array], start: Array, end: Array) -> Array:
-    """Where the falling function `slope` changes its sign between start and end (an end if it does not)."""
+def step_points(limits: Array, loadings: Array, scales: Array) -> Array:
+    """Panel ends about the places where a steep conditional probability rises or falls: limit / loading.
+
+    All of one shape (k, …); the result is (5 k, …), NaN where the step is no steeper than the density.
+    """
+    with np.errstate(all="ignore"):
+        place, width = limits / loadings, scales / np.abs(loadings)
+        steep = np.where(np.isfinite(place) & (width < 0.3), place, np.nan)
+        width = np.where(np.isnan(steep), 0.0, width)
+    return np.concatenate([steep + k * width for k in (-9.0, -3.0, 0.0, 3.0, 9.0)])
+
+
+def _peak(slope: Callable[[Array, Index], Array], start: Array, end: Array, least: float) -> Array:
+    """Where the falling function `slope` changes its sign between start and end (an end if it does not), to
+    a tenth of `least`."""
     everything = np.arange(start.size)
     low, high = start.copy(), end.copy()
-    for _ in range(28):
+    for _ in range(min(max(int(np.ceil(np.log2(20.0 * _FAR / least))), 24), 56)):
         middle = 0.5 * (low + high)
         rising = slope(middle, everything) > 0
         low, high = np.where(rising, middle, low), np.where(rising, high, middle)
@@ -112,26 +127,29 @@ def integrate_peak(
     scale: Array,
     relative: float,
     inner_error: npt.ArrayLike = 0.0,
+    extra: Array | None = None,
 ) -> Estimates:
     """Integrals of log-concave functions over [start, end]; `scale` is the least width of their peaks.
 
-    `inner_error` is the relative error of the function's own values.
+    `inner_error` is the relative error of the function's own values, `extra` further panel ends by row.
     """
     reach = np.minimum(scale, 1.0)[:, None] * _STEPS
     far = mode[:, None] + _UNITS
     points = np.concatenate(
-        [start[:, None], end[:, None], mode[:, None] - reach, mode[:, None] + reach, far], axis=1
+        [start[:, None], end[:, None], mode[:, None] - reach, mode[:, None] + reach, far]
+        + ([] if extra is None else [extra]),
+        axis=1,
     )
     points = np.clip(points, start[:, None], np.maximum(end, start)[:, None])
     low, high, owner = panels_between(points)
     if not low.size:
-        return Estimates(np.zeros(start.size), np.zeros(start.size))
+        return Estimates(np.zeros(start.size), np.full(start.size, _UNDERFLOW))
     # far panels carry less than 1e-290 of anything and are kept only for the account
     found = integrate(density, low, high, owner, start.size, relative=relative, absolute=1e-306)
     value = found.value[0]
     # one ulp of a node x moves φ(x) by x² ulp
     rounding = (1e-15 + 2e-16 * mode * mode + np.asarray(inner_error)) * value
-    return Estimates(value, found.error[0] + rounding)
+    return Estimates(value, found.error[0] + rounding + _UNDERFLOW)
 
 
 def bivariate_fast(b: Array, c: Array, correlation: Array) -> Array:
@@ -168,39 +186,93 @@ def trivariate_rectangle(lower: Array, upper: Array, matrix: Array) -> Estimates
     lower, upper, matrix = lower[order], upper[order], matrix[np.ix_(order, order)]
     rho = matrix[0, 1:]
     scale = np.sqrt((1.0 - rho) * (1.0 + rho))
-    inner = np.clip((matrix[1, 2] - rho[0] * rho[1]) / (scale[0] * scale[1]), -1.0, 1.0)
+    inner = float(np.clip((matrix[1, 2] - rho[0] * rho[1]) / (scale[0] * scale[1]), -1.0, 1.0))
+    if not min(upper[0], _FAR) > max(lower[0], -_FAR):
+        return Estimates(np.zeros(1), np.zeros(1))
+    least = float(np.sqrt(1.0 / np.linalg.inv(matrix)[0, 0]))
+    found = _over_first(lower, upper, rho, scale, inner, least)
+    # near a singular matrix the difference above has lost digits: what they change is part of the error
+    lost = 2.3e-16 * (abs(matrix[1, 2]) + abs(rho[0] * rho[1])) / float(scale[0] * scale[1])
+    if lost < 3e-15:
+        return found
+    moved = inner - lost if inner > 0 else inner + lost
+    other = _over_first(lower, upper, rho, scale, moved, least)
+    return Estimates(found.value, found.error + 2.0 * np.abs(found.value - other.value))
+
+
+def _over_first(
+    lower: Array, upper: Array, rho: Array, scale: Array, inner: float, least: float
+) -> Estimates:
+    """The integral over the first score; `inner` is the correlation of the others given it."""
+
+    def sides(x: Array) -> tuple[Array, Array]:
+        centre = rho[:, None] * x
+        return (lower[1:, None] - centre) / scale[:, None], (upper[1:, None] - centre) / scale[:, None]
 
     def conditional(x: Array) -> Estimates:
-        centre = rho[:, None] * x
-        ends = [(limit[1:, None] - centre) / scale[:, None] for limit in (lower, upper)]
-        return bivariate_rectangle(ends[0], ends[1], np.full(x.size, inner))
+        return bivariate_rectangle(*sides(x), np.full(x.size, inner))
 
     start, end = max(lower[0], -_FAR), min(upper[0], _FAR)
-    if not end > start:
-        return Estimates(np.zeros(1), np.zeros(1))
-    mode, worst = coarse_peak(conditional, start, end)
-    least = float(np.sqrt(1.0 / np.linalg.inv(matrix)[0, 0]))
-    ends = np.array([start]), np.array([end])
+    mode, worst = coarse_peak(
+        conditional, lambda x: np.min(log_side(*sides(x)), axis=0), start, end, least
+    )
+    # where one limit takes over from the other: z_1 = ± z_2 given x
+    own = [limits[1:] / scale for limits in (lower, upper)]
+    slopes = rho / scale
+    turn = np.array([1.0, -1.0])
+    with np.errstate(all="ignore"):
+        crossings = np.concatenate(
+            [(a[0] - turn * b[1]) / (slopes[0] - turn * slopes[1]) for a in own for b in own]
+        )
+    crossings = crossings[np.isfinite(crossings)]
+    steps = step_points(
+        np.concatenate([lower[1:], upper[1:]]), np.tile(rho, 2), np.tile(scale, 2)
+    )  # fmt: skip
+    widths = least * np.array([-9.0, -3.0, 0.0, 3.0, 9.0])
+    extra = np.concatenate([steps, (crossings[:, None] + widths).ravel()])[None, :]
     return integrate_peak(
         lambda x, owner: normal_pdf(x) * conditional(x).value,
-        *ends, np.array([mode]), np.array([least]), 1e-14, worst,
+        np.array([start]), np.array([end]), np.array([mode]), np.array([least]), 1e-14, worst, extra,
     )  # fmt: skip
 
 
-def coarse_peak(conditional: Callable[[Array], Estimates], start: float, end: float) -> tuple[float, float]:
-    """Where φ(x) times the conditional probability is largest, and the latter's relative error near it."""
+def coarse_peak(
+    conditional: Callable[[Array], Estimates],
+    log_bound: Callable[[Array], Array],
+    start: float,
+    end: float,
+    least: float,
+) -> tuple[float, float]:
+    """Where φ(x) times the conditional probability is largest, and the latter's relative error near it.
+
+    `log_bound` bounds the logarithm of the probability from above also where it underflows: it leads to a
+    peak that is narrower than any grid. The place is found to about half of `least`.
+    """
     low, high = start, end
     best, worst = 0.5 * (low + high), 0.0
-    for _ in range(5):
+    for _ in range(24):
         x = np.linspace(low, high, 17)
         found = conditional(x)
         with np.errstate(divide="ignore", invalid="ignore"):
-            height = np.log(found.value) - 0.5 * x * x
-            weighty = (found.value > 1e-280) & (height > np.max(height) - 40.0)
+            known = found.value > 1e-290
+            height = np.where(known, np.log(found.value), np.minimum(log_bound(x), -668.0)) - 0.5 * x * x
+            weighty = known & (height > np.max(height) - 40.0)
             worst = max(worst, float(np.max(np.where(weighty, found.error / found.value, 0.0))))
-        if not np.isfinite(height).any():
-            return best, worst
-        at = int(np.nanargmax(height))
+        at = int(np.argmax(height))
         best = float(x[at])
-        low, high = float(x[max(at - 1, 0)]), float(x[min(at + 1, 16)])
+        left, right = max(at - 1, 0), min(at + 1, 16)
+        low, high = float(x[left]), float(x[right])
+        if high - low < least:
+            break
     return best, worst
+
+
+def log_side(low: Array, high: Array) -> Array:
+    """log P(low < Z <= high) of a score, finite where the probability underflows (it may err by 1e-15)."""
+    turned = low > 0
+    a, b = np.where(turned, -high, low), np.where(turned, -low, high)
+    with np.errstate(all="ignore"):
+        above = log_normal_cdf(np.minimum(b, 40.0))
+        below = np.where(np.isneginf(a), -np.inf, log_normal_cdf(np.minimum(a, 40.0)))
+        result = above + np.log(-np.expm1(np.minimum(below - above, 0.0)))
+    return np.where(np.isfinite(result), result, -1e300)

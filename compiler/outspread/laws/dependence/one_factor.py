@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from outspread.laws.dependence.bivariate import coarse_peak, integrate_peak
+from outspread.laws.dependence.bivariate import coarse_peak, integrate_peak, log_side, step_points
 from outspread.laws.functions.normal import normal_between, normal_pdf
 from outspread.laws.law import Array, Estimates
 
@@ -38,17 +38,25 @@ def one_factor_rectangle(lower: Array, upper: Array, loadings: Array) -> Estimat
     """P(lower < Z <= upper), shape (1,), relative to itself; lower, upper, loadings: shape (n,)."""
     rest = np.sqrt((1.0 - loadings) * (1.0 + loadings))[:, None]
 
-    def conditional(factor: Array) -> Estimates:
+    def sides(factor: Array) -> tuple[Array, Array]:
         centre = loadings[:, None] * factor
-        low, high = (lower[:, None] - centre) / rest, (upper[:, None] - centre) / rest
+        return (lower[:, None] - centre) / rest, (upper[:, None] - centre) / rest
+
+    def conditional(factor: Array) -> Estimates:
+        low, high = sides(factor)
+        centre = loadings[:, None] * factor
         value = np.prod(normal_between(low, high), axis=0)
         nearest = np.where(low > 0, low, np.where(high < 0, -high, 0.0))
         size = np.abs(centre) + np.minimum(np.abs(lower), np.abs(upper))[:, None]
         return Estimates(value, value * np.sum(1e-15 + 4e-16 * nearest * size / rest, axis=0))
 
-    mode, worst = coarse_peak(conditional, -_FAR, _FAR)
-    least = 1.0 / np.sqrt(1.0 + np.sum((loadings / rest[:, 0]) ** 2))
+    least = float(1.0 / np.sqrt(1.0 + np.sum((loadings / rest[:, 0]) ** 2)))
+    mode, worst = coarse_peak(
+        conditional, lambda x: np.sum(log_side(*sides(x)), axis=0), -_FAR, _FAR, least
+    )
+    ends = np.concatenate([lower, upper])
+    extra = step_points(ends, np.tile(loadings, 2), np.tile(rest[:, 0], 2))[None, :]
     return integrate_peak(
         lambda x, owner: normal_pdf(x) * conditional(x).value,
-        np.array([-_FAR]), np.array([_FAR]), np.array([mode]), np.array([least]), 1e-14, worst,
+        np.array([-_FAR]), np.array([_FAR]), np.array([mode]), np.array([least]), 1e-14, worst, extra,
     )  # fmt: skip

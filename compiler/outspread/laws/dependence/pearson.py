@@ -26,6 +26,7 @@ from outspread.numerics.quadrature import Index, integrate, panels_between
 
 _INNER = np.array([-4.5, -1.5, 1.5, 4.5])
 _OUTER = np.array([-6.0, -4.0, -2.5, -1.25, 0.0, 1.25, 2.5, 4.0, 6.0])
+_MOST_EDGES = 16  # of the second margin: many small steps leave its conditional mean smooth
 _RELATIVE, _ABSOLUTE = 1e-12, 2e-13
 
 
@@ -186,7 +187,7 @@ def _outer_points(copula: Copula, first: Margin, second: Margin) -> Array:
     """Panel ends of the first score: its own edges, and where the second's edges are its median."""
     ends = np.array([-first.cut, first.cut])
     points = [_OUTER, first.edges, ends]
-    if second.edges.size:
+    if 0 < second.edges.size <= _MOST_EDGES:
         levels = Levels.from_scores(second.edges)
         given = Levels(levels.lower[None], levels.upper[None])
         half = Levels.of(np.full(levels.lower.size, 0.5))

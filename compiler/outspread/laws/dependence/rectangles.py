@@ -1,8 +1,8 @@
 """Probabilities of rectangles of jointly normal scores: the method for the number of scores.
 
 One to three scores by `bivariate` and any number with one common factor by `one_factor`, relative to
-themselves; four to six by `orthants`, and in a tail, where that loses its digits, by `randomised`; more by
-`randomised`. Sides that are all of the line are left out
+themselves; four to six by `orthants`, and where that loses its digits (in a tail, or near a singular matrix)
+by `randomised`; more by `randomised`. Sides that are all of the line are left out
 first, and scores that depend on no other are split off as factors.
 """
 
@@ -23,7 +23,9 @@ from outspread.laws.dependence.randomised import LARGEST, randomised_rectangle
 from outspread.laws.functions.normal import normal_between
 from outspread.laws.law import Array
 
-LEAST_EIGENVALUE = 1e-10
+LEAST_EIGENVALUE = 1e-8
+#: below this the path of `orthants` grows too steep to be integrated in reasonable time
+_STEEP = 1e-4
 
 
 @dataclass(frozen=True)
@@ -115,7 +117,8 @@ def _block(
     if size > LARGEST:
         raise LawError(f"{size} scores depend on one another; rectangles of at most {LARGEST} are derived")
     two_sided = int(np.sum(np.isfinite(low) & np.isfinite(high)))
-    if size > LARGEST_ORTHANT or (size == LARGEST_ORTHANT and two_sided > 2):  # 2^two_sided orthants
+    orthants = 2**two_sided
+    if smallest < _STEEP or size > LARGEST_ORTHANT or (size == LARGEST_ORTHANT and orthants > 4):
         return _sampled(low, high, matrix, absolute, relative, seed)
     corners = _corners(low, high, matrix)
     if corners.error <= max(absolute, relative * corners.value):
