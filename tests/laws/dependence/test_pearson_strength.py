@@ -13,9 +13,10 @@ from hypothesis import strategies as st
 from outspread.errors import DerivationError, LawError
 from outspread.laws.compound.mixture import MixtureLaw
 from outspread.laws.dependence.build import build_copula, nearest_valid
+from outspread.laws.dependence.correlation import pearson_correlation
 from outspread.laws.dependence.families import pair_copula
 from outspread.laws.dependence.matrices import smallest_eigenvalue
-from outspread.laws.dependence.pearson import parameter_from_pearson, pearson_correlation, pearson_range
+from outspread.laws.dependence.pearson import parameter_from_pearson, pearson_range
 from outspread.laws.law import Law
 from outspread.laws.registry import FAMILIES
 

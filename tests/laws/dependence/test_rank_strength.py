@@ -12,9 +12,9 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from outspread.errors import LawError
+from outspread.laws.dependence.correlation import level_correlation
 from outspread.laws.dependence.families import pair_copula
 from outspread.laws.dependence.levels import Levels
-from outspread.laws.dependence.pearson import level_correlation
 from outspread.laws.dependence.rank_strength import (
     kendall,
     parameter_from_kendall,

@@ -14,17 +14,18 @@ import numpy.typing as npt
 
 from outspread.errors import LawError
 from outspread.laws.dependence.copula import Copula
+from outspread.laws.dependence.correlation import pearson_correlation
 from outspread.laws.dependence.elliptical import LEAST_EIGENVALUE, GaussianCopula, StudentCopula
 from outspread.laws.dependence.families import ARCHIMEDEAN, ELLIPTICAL, pair_copula
 from outspread.laws.dependence.matrices import degeneracy, nearest_correlation, smallest_eigenvalue
-from outspread.laws.dependence.pearson import parameter_from_pearson, pearson_correlation
+from outspread.laws.dependence.pearson import parameter_from_pearson
 from outspread.laws.dependence.rank_strength import (
-    Solved,
     kendall,
     parameter_from_kendall,
     parameter_from_spearman,
     spearman,
 )
+from outspread.laws.dependence.solving import Solved
 from outspread.laws.law import Array, Law
 
 _DECIMALS = 4

@@ -7,6 +7,7 @@ A singular matrix has no density and is refused here; `matrices` says which comb
 
 from __future__ import annotations
 
+from abc import abstractmethod
 from collections.abc import Callable, Sequence
 from functools import lru_cache
 
@@ -53,11 +54,9 @@ class EllipticalCopula(Copula):
         self.size = len(self.matrix)
         self._factor = np.linalg.cholesky(self.matrix)
 
+    @abstractmethod
     def _scores(self, levels: Levels) -> Array:
-        raise NotImplementedError
-
-    def _levels(self, scores: Array, degrees_added: int) -> Levels:
-        raise NotImplementedError
+        """The quantiles of the levels under the scores' own marginal law."""
 
     def _whitened(self, given: Levels) -> Array:
         """e of shape (k, …) with L e = the scores of what is given."""

@@ -9,26 +9,18 @@ integral of its dependence function, Clayton and Student t by quadrature. Pearso
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
-from dataclasses import dataclass
 
 import numpy as np
 
 from outspread.errors import LawError
-from outspread.laws.dependence.families import ELLIPTICAL, parameter_of_share, share_range
+from outspread.laws.dependence.correlation import level_correlation
+from outspread.laws.dependence.families import ELLIPTICAL
+from outspread.laws.dependence.solving import Solved, solve_parameter
 from outspread.laws.law import Array
 from outspread.numerics.quadrature import Index, integrate
 
 #: B_2, B_4, …, over the factorial of the index
 _TERMS = 30
-
-
-@dataclass(frozen=True)
-class Solved:
-    """A copula's parameter (or any figure) and the bound on its absolute error."""
-
-    value: float
-    error: float
 
 
 def kendall(family: str, parameter: float) -> float:
@@ -50,8 +42,6 @@ def spearman(family: str, parameter: float, degrees_of_freedom: float | None = N
         return Solved(_frank_spearman(parameter), 2e-15)
     if family == "gumbel":
         return _gumbel_spearman(parameter)
-    from outspread.laws.dependence.pearson import level_correlation
-
     return level_correlation(family, parameter, degrees_of_freedom)
 
 
@@ -96,50 +86,6 @@ def check_rank(family: str, measure: str, value: float, size: int) -> None:
         if not positive and not lowest_in:
             words += " other than 0"
         raise LawError(f"a {family} copula of {size} inputs has no {measure} {value:g}; write one {words}")
-
-
-def solve_parameter(family: str, target: float, measure: Callable[[float], Solved]) -> Solved:
-    """The parameter at which a rising `measure` takes the value `target`.
-
-    The error is that of the measure, over its slope there, and the width of the last bracket. Raises
-    LawError where the target lies so near to an end of the range that no parameter within it is told apart.
-    """
-    from scipy.optimize import brentq
-
-    known: dict[float, Solved] = {}
-
-    def excess(share: float) -> float:
-        if share not in known:
-            known[share] = measure(parameter_of_share(family, share))
-        return known[share].value - target
-
-    low, high = _bracket(family, excess)
-    share = float(brentq(excess, low, high, xtol=4e-15, rtol=4 * np.finfo(float).eps, maxiter=100))
-    # the slope at the root, by a difference wide enough that the measure's error does not matter
-    step = 1e-4 * min(1.0 - abs(share), 1.0) * (-1.0 if share > 0 else 1.0)
-    if family in ("clayton", "gumbel") and share + step <= 0:
-        step = abs(step)
-    slope = abs(excess(share + step) - excess(share)) / abs(step)
-    worst = max(found.error for found in known.values())
-    error_in_share = 2.0 * (worst + 1e-15) / slope + 1e-14
-    value = parameter_of_share(family, share)
-    per_share = abs(parameter_of_share(family, share + step) - value) / abs(step)
-    return Solved(value, 1.2 * per_share * error_in_share)
-
-
-def _bracket(family: str, excess: Callable[[float], float]) -> tuple[float, float]:
-    """Shares of the range of the parameter between which `excess` changes its sign."""
-    low, high = share_range(family)
-    inner = excess(0.5 * (low + high) + 0.1)
-    at = 0.5 * (low + high) + 0.1
-    other = high if inner < 0 else low
-    for _ in range(12):
-        following = other + 0.2 * (at - other)
-        value = excess(following)
-        if value == 0 or (value < 0) != (inner < 0):
-            return min(at, following), max(at, following)
-        at, inner = following, value
-    raise LawError("the strength asked for is so near to an end of its range that no parameter is told apart")
 
 
 # --- Frank: Debye's functions -----------------------------------------------------------------------------
