@@ -11,11 +11,18 @@ from itertools import combinations
 from outspread.evidence.drawing import DRAWS
 from outspread.evidence.judging import CONFIDENCE
 from outspread.findings.results import Assumption
+from outspread.laws.registry import FAMILIES
 from outspread.planning.plan import Plan, PlanStep
 from outspread.reading.distributions import parents
 from outspread.reading.model import Dependence, Distribution, Input, Model
 from outspread.routes.derived import DerivedOutput, SymbolicDensity
 
+#: words that keep their capital inside a sentence: families called after people, and a letter
+NAMES = frozenset({
+    "Bernoulli", "Birnbaum–Saunders", "Burr", "Cauchy", "F", "Fréchet", "Gompertz", "Gumbel", "Hoyt",
+    "Kumaraswamy", "Laplace", "Lomax", "Lévy", "Maxwell", "Nakagami", "Pareto", "Poisson", "Rayleigh",
+    "Rice", "Student", "Weibull",
+})  # fmt: skip
 PAIRS_NAMED = 6  # more independent pairs than these are put into one sentence
 
 Row = tuple[str, str, tuple[str, ...]]  # text, made_by, about
@@ -53,15 +60,23 @@ def _constants(model: Model) -> Iterable[Row]:
         yield known + basis, "model", (constant.name,)
 
 
+def _family(key: str) -> str:
+    """The family's title inside a sentence: "Weibull distribution", "normal distribution"."""
+    if key not in FAMILIES:
+        return f"{key.replace('_', ' ')} distribution"
+    title = FAMILIES[key].title
+    return title if title.split()[0] in NAMES else title[0].lower() + title[1:]
+
+
 def _input(described: Input) -> Row:
     if described.distribution is None:
         what = f"{described.name} is described jointly with other inputs"
     else:
-        family = described.distribution.family.replace("_", " ")
+        family = _family(described.distribution.family)
         article = "an" if family[0] in "aeiou" else "a"
-        what = f"{described.name} follows {article} {family} distribution"
+        what = f"{described.name} follows {article} {family}"
         if described.distribution.family in ("density", "table", "histogram", "sample", "observations"):
-            what = f"{described.name} follows the distribution given by its {family}"
+            what = f"{described.name} follows the distribution given by its {described.distribution.family}"
     if described.basis:
         return f"{what}: {described.basis.rstrip('.')}.", "model", (described.name,)
     return (

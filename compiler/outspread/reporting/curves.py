@@ -16,6 +16,7 @@ from outspread.reading.model import Model
 
 MOST_POINTS = 400
 LETTER, GAP = 4.6, 4.0  # mean width of a character in a label, and the room between labels, in points
+MARGIN = 40.0  # how far a label may run out of the axes to either side, in points
 #: depth of the tails that a plot of tails may show
 DEEPEST_TAIL = 1e-12
 
@@ -49,7 +50,7 @@ def placed_labels(at: list[float], texts: list[str], width: float) -> list[Place
 
         def free(place: Place, x: float = x, half: float = half) -> bool:
             left, right = x + place.shift - half, x + place.shift + half
-            inside = left >= -half and right <= width + half
+            inside = left >= -MARGIN and right <= width + MARGIN
             return inside and all(
                 row != place.row or right + GAP <= start or left >= stop + GAP for start, stop, row in taken
             )
