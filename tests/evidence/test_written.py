@@ -10,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 import pytest
 import scipy.stats as st
+from scipy.integrate import quad
 from test_drawn_families import KNOWN, curvilinear, hoyt
 from test_judging import Faulty
 
@@ -19,7 +20,7 @@ from outspread.evidence.drawing import Sample
 from outspread.evidence.judging import body_points, judge_integral, judge_output
 from outspread.evidence.marginal_density import NotWritten, marginal_density
 from outspread.evidence.written import written_density
-from outspread.formula.parser import parse
+from outspread.formula.parser import parse, parse_event
 from outspread.formula.tree import Node
 from outspread.laws.build import build_law
 from outspread.laws.law import Array, Law
@@ -188,6 +189,36 @@ def test_integrals_give_known_densities(stated: Model, written: SymbolicIntegral
     right = frozen.pdf(y)
     assert np.all(np.abs(found.value - right) <= found.error + 1e-14 * right)
     assert np.all(found.error <= 1e-8 * right)
+
+
+def test_a_pole_of_the_inverse_is_found() -> None:
+    """a + b^3 over a: the derivative of the cube root is infinite at a = v. The truth by scipy, over b."""
+    stated = model(NORMAL, NORMAL, "a + b^3")
+    cube_root = branch("sign(v - a) * abs(v - a)^(1/3)", "abs(v - a)^(-2/3) / 3")
+    y = np.array([-3.0, -0.4, 0.0, 0.7, 5.0])
+    found = written_density(SymbolicIntegral("b", "a", "v", (cube_root,)), stated, y)
+    right = [
+        quad(lambda b, v=v: st.norm.pdf(b) * st.norm.pdf(v - b**3), -9, 9, epsabs=1e-14, limit=500)[0]
+        for v in y.tolist()
+    ]
+    assert np.all(np.abs(found.value - right) <= found.error)
+    assert np.all(found.error <= 1e-4 * found.value)
+
+
+def test_a_narrow_solution_beside_a_pole_is_found() -> None:
+    """a^b at v near 1, b between 1 and 2: a lies between v^(1/2) and v only. The truth by scipy, over b."""
+    stated = model(
+        {"lognormal": {"log_mean": 0, "log_sd": 0.5}}, {"uniform": {"lower": 1, "upper": 2}}, "a^b"
+    )
+    exponent = branch("log(v) / log(a)", "1 / (v * log(a))", parse_event("v > 0"))
+    y = np.array([1 - 1e-4, 1 + 1e-6, 1.002, 3.0])
+    found = written_density(SymbolicIntegral("b", "a", "v", (exponent,)), stated, y)
+    right = [
+        quad(lambda b, v=v: st.lognorm.pdf(v ** (1 / b), 0.5) * v ** (1 / b - 1) / b, 1, 2, epsabs=1e-14)[0]
+        for v in y.tolist()
+    ]
+    np.testing.assert_allclose(found.value, right, rtol=1e-9)
+    assert np.all(np.abs(found.value - right) <= found.error + 1e-14)
 
 
 def law_of(family: str, **parameters: object) -> Law:
