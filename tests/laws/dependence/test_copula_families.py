@@ -171,6 +171,37 @@ def test_gaussian_conditional_far_in_both_tails() -> None:
     assert float(found.upper) == pytest.approx(float(tail), rel=1e-12)
 
 
+def exact_student_tail(degrees: Any, t: Any) -> Any:
+    """P(T > t) for t >= 0 by the incomplete beta function (Abramowitz and Stegun 1964, 26.7.1)."""
+    inside = degrees / (degrees + t * t)
+    return mpmath.betainc(degrees / 2, mpmath.mpf(1) / 2, 0, inside, regularized=True) / 2
+
+
+@pytest.mark.parametrize("degrees", [0.7, 4.0, 50.0])
+@pytest.mark.parametrize("rho", [0.5, -0.99])
+def test_student_conditional_far_in_both_tails(degrees: float, rho: float) -> None:
+    """T_{ν+1}((x_2 - ρ x_1)/√(1-ρ²) √((ν+1)/(ν+x_1²))) at 50 digits, levels of 1e-12 to 1 - 1e-9."""
+    for pair in (((1e-12, 1.0), (1.0, 1e-9)), ((0.3, 0.7), (1e-6, 1.0)), ((0.2, 0.8), (0.9, 0.1))):
+        levels = Levels.pair([end[0] for end in pair], [end[1] for end in pair])
+        found = StudentCopula([[1.0, rho], [rho, 1.0]], degrees).conditional(levels[:1], levels[1])
+        with mpmath.workdps(50):
+            nu, r = mpmath.mpf(degrees), mpmath.mpf(rho)
+            x = []
+            for lower, upper in pair:
+                tail = mpmath.mpf(min(lower, upper))
+                # bracketed in log t, where the tail is nearly a line
+                root = mpmath.findroot(
+                    lambda s, nu=nu, tail=tail: mpmath.log(exact_student_tail(nu, mpmath.exp(s)) / tail),
+                    (-5, 60), solver="anderson", tol=1e-80, maxsteps=400,
+                )  # fmt: skip
+                x.append(mpmath.exp(root) * (-1 if lower < upper else 1))
+            t = (x[1] - r * x[0]) / mpmath.sqrt(1 - r * r) * mpmath.sqrt((nu + 1) / (nu + x[0] ** 2))
+            tail = exact_student_tail(nu + 1, abs(t))
+            exact = (tail, 1 - tail) if t < 0 else (1 - tail, tail)
+        assert float(found.lower) == pytest.approx(float(exact[0]), rel=1e-12)
+        assert float(found.upper) == pytest.approx(float(exact[1]), rel=1e-12)
+
+
 @pytest.mark.parametrize("name", COPULAS)
 def test_margins_are_uniform(name: str) -> None:
     """∫_0^1 C(v | u) du = v: what a copula is, by Gauss's rule over the score of u."""

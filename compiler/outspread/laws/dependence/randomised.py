@@ -2,8 +2,10 @@
 
 Separation of variables (Genz 1992, Journal of Computational and Graphical Statistics 1, 141–149): score by
 score, the probability of its side given the earlier ones, and a point inside it; sides that constrain most
-come first (Gibson, Glasbey and Elston 1994). Points: scrambled Sobol' points (Owen 1995) in independent
-replicates, whose spread gives the error. Tails keep their digits: every factor is relative to itself.
+come first (Gibson, Glasbey and Elston 1994), and the points are drawn where the product is large (Botev 2017,
+Journal of the Royal Statistical Society B 79, 125–148). They are scrambled Sobol' points (Owen 1995) in
+independent replicates, whose spread gives the error. Tails keep their digits: every factor is relative to
+itself.
 """
 
 from __future__ import annotations
@@ -18,6 +20,7 @@ REPLICATES = 16
 _WIDEN = 5.239
 LARGEST = 40
 _FAR = 38.4
+_PART = 2**12  # points at a time: they stay in the processor's cache
 
 
 def randomised_rectangle(
@@ -37,9 +40,10 @@ def randomised_rectangle(
     probability of 0.9999; results are scalars (shape ()) and depend on `seed` alone.
     """
     lower, upper, factor = _ordered(np.array(lower, float), np.array(upper, float), np.array(matrix, float))
+    shifts = _tilt(lower, upper, factor)
     size = 2**10
     while True:
-        means = _replicates(lower, upper, factor, size, seed)
+        means = _replicates(lower, upper, factor, shifts, size, seed)
         value = float(np.mean(means))
         error = _WIDEN * float(np.std(means, ddof=1)) / REPLICATES**0.5 + 1e-14 * value
         if error <= max(absolute, relative * value) or 2 * size > points:
@@ -77,33 +81,66 @@ def _ordered(lower: Array, upper: Array, matrix: Array) -> tuple[Array, Array, A
     return lower, upper, factor
 
 
-def _replicates(lower: Array, upper: Array, factor: Array, size: int, seed: int) -> Array:
+def _tilt(lower: Array, upper: Array, factor: Array) -> Array:
+    """The shifts μ of the whitened scores at which the product's weight is flattest: Botev's saddle point.
+
+    With any shifts the estimate is unbiased, so that a search that fails costs points and no truth. Six
+    decimals are enough, and make the figures the same everywhere.
+    """
+    from scipy.optimize import root
+
+    size = len(lower)
+    scale = np.diag(factor)
+    rows = factor / scale[:, None] - np.eye(size)
+
+    def gradient(both: Array) -> Array:
+        score, shift = np.append(both[: size - 1], 0.0), np.append(both[size - 1 :], 0.0)
+        moved = rows @ score + shift
+        low, high = lower / scale - moved, upper / scale - moved
+        with np.errstate(all="ignore"):
+            pull = (normal_pdf(low) - normal_pdf(high)) / normal_between(low, high)
+        return np.concatenate([(rows.T @ pull - shift)[:-1], (shift - score + pull)[:-1]])
+
+    with np.errstate(all="ignore"):
+        found = root(gradient, np.zeros(2 * size - 2))
+    shifts = np.append(np.round(found.x[size - 1 :], 6), 0.0)
+    usable = found.success and np.all(np.isfinite(shifts)) and np.max(np.abs(shifts)) < 30.0
+    return shifts if usable else np.zeros(size)
+
+
+def _replicates(lower: Array, upper: Array, factor: Array, shifts: Array, size: int, seed: int) -> Array:
     from scipy.stats.qmc import Sobol
 
     children = np.random.SeedSequence(seed).spawn(REPLICATES)
     means = np.empty(REPLICATES)
+    part = min(size, _PART)
     for at, child in enumerate(children):
         sobol = Sobol(len(lower) - 1, scramble=True, rng=np.random.default_rng(child))
         total = 0.0
-        for _ in range(max(size // 2**14, 1)):
-            total += float(np.sum(_products(lower, upper, factor, sobol.random(min(size, 2**14)).T)))
+        for _ in range(size // part):
+            total += float(np.sum(_products(lower, upper, factor, shifts, sobol.random(part).T)))
         means[at] = total / size
     return means
 
 
-def _products(lower: Array, upper: Array, factor: Array, shares: Array) -> Array:
-    """The product of the sides' conditional probabilities at each point; shares: (n - 1, points)."""
+def _products(lower: Array, upper: Array, factor: Array, shifts: Array, shares: Array) -> Array:
+    """The product of the sides' conditional probabilities at each point, times the weight of the shifts.
+
+    shares: (n - 1, points).
+    """
     count = shares.shape[1]
     white = np.zeros((len(lower), count))
     product = np.ones(count)
-    for k in range(len(lower)):
+    weight = np.zeros(count)
+    for k, shift in enumerate(shifts):
         centre = factor[k, :k] @ white[:k]
-        low, high = (lower[k] - centre) / factor[k, k], (upper[k] - centre) / factor[k, k]
+        low, high = (lower[k] - centre) / factor[k, k] - shift, (upper[k] - centre) / factor[k, k] - shift
         chance, inside = _side(low, high, shares[k] if k + 1 < len(lower) else None)
         product *= chance
         if inside is not None:
-            white[k] = inside
-    return product
+            white[k] = inside + shift
+            weight += shift * (0.5 * shift - white[k])
+    return np.asarray(product * np.exp(weight))
 
 
 def _side(low: Array, high: Array, share: Array | None) -> tuple[Array, Array | None]:

@@ -48,11 +48,13 @@ def rectangle_probability(
     absolute: float = 1e-10,
     relative: float = 1e-5,
     seed: int = 0,
+    points: int = 2**18,
 ) -> Probability:
     """P(lower_k < Z_k <= upper_k for all k) of standard normal scores with correlation matrix `matrix`.
 
     lower, upper: shape (n,), may be infinite; at most 40 scores depend on one another. `absolute` and
-    `relative` are the errors at which sampling stops (either is enough); quadrature always does its best.
+    `relative` are the errors at which sampling stops (either is enough), `points` the most for each of its 16
+    replicates; quadrature always does its best. For digits of a small probability give absolute=0.
     Raises LawError for a matrix that is no positive definite correlation matrix (two scores may be perfectly
     correlated) and for more scores.
     """
@@ -68,7 +70,7 @@ def rectangle_probability(
     kept = np.flatnonzero(np.isfinite(low) | np.isfinite(high))
     value, error, methods = 1.0, 0.0, ["closed form"]
     for block in _blocks(own, kept):
-        part = _block(low[block], high[block], own[np.ix_(block, block)], absolute, relative, seed)
+        part = _block(low[block], high[block], own[np.ix_(block, block)], absolute, relative, seed, points)
         error = error * part.value + part.error * value + error * part.error
         value *= part.value
         methods.append(part.method)
@@ -91,7 +93,7 @@ def _blocks(matrix: Array, kept: npt.NDArray[np.int64]) -> list[list[int]]:
 
 
 def _block(
-    low: Array, high: Array, matrix: Array, absolute: float, relative: float, seed: int
+    low: Array, high: Array, matrix: Array, absolute: float, relative: float, seed: int, points: int
 ) -> Probability:
     size = low.size
     if size == 1:
@@ -119,18 +121,20 @@ def _block(
     two_sided = int(np.sum(np.isfinite(low) & np.isfinite(high)))
     orthants = 2**two_sided
     if smallest < _STEEP or size > LARGEST_ORTHANT or (size == LARGEST_ORTHANT and orthants > 4):
-        return _sampled(low, high, matrix, absolute, relative, seed)
+        return _sampled(low, high, matrix, absolute, relative, seed, points)
     corners = _corners(low, high, matrix)
     if corners.error <= max(absolute, relative * corners.value):
         return corners
-    sampled = _sampled(low, high, matrix, absolute, relative, seed)
+    sampled = _sampled(low, high, matrix, absolute, relative, seed, points)
     return sampled if sampled.error < corners.error else corners
 
 
 def _sampled(
-    low: Array, high: Array, matrix: Array, absolute: float, relative: float, seed: int
+    low: Array, high: Array, matrix: Array, absolute: float, relative: float, seed: int, points: int
 ) -> Probability:
-    found = randomised_rectangle(low, high, matrix, absolute=absolute, relative=relative, seed=seed)
+    found = randomised_rectangle(
+        low, high, matrix, absolute=absolute, relative=relative, seed=seed, points=points
+    )
     return Probability(float(found.value), float(found.error), "sampling")
 
 
