@@ -23,7 +23,7 @@ Integrand = Callable[[Index, Array], Array]
 
 ORDERS = (14, 21)  # one even and one odd: a jump in the middle of a panel cannot give both the same
 REACH, STEP = 6.0, 1.0 / 12.0  # to 1e-275 of a panel: the power -0.95 of the distance can be integrated
-SMOOTH_ROUNDS, ROUNDS, EVALUATIONS = 4, 40, 4_000_000
+SMOOTH_ROUNDS, ROUNDS, EVALUATIONS = 4, 40, 1_500_000
 ROUNDING = 2e-15  # of a sum of at most some hundred products
 
 

@@ -107,11 +107,13 @@ def _constant(node: Node) -> float | None:
 @dataclass(frozen=True)
 class Reach:
     """Where a law's probability lies, well enough for choosing a range: points outwards from the middle
-    with the probability beyond each (`left`: at most, `right`: above), and the 0.025 and 0.975 quantiles."""
+    with the probability beyond each (`left`: at most, `right`: above), and the 0.025 and 0.975 quantiles;
+    `ended` says on which sides the last point is the end of the support."""
 
     inner: tuple[float, float]
     left: tuple[Array, Array]
     right: tuple[Array, Array]
+    ended: tuple[bool, bool] = (False, False)
 
     def beyond(self, p: float) -> tuple[float, float]:
         """Roughly the points with probability `p` outside on each side, the outermost known where less is."""
@@ -119,8 +121,12 @@ class Reach:
 
     @property
     def floor(self) -> float:
-        """The smallest probability that both sides reach."""
-        return float(max(self.left[1][-1], self.right[1][-1]))
+        """The smallest probability that both sides reach; a side that ends (with an atom or not) reaches 0."""
+        last = [
+            0.0 if ended else float(side[1][-1])
+            for side, ended in zip((self.left, self.right), self.ended, strict=True)
+        ]
+        return max(last)
 
 
 def _outwards(side: tuple[Array, Array], p: float) -> float:
@@ -140,9 +146,9 @@ def reach(law: Law) -> Reach:
         left = np.unique(np.maximum(low - body * (steps - 0.25), lower))[::-1]
         right = np.unique(np.minimum(high + body * (steps - 0.25), upper))
         below = np.minimum.accumulate(np.asarray(law.cdf(left), float))
-        below[left <= lower] = 0.0  # an atom at the end of the support leaves nothing beyond it
         above = np.minimum.accumulate(np.asarray(law.ccdf(right), float))
-    return Reach((low, high), (left, below), (right, above))
+    ended = (bool(left[-1] <= lower), bool(right[-1] >= upper))
+    return Reach((low, high), (left, below), (right, above), ended)
 
 
 def window(law_reach: Reach, marks: tuple[float, ...] = ()) -> tuple[float, float]:
