@@ -103,7 +103,7 @@ def integrate(
     work = _Work(function, doubt, rows, relative)
     infinite = np.isinf(panels.start) | np.isinf(panels.stop)
     smooth = panels.of(~infinite)
-    for _ in range(SMOOTH_ROUNDS):  # near a singular end Gauss's nodes round less than those of the other rule
+    for _ in range(SMOOTH_ROUNDS):  # near a singular end Gauss's nodes round less than the other rule's
         smooth = work.settle(_gauss(), smooth, final=False).halves()
     pending = _joined(panels.of(infinite), smooth)
     # halves of an infinite panel may hold a peak between Gauss's nodes, so that only the other rule is used

@@ -121,7 +121,7 @@ class Reach:
 
     @property
     def floor(self) -> float:
-        """The smallest probability that both sides reach; a side that ends (with an atom or not) reaches 0."""
+        """The smallest probability that both sides reach; a side that ends, be it in an atom, reaches 0."""
         last = [
             0.0 if ended else float(side[1][-1])
             for side, ended in zip((self.left, self.right), self.ended, strict=True)
