@@ -249,6 +249,26 @@ def test_conditional_density_is_the_derivative(name: str) -> None:
     assert found == pytest.approx(slope, rel=1e-7)
 
 
+@pytest.mark.parametrize(
+    "copula",
+    [*COPULAS.values(), StudentCopula(MATRIX, 0.2), StudentCopula(MATRIX, 1e6), ClaytonCopula(3, 1e-8),
+     ClaytonCopula(3, 1000.0), GumbelCopula(3, 1.0001), GumbelCopula(3, 500.0), FrankCopula(3, 1e-8),
+     FrankCopula(3, 2000.0), FrankCopula(2, -2000.0)],
+    ids=lambda copula: f"{copula.family} {getattr(copula, 'parameter', '')}",
+)  # fmt: skip
+def test_the_ends_of_the_levels_break_nothing(copula: Copula) -> None:
+    """Every combination of 0, 1e-300, 1e-100, 1e-10, 1/2, 1 - 1e-10, 1 - 1e-300 and 1: no level leaves
+    [1e-300, 1], no density is undefined, and nothing warns (warnings are errors here)."""
+    lower = np.array([0.0, 1e-300, 1e-100, 1e-10, 0.5, 1.0 - 1e-10, 1.0, 1.0])
+    upper = np.array([1.0, 1.0, 1.0, 1.0 - 1e-10, 0.5, 1e-10, 1e-300, 0.0])
+    which = np.array(np.meshgrid(*[np.arange(lower.size)] * copula.size)).reshape(copula.size, -1)
+    levels = Levels.pair(lower[which], upper[which])
+    assert not np.any(np.isnan(copula.log_density(levels)))
+    for found in (copula.rosenblatt(levels), copula.inverse_rosenblatt(levels)):
+        for end in (found.lower, found.upper):
+            assert np.all((end >= 1e-300) & (end <= 1.0))
+
+
 def test_shapes_are_kept() -> None:
     """Joint levels of any shape after the first axis."""
     levels = Levels.of(np.linspace(0.1, 0.9, 24).reshape(3, 2, 4))

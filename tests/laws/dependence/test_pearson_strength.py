@@ -121,6 +121,23 @@ def test_solved_to_ten_digits(family: str, degrees: float | None, target: float)
     assert found.error < 1e-10 * max(1.0, abs(found.value))
 
 
+@pytest.mark.parametrize(
+    ("family", "target", "degrees", "margin", "exact"),
+    [
+        ("clayton", 0.5, None, LOGISTIC, 1.0),
+        ("gumbel", 0.75, None, GUMBEL_MAX, 2.0),
+        ("student_t", -0.6, 5.0, student(5), -0.6),
+        ("gaussian", 0.9, None, UNIFORM, 2 * math.sin(0.15 * math.pi)),
+    ],
+)
+def test_parameters_of_closed_forms(
+    family: str, target: float, degrees: float | None, margin: Law, exact: float
+) -> None:
+    """The closed forms of the correlations above, read backwards: the error stated covers the true one."""
+    found = parameter_from_pearson(family, target, margin, margin, degrees_of_freedom=degrees)
+    assert abs(found.value - exact) <= found.error < 1e-10
+
+
 def test_reachable_ranges() -> None:
     """Exponentials: down to 1 - π²/6 (Moran 1967, Biometrika 54, 385); lognormals by their moments."""
     reach = pearson_range("gaussian", EXPONENTIAL, EXPONENTIAL)

@@ -249,9 +249,11 @@ def test_general_matrices_against_scipy(size: int) -> None:
 def test_sampling_states_errors_that_hold() -> None:
     """Twenty scores with one common factor: sampled, against the exact integral; 25 seeds and cases."""
     failed = 0
-    for seed, (size, rho, low, high) in enumerate(
-        [(20, 0.5, 0.0, INF), (20, 0.9, -1.0, 2.0), (8, 0.3, -INF, 1.0), (12, 0.6, 1.0, INF), (20, 0.3, 2.0, INF)] * 5
-    ):
+    boxes = [
+        (20, 0.5, 0.0, INF), (20, 0.9, -1.0, 2.0), (8, 0.3, -INF, 1.0), (12, 0.6, 1.0, INF),
+        (20, 0.3, 2.0, INF),
+    ]  # fmt: skip
+    for seed, (size, rho, low, high) in enumerate(boxes * 5):
         ends = np.full(size, low), np.full(size, high)
         exact = one_factor_rectangle(*ends, np.full(size, math.sqrt(rho)))
         found = randomised_rectangle(*ends, equal(size, rho), seed=seed, points=2**10)

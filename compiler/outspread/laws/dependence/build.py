@@ -14,9 +14,10 @@ import numpy.typing as npt
 
 from outspread.errors import LawError
 from outspread.laws.dependence.copula import Copula
-from outspread.laws.dependence.correlation import pearson_correlation
+from outspread.laws.dependence.correlation import correlation_of_margins
 from outspread.laws.dependence.elliptical import LEAST_EIGENVALUE, GaussianCopula, StudentCopula
 from outspread.laws.dependence.families import ARCHIMEDEAN, ELLIPTICAL, pair_copula
+from outspread.laws.dependence.margins import Margin, margin_of
 from outspread.laws.dependence.matrices import degeneracy, nearest_correlation, smallest_eigenvalue
 from outspread.laws.dependence.pearson import parameter_from_pearson
 from outspread.laws.dependence.rank_strength import (
@@ -57,7 +58,7 @@ def build_copula(
     given = np.array(matrix, float)
     if given.shape != (len(names), len(names)) or len(laws) != len(names) or len(names) < 2:
         raise LawError("a copula joins two or more inputs by a matrix with one row for each")
-    solver = _Solver(family, measure, tuple(laws), tuple(names), degrees_of_freedom)
+    solver = _solver(family, measure, laws, names, degrees_of_freedom)
     if family in ELLIPTICAL:
         scores, error = _solved_matrix(solver, given)
         _judge(solver, given, scores)
@@ -81,6 +82,7 @@ class _Solver:
     laws: tuple[Law, ...]
     names: tuple[str, ...]
     degrees_of_freedom: float | None
+    margins: tuple[Margin, ...]  # for pearson
 
     def parameter(self, value: float, i: int, j: int) -> Solved:
         size = len(self.names)
@@ -92,6 +94,7 @@ class _Solver:
             return parameter_from_pearson(
                 self.family, value, self.laws[i], self.laws[j],
                 degrees_of_freedom=self.degrees_of_freedom, size=size, names=(self.names[i], self.names[j]),
+                margins=(self.margins[i], self.margins[j]),
             )  # fmt: skip
         if self.measure in ("normal_scores", "parameter"):
             return Solved(value, 0.0)
@@ -104,8 +107,16 @@ class _Solver:
             return spearman(self.family, parameter, self.degrees_of_freedom).value
         if self.measure == "pearson":
             copula = pair_copula(self.family, parameter, self.degrees_of_freedom)
-            return pearson_correlation(copula, self.laws[i], self.laws[j]).value
+            return correlation_of_margins(copula, self.margins[i], self.margins[j]).value
         return parameter
+
+
+def _solver(
+    family: str, measure: str, laws: Sequence[Law], names: Sequence[str], degrees_of_freedom: float | None
+) -> _Solver:
+    pairs = zip(laws, names, strict=True) if measure == "pearson" else ()
+    own = [margin_of(law, name) for law, name in pairs]
+    return _Solver(family, measure, tuple(laws), tuple(names), degrees_of_freedom, tuple(own))
 
 
 def _solved_matrix(solver: _Solver, given: Array) -> tuple[Array, float]:
@@ -156,7 +167,7 @@ def nearest_valid(
     It is the nearest in the scores' matrix (Frobenius norm), with its smallest eigenvalue just above 0 so
     that rounding cannot undo it. For gaussian and student_t; errors as `build_copula`.
     """
-    solver = _Solver(family, measure, tuple(laws), tuple(names), degrees_of_freedom)
+    solver = _solver(family, measure, laws, names, degrees_of_freedom)
     scores, _ = _solved_matrix(solver, np.array(matrix, float))
     least = 1e-3
     while least < 0.5:

@@ -150,7 +150,9 @@ class StudentCopula(EllipticalCopula):
     def conditional_inverse(self, given: Levels, at: Levels) -> Levels:
         centre, scale, white = self._place(given)
         ratio = _student_scores(self.degrees_of_freedom + len(white), at, 0.0)
-        return _student_levels(self.degrees_of_freedom, centre + scale * self._stretch(white) * ratio)
+        with np.errstate(over="ignore"):  # an infinite score has the smallest level
+            scores = centre + scale * self._stretch(white) * ratio
+        return _student_levels(self.degrees_of_freedom, scores)
 
     def conditional_log_density(self, given: Levels, at: Levels) -> Array:
         centre, scale, white = self._place(given)

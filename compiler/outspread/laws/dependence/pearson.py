@@ -45,15 +45,18 @@ def parameter_from_pearson(
     degrees_of_freedom: float | None = None,
     size: int = 2,
     names: tuple[str, str] = ("the first input", "the second input"),
+    margins: tuple[Margin, Margin] | None = None,
 ) -> Solved:
     """The copula parameter (scores' correlation for gaussian and student_t) that gives the inputs the
     Pearson correlation `target`, with a bound on its error.
 
     Closed for normals and lognormals under a Gaussian copula, linear where one input is normal, else solved.
+    `margins` are those of the two laws, where the caller has them already.
     Raises LawError with the reachable range where the target lies outside it, DerivationError where a
     marginal has no variance.
     """
-    margins = margin_of(first, names[0]), margin_of(second, names[1])
+    if margins is None:
+        margins = margin_of(first, names[0]), margin_of(second, names[1])
     if family == "gaussian":
         closed = _closed(target, first, second)
         if closed is not None:
