@@ -42,7 +42,8 @@ def test_the_route_follows_from_the_structure() -> None:
     assert route(model("n*a", a=UNIFORM, n=POISSON)) == "change_of_variables"
     assert route(model("sin(a)*b", a=NORMAL, b=UNIFORM)) == "region_integral"
     assert route(model("n*m", n=POISSON, m=POISSON)) == "enumeration"
-    assert route(model("sin(a)*b + c", a=NORMAL, b=UNIFORM, c=NORMAL)) == "sampling"
+    assert route(model("sin(a)*b + c", a=NORMAL, b=UNIFORM, c=NORMAL)) == "region_integral"
+    assert route(model("a*b + b*c + c*a", a=NORMAL, b=UNIFORM, c=NORMAL)) == "sampling"
 
 
 def test_printed_lines_give_the_reason_and_what_was_ruled_out() -> None:

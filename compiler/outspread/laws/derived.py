@@ -14,6 +14,7 @@ import numpy.typing as npt
 from outspread.laws.law import Array, Atoms, Estimates, Law
 from outspread.laws.tabulated import Tabulated
 from outspread.laws.tails import Tail, observed_tail
+from outspread.numerics.panels import LEAST
 from outspread.numerics.roots import bracketed_root
 
 Evaluate = Callable[[str, Array], Estimates]
@@ -54,12 +55,16 @@ class DerivedLaw(Law):
         self._moments: tuple[Estimates, Array] | None = None
 
     def tabulate(
-        self, knots: Sequence[float] = (), density: bool = True, inherited: float = 0.0
+        self,
+        knots: Sequence[float] = (),
+        density: bool = True,
+        inherited: float = 0.0,
+        least: float = LEAST,
     ) -> None:
         """Keep the continuous part on panels from here on (`laws.tabulated`); `knots` are values at which it
         may not be smooth, atoms and ends of the support apart. For routes whose every value is dear. Without
         `density` that is the slope of the cdf. `inherited`: the share of the relative error that comes with
-        the inputs' laws."""
+        the inputs' laws. Probabilities below `least` are taken for 0."""
         if self._continuous_mass == 0 or self._tabulated:
             return
         low, centre, high = self.rough_quantile(np.array([0.16, 0.5, 0.84])).tolist()
@@ -69,10 +74,11 @@ class DerivedLaw(Law):
             centre += 0.1 * scale
         table = Tabulated(
             self._evaluate, self._support, sorted(marks), centre, scale, self._continuous_mass,
-            density=density, inherited=inherited,
+            density=density, inherited=inherited, least=least,
         )  # fmt: skip
         self._evaluate, self._tabulated = table, table
         self.relative_error, self.floor = table.bounds()
+        self.tail_probability = max(self.tail_probability, 1e3 * self.floor)
         if not density:  # an input of a next step, which breaks its panels at them
             self.turning_values = tuple(sorted(m for m in marks if self._support[0] < m < self._support[1]))
         self._seen = {kind: {} for kind in KINDS}
@@ -152,6 +158,17 @@ class DerivedLaw(Law):
             small, doubt = self._compute("ccdf" if kind == "cdf" else "cdf", y[large], complete=False)
             value[large] = 1.0 - small
             error[large] = doubt + 2.3e-16
+
+    def continuous(self, kind: str, y: Array) -> Estimates:
+        """pdf, cdf or ccdf of the continuous part alone."""
+        low, high = self._support
+        beyond = y < low if kind == "ccdf" else y >= high if kind == "cdf" else np.zeros(y.size, bool)
+        value, error = np.where(beyond, self._continuous_mass, 0.0), np.zeros(y.size)
+        inside = (y >= low) & (y <= high) & ~beyond
+        if inside.any() and self._continuous_mass > 0:
+            found = self._evaluate(kind, y[inside])
+            value[inside], error[inside] = found.value, found.error
+        return Estimates(value, error)
 
     def raw_total(self, y: Array) -> Estimates:
         """cdf and ccdf at y derived apart from each other, added up: 1 where the formula has a value."""

@@ -13,7 +13,7 @@ import numpy as np
 import numpy.typing as npt
 
 from outspread.laws.law import Array, Estimates
-from outspread.numerics.panels import PanelFunction, expand, panels_over
+from outspread.numerics.panels import LEAST, PanelFunction, expand, panels_over
 
 _POORER = 10.0  # than in the body
 FADING = 1e-100  # probabilities below this are kept, but not promised to be exact relative to themselves
@@ -36,19 +36,21 @@ class Tabulated:
         relative: float = 1e-13,
         density: bool = True,
         inherited: float = 0.0,
+        least: float = LEAST,
     ):
         self._evaluate, self._mass, self._centre, self._inherited = evaluate, mass, centre, inherited
+        self._fading, self._trusted = max(FADING, 1e5 * least), 1e-10 * least
         low, high = support
         self.knots = np.array(sorted({k for k in (*knots, low, high) if np.isfinite(k)}))
         # the middle is no knot: no panel may be graded towards it
         below = panels_over([k for k in knots if k < centre], low, centre, centre, scale, (True, False))
         above = panels_over([k for k in knots if k > centre], centre, high, centre, scale, (False, True))
-        self._below = expand(lambda y: self._own("cdf", y), below, relative)
-        self._above = expand(lambda y: self._own("ccdf", y), above, relative)
+        self._below = expand(lambda y: self._own("cdf", y), below, relative, None, least)
+        self._above = expand(lambda y: self._own("ccdf", y), above, relative, None, least)
         start = [*self._below.panels, *self._above.panels]
         self._density: PanelFunction | None = None
         if density:
-            self._density = expand(lambda y: self._own("pdf", y), start, relative, self._room)
+            self._density = expand(lambda y: self._own("pdf", y), start, relative, self._room, least)
 
     def _own(self, kind: str, y: Array) -> Estimates:
         """Values with the error of their own computation alone: what is inherited is no noise."""
@@ -59,7 +61,7 @@ class Tabulated:
     def _room(self, y: Array) -> Array:
         """What a panel of the density may be off by in mass: nothing to be seen in the nearer tail."""
         tail = np.where(y < self._centre, self._below(y).value, self._above(y).value)
-        return 1e-14 * tail + 1e-300
+        return np.maximum(1e-14 * tail, self._trusted)
 
     def __call__(self, kind: str, y: Array) -> Estimates:
         found = self._kept(kind, y)
@@ -104,7 +106,7 @@ class Tabulated:
         for function in (self._below, self._above):
             shares, sizes = function.firm.T
             body = float(np.max(shares[function.peaks > 1e-3], initial=0.0))
-            poor = (shares > _POORER * body) | (function.peaks < FADING)
+            poor = (shares > _POORER * body) | (function.peaks < self._fading)
             relative = max(relative, float(np.max(shares[~poor], initial=0.0)))
             absolute = max(absolute, float(np.max(sizes[poor], initial=0.0)))
-        return relative + self._inherited, absolute + FADING
+        return relative + self._inherited, absolute + self._fading

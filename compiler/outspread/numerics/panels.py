@@ -27,10 +27,11 @@ Evaluate = Callable[[Array], Estimates]
 
 SIZE = 20  # nodes, and coefficients, of a panel
 LEAST = 1e-290  # below this a value is taken for 0, and stated to be off by as much
-_FADED = 1e-285  # a panel that ends in zeros and stays below this counts as 0 throughout
+_FADED = 1e5  # a panel that ends below the least and stays below so many times that counts as 0 throughout
 _LEBESGUE = 2.9  # of 20 Chebyshev points: 2/pi log(20) + 0.97
 _FLAT, _LOG, _ZERO = 0, 1, 2
 _DIFFERENTIATED = 620.0  # a quarter of the sum of k^2 below SIZE: the tail sums four coefficients
+_NARROW = 12.0  # ratio of the values of a panel up to which its nodes may differ in noise
 _MOST = 2_500  # panels
 _LINEAR_ATTEMPTS = 2  # bisections at a knot before the logarithm of the distance is taken
 _NODES: Array = np.cos(np.pi * (np.arange(SIZE) + 0.5) / SIZE)[::-1]
@@ -217,12 +218,14 @@ def expand(
     panels: list[Panel],
     relative: float = 1e-13,
     enough: Callable[[Array], Array] | None = None,
+    least: float = LEAST,
 ) -> PanelFunction:
     """The function on panels that start as given and are halved until each series holds.
 
     `evaluate` takes flat points and answers with values >= 0 and bounds on their errors. A series holds where
     its tail falls below `relative` of the function or below the function's own error; where `enough` is
     given, also where its tail times the width falls below `enough(middle)`. What never holds keeps its error.
+    Values below `least` are taken for 0.
     """
     pending = list(panels)
     done: list[Panel] = []
@@ -238,7 +241,7 @@ def expand(
         found = evaluate(points.ravel())
         values, errors = found.value.reshape(points.shape), found.error.reshape(points.shape)
         roundings = errors if found.rounding is None else found.rounding.reshape(points.shape)
-        expansion = _expand(values, errors, np.stack([panel.rounding() for panel in pending]))
+        expansion = _expand(values, errors, np.stack([panel.rounding() for panel in pending]), least)
         middles = points[:, SIZE // 2]
         room = np.zeros(len(pending)) if enough is None else np.asarray(enough(middles), float)
         full = len(done) + 2 * len(pending) > _MOST
@@ -247,8 +250,8 @@ def expand(
             tail, noise, size = expansion.tail[i], expansion.noise[i], expansion.size[i]
             holds = bool(tail <= relative * size + noise)
             # the error of the worst node is stated for the whole panel: it may not differ much between them
-            even = noise <= 10 * max(expansion.least[i], relative * size) or expansion.least[i] > 0.1 * size
-            closed = holds and (even or _narrow(panel))
+            even = noise <= 10 * max(expansion.best[i], relative * size) or expansion.best[i] > 0.1 * size
+            closed = holds and (even or float(values[i].max()) < _NARROW * float(values[i].min()))
             if not holds:
                 closed = _missed(expansion, i) * (panel.upper - panel.lower) <= room[i]
             parts = [] if closed or full else _halves(panel)
@@ -267,7 +270,7 @@ def expand(
             # a series that does not decay is no interpolant to trust between its nodes
             doubt = _LEBESGUE * noise + (2 * tail if holds else min(3 * expansion.rough[i], 2 * size))
             relatives.append(float(doubt) + 1e-15 if is_log else 1e-15)
-            absolutes.append(LEAST if is_log else float(doubt) + _FADED)
+            absolutes.append(least if is_log else float(doubt) + _FADED * least)
         pending = following
     return PanelFunction(
         done, np.array(series).reshape(-1, SIZE), np.array(forms, np.int64), np.array(relatives),
@@ -287,7 +290,7 @@ class _Expansion:
     noise: Array
     size: Array
     peak: Array
-    least: Array  # the noise of the best node
+    best: Array  # the noise of the best node
     rough: Array  # the upper half of the series
 
 
@@ -309,13 +312,13 @@ def _missed(expansion: _Expansion, i: int) -> float:
     return float(min(expansion.tail[i], 1.0) * peak)
 
 
-def _expand(values: Array, errors: Array, shifts: Array) -> _Expansion:
+def _expand(values: Array, errors: Array, shifts: Array, least: float) -> _Expansion:
     values = np.where(np.isfinite(values), values, 0.0)
     peak = values.max(axis=1)
-    positive = np.asarray((values > LEAST).all(axis=1))
-    zero = np.asarray((peak <= _FADED) & ~positive)
+    positive = np.asarray((values > least).all(axis=1))
+    zero = np.asarray((peak <= _FADED * least) & ~positive)
     # a power that fades out below the smallest numbers is followed by halving, not by a polynomial
-    fading = ~positive & ((values > 0) & (values < 1e-30 * peak[:, None])).any(axis=1) & ~zero
+    fading = ~positive & ((values > 0) & (values < 1e-20 * peak[:, None])).any(axis=1) & ~zero
     forms = np.where(zero, _ZERO, np.where(positive, _LOG, _FLAT))
     with np.errstate(all="ignore"):
         logs = np.log(np.where(positive[:, None], values, 1.0))
@@ -330,15 +333,10 @@ def _expand(values: Array, errors: Array, shifts: Array) -> _Expansion:
     own = own + np.where(positive[:, None], 2.3e-16 * np.maximum(depth, 4.0), 1e-15 * peak[:, None])
     own = own + np.abs(np.gradient(terms, _NODES, axis=1)) * shifts
     size = np.where(positive, 1.0, peak)
-    noise, least = own.max(axis=1), own.min(axis=1)
+    noise, best = own.max(axis=1), own.min(axis=1)
     tail, noise = np.where(zero, 0.0, tail), np.where(zero, 0.0, noise)
     rough = np.where(zero, 0.0, np.abs(series[:, SIZE // 2 :]).sum(axis=1))
-    return _Expansion(series, forms.astype(np.int64), tail, noise, size, peak, least, rough)
-
-
-def _narrow(panel: Panel) -> bool:
-    """Whether the panel spans no more than an order of magnitude of distance."""
-    return (panel.side != 0 and panel.last - panel.first < 2.5) or (panel.side == 0 and panel.depth > 6)
+    return _Expansion(series, forms.astype(np.int64), tail, noise, size, peak, best, rough)
 
 
 def _halves(panel: Panel) -> list[Panel]:

@@ -50,7 +50,6 @@ GAUSS[11:20:2] = _HALF_GAUSS[::-1]
 _WEIGHTS = np.stack([KRONROD, GAUSS], axis=1)
 
 _NOISE = 5  # bisections in a row without gain after which a panel is taken for noise
-_SHARE = 2_500  # panels of one integral after which what is left keeps its error
 _CHUNK = 12_000  # panels evaluated at a time: bounds the memory
 
 
@@ -77,6 +76,7 @@ def integrate(
     rounds: int = 130,
     most_panels: int | None = None,
     noise: int | None = None,
+    share: int = 2_500,
 ) -> Integrals:
     """Integrate `function(x, owner)` over the panels, summed by owner.
 
@@ -86,7 +86,7 @@ def integrate(
     or below absolute / 40; only the first `control` components (default: all) are so controlled. What is not
     accepted after `rounds` bisections or `most_panels` panels keeps its error, so the error stated is always
     the sum over all panels; it never vanishes from the account. The same holds for the panels of an owner
-    that has had its share of them, and for panels whose error both halves inherit over several bisections:
+    that has had its `share` of them, and for panels whose error both halves inherit over several bisections:
     that is rounding noise. Where component `noise` integrates a bound on the rounding of the others, a panel
     whose error is below it is accepted too.
     """
@@ -113,7 +113,7 @@ def integrate(
         if noise is not None:
             done |= (difference[:control] <= 0.1 * np.abs(kronrod[noise])).all(axis=0)
         shares += np.bincount(owner, minlength=owners)
-        done |= shares[owner] > _SHARE
+        done |= shares[owner] > share
         middle = 0.5 * (lower + upper)
         done |= (middle <= lower) | (middle >= upper) | (upper - lower <= 4e-16 * np.abs(middle))
         if round_:

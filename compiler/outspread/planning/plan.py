@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+from outspread.formula.tree import Node
+
 
 @dataclass(frozen=True)
 class RuledOut:
@@ -14,10 +16,12 @@ class RuledOut:
 @dataclass(frozen=True)
 class PlanStep:
     """One step: `derives` (what comes out, in words), `route` (closed_form | change_of_variables |
-    region_integral | jacobian | enumeration | sampling), `reason`, what was ruled out and why.
+    region_integral | jacobian | enumeration | conditioning | sampling), `reason`, what was ruled out and why.
 
     `inputs` the random inputs that enter; `inner` the variable whose limits are found exactly, `outer`
-    the ones integrated (or sampled) over.
+    the ones integrated (or sampled) over. `expression`: the formula of the step, in inputs and in the
+    `output` names of its substeps, whose laws enter it; of a conditioning step, given its `outer`, the one
+    substep.
     """
 
     output: str
@@ -30,6 +34,7 @@ class PlanStep:
     ruled_out: tuple[RuledOut, ...] = ()
     details: tuple[tuple[str, str], ...] = ()  # further facts, e.g. ("closed form", "Rice")
     substeps: tuple[PlanStep, ...] = ()
+    expression: Node | None = None
 
 
 @dataclass(frozen=True)

@@ -36,11 +36,18 @@ class Part:
 
 
 class Splitter:
-    """`random`: the inputs that vary; `linked`: a key shared by inputs that depend on each other."""
+    """`random`: the inputs that vary; `linked`: a key shared by inputs that depend on each other; `families`:
+    what is alike stands together when operands are paired, since it may have a closed form."""
 
-    def __init__(self, random: Iterable[str], linked: Mapping[str, str], taken: Iterable[str]):
+    def __init__(
+        self,
+        random: Iterable[str],
+        linked: Mapping[str, str],
+        taken: Iterable[str],
+        families: Mapping[str, str],
+    ):
         self._random = frozenset(random)
-        self._linked = dict(linked)
+        self._linked, self._families = dict(linked), dict(families)
         self._taken = set(taken)
         self._made = 0
         self._seen: dict[int, tuple[Node, Counter[str]]] = {}
@@ -91,7 +98,7 @@ class Splitter:
             closed = [group for group in groups if self._closed(self._sum(group), total)]
             if root and len(groups) > 1:
                 return self._paired(node, groups, parts)
-            if len(closed) > 1 or (closed and len(closed[0]) > 1):
+            if len(closed) < len(groups) and (len(closed) > 1 or (closed and len(closed[0]) > 1)):
                 inside = {id(argument) for group in closed for argument in group}
                 rest = [a for a in arguments if id(a) not in inside]
                 own = [a for a in arguments if id(a) in inside]
@@ -127,6 +134,10 @@ class Splitter:
 
     def _paired(self, node: Apply, groups: list[list[Node]], parts: list[Part]) -> Node:
         """Two halves of about as many operands; constant operands stay beside them."""
+        order = [self._alike(group) for group in groups]
+        first = {key: order.index(key) for key in order}
+        places = sorted(range(len(groups)), key=lambda place: (first[order[place]], place))
+        groups = [groups[place] for place in places]
         half = (len(groups) + 1) // 2
         sides = []
         for chosen in (groups[:half], groups[half:]):
@@ -135,6 +146,10 @@ class Splitter:
             sides.append(self._replaced(side, parts))
         constants = [argument for argument in node.arguments if not self._count(argument)]
         return Apply(node.operator, (*constants, *sides), node.span)
+
+    def _alike(self, group: list[Node]) -> str:
+        families = {self._families.get(name, "") for node in group for name in self.entering(node)}
+        return families.pop() if len(families) == 1 else ""
 
     def _replaced(self, node: Node, parts: list[Part]) -> Node:
         """A name for a sub-formula of two or more inputs; one of a single input stays as it is."""

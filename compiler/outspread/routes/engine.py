@@ -19,6 +19,8 @@ from outspread.routes.derived import DerivedOutput, JointLaw, SymbolicDensity
 from outspread.routes.events import event_of_one
 from outspread.routes.jacobian import NotPossible, derive_joint, input_density
 from outspread.routes.sampling import derive_sampled
+from outspread.routes.tree import TreeDeriver
+from outspread.routes.writing_parts import by_parts
 
 Progress = Callable[[str], None]
 
@@ -40,7 +42,7 @@ class Engine:
                 progress(f"deriving {output.name}")
             if output.name not in self._outputs:
                 try:
-                    self._outputs[output.name] = self._derive(output)
+                    self._outputs[output.name] = self._derive(output, progress)
                 except DerivationError as error:
                     raise DerivationError(error.message, error.output or output.name) from error
         return tuple(self._outputs[output.name] for output in self.model.outputs)
@@ -48,7 +50,7 @@ class Engine:
     def _used(self, expression: Node) -> dict[str, Law]:
         return {name: law for name, law in self.laws.items() if name in names(expression)}
 
-    def _derive(self, output: Output) -> DerivedOutput:
+    def _derive(self, output: Output, progress: Progress | None) -> DerivedOutput:
         step = self.plan.step(output.name)
         if step.route == "closed_form":
             return self._closed_form(output, step)
@@ -62,12 +64,20 @@ class Engine:
             )
             text = writing.sampling(output, step, self.symbols)
             return DerivedOutput(output.name, step.route, law, text, evaluations=evaluations)
-        result = numeric.derive(output.expression, self._used(output.expression), self.scores, step.outer)
-        numeric.tabulate(result)
+        if step.substeps:
+            return self._by_parts(output, step, progress)
+        laws = self._used(output.expression)
+        result = numeric.derive(output.expression, laws, self.scores, step.outer)
+        numeric.tabulate(result, laws)
         text, symbolic = writing.numeric(output, step, self.laws, self.symbols, result)
         return DerivedOutput(
             output.name, step.route, result.law, text, symbolic, evaluations=result.evaluations
         )
+
+    def _by_parts(self, output: Output, step: PlanStep, progress: Progress | None) -> DerivedOutput:
+        found = TreeDeriver(self.laws, self.scores, recognise_with_scores, progress).derive(step)
+        text = by_parts(output, step, self.symbols, found)
+        return DerivedOutput(output.name, step.route, found.law, text, evaluations=found.evaluations)
 
     def _closed_form(self, output: Output, step: PlanStep) -> DerivedOutput:
         laws = self._used(output.expression)

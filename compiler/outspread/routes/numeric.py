@@ -17,6 +17,7 @@ from outspread.formula.evaluate import compile_numpy
 from outspread.formula.tree import Name, Node, Number, names, substitute
 from outspread.laws.derived import DerivedLaw, Evaluate
 from outspread.laws.law import Array, Atoms, Estimates, Law
+from outspread.numerics.panels import LEAST
 from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
 from outspread.numerics.slices.extent import Extent, extent
@@ -71,16 +72,18 @@ def derive(
     scores: Scores | None,
     outer: tuple[str, ...] = (),
     relative: float = 1e-12,
+    least: float = 0.0,
 ) -> NumericLaw:
     """The law of the expression. `outer` names the input to integrate over where there are two.
 
     Raises DerivationError where the formula has more than two continuous inputs in some part, has no value
-    with a probability that matters, or is constant on infinitely many pieces.
+    with a probability that matters, or is constant on infinitely many pieces. With `least`, probabilities
+    below it need no digits.
     """
     pieces = []
     for continuous, discrete in parts(expression, laws):
         problem = take_apart(expression, laws, scores, continuous, discrete)
-        pieces.append(Piece(problem, combinations(problem), _measure(problem, outer, relative)))
+        pieces.append(Piece(problem, combinations(problem), _measure(problem, outer, relative, least)))
     atoms, continuous_mass = _all_atoms(pieces)
     spread = extent(expression, laws, names(expression))
     nodes = _nodes(pieces, spread)
@@ -98,13 +101,18 @@ def derive(
     return result
 
 
-def tabulate(result: NumericLaw) -> None:
-    """Keep the law on panels where its values are integrals, each of them dear (`laws.tabulated`)."""
+def tabulate(
+    result: NumericLaw, laws: Mapping[str, Law], density: bool = True, least: float = LEAST
+) -> None:
+    """Keep the law on panels (`laws.tabulated`) where its values are integrals, each of them dear, or where,
+    without `density`, it is to be an input of a next step."""
     planes = [piece for piece in result.pieces if isinstance(piece.measure, PlaneMeasure)]
-    if planes:
+    if planes or not density:
         low, high = result.law.support()
         marks = {value for piece in planes for value in _landmarks(piece) if low < value < high}
-        result.law.tabulate(sorted(marks) if len(marks) <= 2 * MOST else ())
+        inherited = sum(laws[name].relative_error for name in laws)
+        least = max(least, *(min(10 * laws[name].floor, 1e-35) for name in laws))
+        result.law.tabulate(sorted(marks) if len(marks) <= 2 * MOST else (), density, inherited, least)
 
 
 def _landmarks(piece: Piece) -> tuple[float, ...]:
@@ -162,7 +170,7 @@ def _tightened(spread: Extent, evaluate: Evaluate, atoms: Atoms) -> Extent:
     return Extent(ends[0][0], ends[1][0], ends[0][1], ends[1][1])
 
 
-def _measure(problem: Problem, outer: tuple[str, ...], relative: float) -> Measure | None:
+def _measure(problem: Problem, outer: tuple[str, ...], relative: float, least: float) -> Measure | None:
     if not problem.constant_known:
         raise DerivationError(
             "the formula takes a constant value on too many pieces to go through one by one"
@@ -178,7 +186,7 @@ def _measure(problem: Problem, outer: tuple[str, ...], relative: float) -> Measu
     first, second = problem.continuous
     if outer and outer[0] == second:
         first, second = second, first
-    return PlaneMeasure(problem, first, second, relative)
+    return PlaneMeasure(problem, first, second, relative, least)
 
 
 def _evaluator(pieces: list[Piece]) -> Evaluate:

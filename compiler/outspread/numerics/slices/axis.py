@@ -26,10 +26,16 @@ _COARSE_TAILS = (1e-300, 1e-120, 1e-40, 1e-12, 1e-4, 0.05, 0.25, 0.45, 0.499)
 
 class Axis:
     """`frame` is what solvers see of the input; `breaks` are further points where a panel must end;
-    `multiplicative`: the formula takes the input as a factor, so that ratios to it matter."""
+    `multiplicative`: the formula takes the input as a factor, so that ratios to it matter; `least`: the
+    smallest tail probability that is followed."""
 
     def __init__(
-        self, name: str, law: Law, breaks: tuple[float, ...] = (), multiplicative: bool = False
+        self,
+        name: str,
+        law: Law,
+        breaks: tuple[float, ...] = (),
+        multiplicative: bool = False,
+        least: float = 0.0,
     ):
         self.name, self.law = name, law
         self.mass = law.continuous_mass
@@ -37,6 +43,8 @@ class Axis:
         low, high = law.support()
         self.support = (low, high)
         lower, upper, middle, spread = _quantiles(law)
+        kept = np.array(_TAILS) >= least
+        lower, upper = lower[kept], upper[kept]
         self.start = low if np.isfinite(low) else float(lower[0])
         self.end = high if np.isfinite(high) else float(upper[0])
         points = np.concatenate(
@@ -47,7 +55,7 @@ class Axis:
         self.scale = spread / 2 if spread > 0 else max(abs(float(middle)), 1.0)
         self.middle = float(middle)
         self.singular = law.singular_ends() if self.mass == 1.0 else (False, False)
-        steps = _steps(self.grid, float(middle))
+        steps = _steps(self.grid, float(middle), spread)
         # a tail over many magnitudes has its mass in a sliver of each panel, unless t counts probability
         wide = self.mass == 1.0 and (any(self.singular) or steps.size > _MOST_STEPS)
         self.by_logarithm = (wide or multiplicative) and low == 0.0 and not self.singular[1]
@@ -57,8 +65,8 @@ class Axis:
         self.by_sinh = wide and not any(self.singular)
         if not (wide or self.by_logarithm):
             self.grid = np.unique(np.concatenate([self.grid, steps]))
-        #: probability beyond the ends of the grid, where the density underflows
-        self.outside = 0.0
+        #: probability beyond the ends of the grid, too small to matter or where the density underflows
+        self.outside = float(np.array(_TAILS)[kept][0]) * (np.isinf(low) + np.isinf(high)) if least else 0.0
         if self.by_logarithm or self.by_sinh:
             self._limit()
         self.frame = Frame(name, self.grid)
@@ -155,12 +163,12 @@ def _coarse_quantiles(law: Law) -> Array:
         return np.concatenate([law.icdf(tails), law.iccdf(tails), law.icdf(np.array([0.5]))])
 
 
-def _steps(grid: Array, middle: float) -> Array:
-    """Points between those neighbours of the grid that lie many times further out than each other."""
+def _steps(grid: Array, middle: float, spread: float) -> Array:
+    """Points outside the body between neighbours of the grid one of which lies many times further out."""
     found: list[float] = []
     for side in (-1.0, 1.0):
         distance = np.sort(side * (grid - middle))
-        distance = distance[distance > 0]
+        distance = distance[distance > 1e-3 * spread]
         for near, far in zip(distance[:-1].tolist(), distance[1:].tolist(), strict=True):
             if far > _WIDEST * near:
                 count = int(np.ceil(np.log(far / near) / np.log(_WIDEST / 5)))
