@@ -209,6 +209,27 @@ def test_a_gap_in_the_density_is_a_jump_of_the_quantile() -> None:
     assert abs(found.value - exact) <= found.error < 1e-11
 
 
+@pytest.mark.parametrize(("family", "parameter"), [
+    ("gaussian", 1 - 5e-7), ("gaussian", -1 + 5e-9), ("student_t", 1 - 5e-7), ("clayton", 300.0),
+    ("gumbel", 300.0), ("frank", 3000.0),
+])  # fmt: skip
+def test_steep_dependence_on_a_jump_is_not_missed(family: str, parameter: float) -> None:
+    """A quantile with a jump under nearly complete dependence: the conditional mean is a step. The integral
+    over the other input first, whose jump is then an exact panel end, must agree within both errors."""
+    gap = MixtureLaw([0.3, 0.7], (EXPONENTIAL, law("uniform", lower=4, upper=5)))
+    many = law("binomial", trials=60, probability=0.4)
+    copula = pair_copula(family, parameter, 3.0)
+    found = pearson_correlation(copula, gap, EXPONENTIAL)
+    turned = pearson_correlation(copula, EXPONENTIAL, gap)
+    assert abs(found.value - turned.value) <= found.error + turned.error < 1e-11
+    # between the reachable ends, and next to one of them
+    reach = pearson_range("frank", many, EXPONENTIAL)
+    strong = pearson_correlation(copula, many, EXPONENTIAL)
+    near = reach.high if parameter > 0 else reach.low
+    assert reach.low - strong.error <= strong.value <= reach.high + strong.error
+    assert abs(strong.value - near) < 0.01
+
+
 def test_rounding_of_a_far_mean_is_in_the_error() -> None:
     """A spread of 1e-9 of the mean: the quantiles themselves are known to seven digits of a spread."""
     far = law("uniform", lower=1e6, upper=1e6 + 1e-3)

@@ -24,8 +24,10 @@ from outspread.laws.law import Array, Law
 from outspread.numerics.quadrature import Index, integrate, panels_between
 
 _INNER = np.array([-4.5, -1.5, 1.5, 4.5])
+_STEP = (-8.0, -3.0, 0.0, 3.0, 8.0)
 _OUTER = np.array([-6.0, -4.0, -2.5, -1.25, 0.0, 1.25, 2.5, 4.0, 6.0])
-_MOST_EDGES = 16  # of the second margin: many small steps leave its conditional mean smooth
+_MOST_VALUES = 1_000_000  # at a time: bounds the memory
+_MOST_EDGES = 16  # of the second margin: more steps than this leave its conditional mean smooth if not steep
 _RELATIVE, _ABSOLUTE = 1e-12, 2e-13
 
 
@@ -87,14 +89,19 @@ def correlation_of_margins(copula: Copula, first: Margin, second: Margin) -> Sol
 
 
 def _outer_points(copula: Copula, first: Margin, second: Margin) -> Array:
-    """Panel ends of the first score: its own edges, and where the second's edges are its median."""
+    """Panel ends of the first score: its own edges, and quantiles of it given the second's edges."""
     ends = np.array([-first.cut, first.cut])
     points = [_OUTER, first.edges, ends]
-    if 0 < second.edges.size <= _MOST_EDGES:
+    if second.edges.size:
         levels = Levels.from_scores(second.edges)
         given = Levels(levels.lower[None], levels.upper[None])
-        half = Levels.of(np.full(levels.lower.size, 0.5))
-        points.append(copula.conditional_inverse(given, half).scores())
+        # the mean given the first rises or turns there, however steeply
+        rises = np.stack([
+            copula.conditional_inverse(given, Levels.from_scores(np.full(second.edges.size, score))).scores()
+            for score in _STEP
+        ])  # fmt: skip
+        steep = np.abs(rises[-2] - rises[1]) < 1.0
+        points.append(rises[:, steep | (second.edges.size <= _MOST_EDGES)].ravel())
     return np.asarray(np.clip(np.concatenate(points), *ends))
 
 
@@ -107,8 +114,12 @@ def _conditional_mean(
     given = Levels(levels.lower[None], levels.upper[None])
     if margin.values is not None:
         total = np.full(count, margin.values[0])
-        for rise, edge in zip(np.diff(margin.values), margin.edges, strict=False):
-            total += rise * copula.conditional(given, Levels.from_scores(np.full(count, edge))).upper
+        rises = np.diff(margin.values)
+        wide = Levels(given.lower[:, None], given.upper[:, None])
+        part = max(_MOST_VALUES // count, 1)
+        for start in range(0, len(rises), part):
+            edges = margin.edges[start : start + part, None]
+            total += rises[start : start + part] @ copula.conditional(wide, Levels.from_scores(edges)).upper
         return total, np.full(count, 1e-14 * (1.0 + float(np.max(np.abs(margin.values)))))
     points = [np.broadcast_to(np.concatenate([_INNER, [-margin.cut, margin.cut]]), (count, 6))]
     for edge in margin.edges:

@@ -76,6 +76,8 @@ def margin_of(law: Law, name: str = "the input") -> Margin:
 
     atoms = law.atoms().values
     if law.continuous_mass == 0.0:
+        far = 1e-33  # the level at a score of -12
+        atoms = atoms[(atoms >= law.icdf(far)) & (atoms <= law.iccdf(far))]
         ends = _scores(law, atoms)
         kept = np.abs(ends) < 12.0
         first = int(np.argmax(kept)) if kept.any() else 0
