@@ -23,7 +23,8 @@ from outspread.numerics.slices.axis import Axis
 from outspread.numerics.slices.extent import Extent, extent
 from outspread.numerics.slices.isolate import Isolator, TooManyBoundaries
 from outspread.numerics.slices.landmarks import MOST, landmarks
-from outspread.numerics.slices.measure import LineMeasure, PlaneMeasure
+from outspread.numerics.slices.line import LineMeasure
+from outspread.numerics.slices.measure import PlaneMeasure
 from outspread.numerics.slices.problem import (
     Combinations,
     Problem,

@@ -1,27 +1,26 @@
-"""Probabilities of events, and how fast they grow with a parameter, in one or two continuous inputs.
+"""Probabilities of events, and how fast they grow with a parameter, in two continuous inputs.
 
-One continuous input: the set on which the event holds, measured by the input's law (`LineMeasure`).
-Two: that set for each value of the other input, integrated over it (`PlaneMeasure`); the density is the
-derivative under the integral sign. Discrete inputs are gone through value by value.
+For each value of the one input the set of the other on which the event holds is measured exactly, and
+integrated over the first; the density is the derivative under the integral sign. Discrete inputs are gone
+through value by value.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
 from outspread.formula.calculus import derivative, nonsmooth
-from outspread.formula.evaluate import compile_numpy
 from outspread.formula.tree import Apply, Name, Node, names, walk
 from outspread.laws.law import Array, Estimates
 from outspread.numerics.quadrature import NODES, Integrals, integrate, panels_between
 from outspread.numerics.sets import Sets
 from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
+from outspread.numerics.slices.common import ROUNDING, Effort, compiled, environment_of, over_blocks
 from outspread.numerics.slices.folds import corners, critical_points, structure_cuts
 from outspread.numerics.slices.inner import (
     ConditionalInner,
@@ -30,96 +29,13 @@ from outspread.numerics.slices.inner import (
     boundary,
     probability,
 )
-from outspread.numerics.slices.problem import Combinations, Problem, combinations
+from outspread.numerics.slices.problem import Problem, combinations
 from outspread.numerics.slices.solve import PARAMETER, Solver
 
 Index = npt.NDArray[np.int64]
-ROUNDING = 2.3e-16 * 4  # units in the last place lost on the way through a formula, relative to its terms
-_BLOCK = 400_000
 _THINNED = 4
 _LIGHT = 1e-14  # probability of a panel of the outer input that may turn out not to matter
 _PASSED = 1e-15  # share of the result up to which it does not
-
-
-@dataclass
-class Effort:
-    """Counts evaluations; a plain number that routes report."""
-
-    evaluations: int = 0
-
-
-class LineMeasure:
-    """Events in one continuous input (and any discrete ones)."""
-
-    def __init__(self, problem: Problem):
-        (self.name,) = problem.continuous
-        self.problem = problem
-        self.combos = combinations(problem)
-        self.axis = Axis(self.name, problem.laws[self.name])
-        self.inner = IndependentInner(problem.laws[self.name])
-        self.effort = Effort()
-        self._solvers: dict[Node, Solver] = {}
-        self._relative = problem.laws[self.name].relative_error + 4e-15
-
-    def exact(self, event: Node) -> bool:
-        return self._solver(event).exact
-
-    def _solver(self, event: Node) -> Solver:
-        if event not in self._solvers:
-            self._solvers[event] = Solver(event, self.axis.frame)
-        return self._solvers[event]
-
-    def by_combination(self, event: Node, y: Array) -> Estimates:
-        """P(event and combination j) / weight j for each y and combination: shape (len(y), combinations)."""
-        shape = (y.size, self.combos.count)
-        sets_, environment = self._sets(event, y)
-        value = probability(sets_, self.inner)
-        edge = boundary(sets_)
-        with np.errstate(all="ignore"):
-            shift = ROUNDING * (np.abs(environment[PARAMETER])[edge.problem] * edge.rate + np.abs(edge.x))
-            density = self.inner.pdf(edge.x, None)
-            slip = np.where(density == 0, 0.0, density * shift)
-            slip = np.where(np.isfinite(slip), slip, np.sqrt(ROUNDING))
-        lost = np.bincount(edge.problem, slip, value.size)
-        error = self._relative * value + lost + self.problem.laws[self.name].floor
-        return Estimates(value.reshape(shape), error.reshape(shape))
-
-    def _sets(self, event: Node, y: Array) -> tuple[Sets, Mapping[str, Array]]:
-        environment = _environment(y, self.combos)
-        count = y.size * self.combos.count
-        self.effort.evaluations += count
-        return self._solver(event)(environment, count), environment
-
-    def event(self, event: Node, y: Array) -> Estimates:
-        """P(event) for each value y of the parameter: shape (len(y),)."""
-        return _over_blocks(self._event, event, y, max(1, _BLOCK // self.combos.count))
-
-    def _event(self, event: Node, y: Array) -> Estimates:
-        parts = self.by_combination(event, y)
-        return Estimates(parts.value @ self.combos.weights, parts.error @ self.combos.weights)
-
-    def rate(self, event: Node, y: Array) -> Estimates:
-        """d/dy P(event): the density of the formula where the event is {formula <= y}."""
-        return _over_blocks(self._rate, event, y, max(1, _BLOCK // self.combos.count))
-
-    def _rate(self, event: Node, y: Array) -> Estimates:
-        value = self._density(event, y)
-        # How rounding moves the density: its change under a change of y in the last places.
-        step = 8 * ROUNDING / 4 * np.maximum(np.abs(y), 1e-300)
-        with np.errstate(all="ignore"):
-            change = np.maximum(
-                np.abs(self._density(event, y + step) - value), np.abs(self._density(event, y - step) - value)
-            )
-        change = np.where(np.isfinite(change), change, 0.0)
-        return Estimates(value, (self._relative + 2e-15) * value + change)
-
-    def _density(self, event: Node, y: Array) -> Array:
-        sets_, _ = self._sets(event, y)
-        edge = boundary(sets_)
-        with np.errstate(all="ignore"):
-            density = self.inner.pdf(edge.x, None) * edge.rate
-        weights = self.combos.weights[edge.problem % self.combos.count]
-        return np.asarray(np.bincount(edge.problem // self.combos.count, density * weights, y.size), float)
 
 
 class PlaneMeasure:
@@ -150,7 +66,7 @@ class PlaneMeasure:
             )
         self._coarse = {name: self.axes[name].coarse() for name in (outer, inner)}
         self._solvers: dict[tuple[Node, str], Solver] = {}
-        self._slopes = {name: _compiled(derivative(problem.expression, name)) for name in (outer, inner)}
+        self._slopes = {name: compiled(derivative(problem.expression, name)) for name in (outer, inner)}
         self._relative_error = laws[outer].relative_error + laws[inner].relative_error + 1e-14
         self._floor = laws[outer].floor + laws[inner].floor
         # the law of an earlier step has lost some last places of its own
@@ -205,7 +121,7 @@ class PlaneMeasure:
     def by_combination(self, event: Node, y: Array) -> Estimates:
         """P(event | combination j): shape (len(y), combinations)."""
         count = y.size * self.combos.count
-        environment = _environment(y, self.combos)
+        environment = environment_of(y, self.combos)
         axis, inner, name = self.axes[self.outer], self.laws[self.inner], self.inner
         solver = self._solver(event, name)
         lower, upper, owner = self._panels(event, environment, count, self.outer, self.inner)
@@ -288,7 +204,7 @@ class PlaneMeasure:
         return np.maximum(mass, 0.0)
 
     def event(self, event: Node, y: Array) -> Estimates:
-        return _over_blocks(self._event, event, y, max(1, 2_000 // self.combos.count))
+        return over_blocks(self._event, event, y, max(1, 2_000 // self.combos.count))
 
     def _event(self, event: Node, y: Array) -> Estimates:
         parts = self.by_combination(event, y)
@@ -300,7 +216,7 @@ class PlaneMeasure:
         """d/dy P(event), as two integrals along the level curve: over one input where the curve is steep in
         the other, and the other way round, joined by a smooth partition of unity. Neither has the poles at
         turning points and ends that a single integral has."""
-        return _over_blocks(self._rate, event, y, max(1, 1_000 // self.combos.count))
+        return over_blocks(self._rate, event, y, max(1, 1_000 // self.combos.count))
 
     def _rate(self, event: Node, y: Array) -> Estimates:
         one = self._chart(event, y, self.outer, self.inner)
@@ -314,7 +230,7 @@ class PlaneMeasure:
 
     def _chart(self, event: Node, y: Array, outer: str, inner: str) -> Estimates:
         count = y.size * self.combos.count
-        environment = _environment(y, self.combos)
+        environment = environment_of(y, self.combos)
         axis, other, law = self.axes[outer], self.axes[inner], self.laws[inner]
         solver = self._solver(event, inner)
         slope, along = self._slopes[outer], self._slopes[inner]
@@ -392,36 +308,3 @@ def _is_factor(expression: Node, name: str) -> bool:
                 if argument == Name(name):
                     return True
     return False
-
-
-def _environment(y: Array, combos: Combinations) -> dict[str, Array]:
-    environment = {name: np.tile(value, y.size) for name, value in combos.values.items()}
-    environment[PARAMETER] = np.repeat(y, combos.count)
-    return environment
-
-
-def _compiled(node: Node) -> Callable[[Mapping[str, Array], int], Array]:
-    arguments = names(node)
-    function = compile_numpy(node, arguments)
-
-    def evaluate(environment: Mapping[str, Array], count: int) -> Array:
-        return np.broadcast_to(np.asarray(function(*(environment[n] for n in arguments)), float), (count,))
-
-    return evaluate
-
-
-def _over_blocks(
-    method: Callable[[Node, Array], Estimates], event: Node, y: Array, block: int
-) -> Estimates:
-    """Apply a method to blocks of y, to bound the memory."""
-    if y.size <= block:
-        return method(event, y)
-    parts = [method(event, y[start : start + block]) for start in range(0, y.size, block)]
-    return Estimates(
-        np.concatenate([p.value for p in parts]),
-        np.concatenate([p.error for p in parts]),
-        np.concatenate([np.zeros(p.value.size) if p.rounding is None else p.rounding for p in parts]),
-    )
-
-
-__all__ = ["ROUNDING", "Effort", "LineMeasure", "PlaneMeasure"]
