@@ -82,6 +82,7 @@ def _integrated(lower: Array, upper: Array, rho: Array) -> Estimates:
     with np.errstate(invalid="ignore"):
         rounding = 4e-16 * nearest * (np.abs(rho * mode) + np.abs(side)) / scale
     rounding = np.where(np.isfinite(rounding), rounding, 0.0)
+    rounding += 4e-16 * np.abs(mode) / _slit(lower, upper, rho, scale)
     extra = step_points(np.stack([lower[1], upper[1]]), np.stack([rho, rho]), np.stack([scale, scale])).T
     return integrate_peak(density, start, end, mode, np.minimum(scale, 1.0), 2e-15, rounding, extra)
 
@@ -93,6 +94,16 @@ def _truncated_mean(low: Array, high: Array) -> Array:
         inner = (normal_pdf(low) - normal_pdf(high)) / mass
         nearest = np.where(low > 0, low, np.where(high < 0, high, 0.0))
         return np.where((mass > 1e-290) & np.isfinite(inner), inner, nearest)
+
+
+def _slit(lower: Array, upper: Array, rho: Array, scale: Array) -> Array:
+    """The least width, at most 1, on which a rounding of the first score by one ulp tells."""
+    with np.errstate(all="ignore"):
+        ends = np.sort(np.stack([lower[1], upper[1]]) / rho, axis=0)
+        overlap = np.minimum(upper[0], ends[1]) - np.maximum(lower[0], ends[0])
+        joint = np.where(np.isnan(overlap), 1.0, np.maximum(overlap, scale))
+    widths = np.minimum(upper[0] - lower[0], upper[1] - lower[1])
+    return np.asarray(np.clip(np.minimum(widths, joint), 1e-300, 1.0))
 
 
 def step_points(limits: Array, loadings: Array, scales: Array) -> Array:
@@ -193,11 +204,15 @@ def trivariate_rectangle(lower: Array, upper: Array, matrix: Array) -> Estimates
     found = _over_first(lower, upper, rho, scale, inner, least)
     # near a singular matrix the difference above has lost digits: what they change is part of the error
     lost = 2.3e-16 * (abs(matrix[1, 2]) + abs(rho[0] * rho[1])) / float(scale[0] * scale[1])
-    if lost < 3e-15:
+    if lost < 3e-15 and found.value[0] > 1e-12:  # a tail feels the last digit of a correlation, too
         return found
-    moved = inner - lost if inner > 0 else inner + lost
+    moved = inner - 2.0 * lost if inner > 0 else inner + 2.0 * lost
     other = _over_first(lower, upper, rho, scale, moved, least)
-    return Estimates(found.value, found.error + 2.0 * np.abs(found.value - other.value))
+    # three correlations and two scales are rounded, one correlation is moved; and the exponent of a tail is
+    # a sum whose parts are rounded
+    exponent = np.abs(np.log(np.maximum(found.value, 1e-300)))
+    moved_by = 5.0 * np.abs(found.value - other.value) + 1e-14 * exponent * found.value
+    return Estimates(found.value, found.error + moved_by)
 
 
 def _over_first(
@@ -216,6 +231,12 @@ def _over_first(
     mode, worst = coarse_peak(
         conditional, lambda x: np.min(log_side(*sides(x)), axis=0), start, end, least
     )
+    # the rounding of a limit z given the peak moves its probability by z² ulp relative to itself
+    low, high = (side[:, 0] for side in sides(np.array([mode])))
+    nearest = np.where(low > 0, low, np.where(high < 0, -high, 0.0))
+    own_limit = np.where(low > 0, lower[1:], np.where(high < 0, upper[1:], 0.0))
+    worst += float(np.sum(4e-16 * nearest * (np.abs(rho * mode) + np.abs(own_limit)) / scale))
+    worst += float(4e-16 * abs(mode) / min(np.min(upper - lower), 1.0))
     # where one limit takes over from the other: z_1 = ± z_2 given x
     own = [limits[1:] / scale for limits in (lower, upper)]
     slopes = rho / scale
