@@ -31,6 +31,8 @@ _FADED = 1e5  # a panel that ends below the least and stays below so many times 
 _LEBESGUE = 2.9  # of 20 Chebyshev points: 2/pi log(20) + 0.97
 _FLAT, _LOG, _ZERO = 0, 1, 2
 _DIFFERENTIATED = 620.0  # a quarter of the sum of k^2 below SIZE: the tail sums four coefficients
+_KNOWN = 0.3  # relative error of values whose logarithm says something
+_SLACK = 30.0  # units in the last place by which rounding may have moved the argument of a firm value
 _NARROW = 12.0  # ratio of the values of a panel up to which its nodes may differ in noise
 _MOST = 2_500  # panels
 _LINEAR_ATTEMPTS = 2  # bisections at a knot before the logarithm of the distance is taken
@@ -156,6 +158,7 @@ class PanelFunction:
         self._side = np.array([float(panel.side) for panel in self.panels])
         first = np.array([panel.first for panel in self.panels])
         last = np.array([panel.last for panel in self.panels])
+        self._nearest = np.exp(np.where(self._side == 0, 0.0, first))
         self._middle, self._half = 0.5 * (first + last), 0.5 * (last - first)
 
     def __call__(self, y: Array) -> Estimates:
@@ -191,8 +194,9 @@ class PanelFunction:
     def _stretch(self, y: Array, index: Index) -> Array:
         """du/dy of the panels' own variable u in [-1, 1]."""
         side = self._side[index]
-        distance = side * (y - self._anchor[index])
-        per = np.where(side == 0, 1.0, side / np.where(side == 0, 1.0, np.maximum(distance, 1e-305)))
+        # closer to the anchor than the innermost panel reaches, its first value stands for all
+        distance = np.maximum(side * (y - self._anchor[index]), self._nearest[index])
+        per = np.where(side == 0, 1.0, side / np.where(side == 0, 1.0, distance))
         return np.asarray(per / self._half[index], float)
 
     def _panel(self, y: Array) -> Index:
@@ -265,7 +269,9 @@ def expand(
             is_log = bool(expansion.forms[i] == _LOG)
             rough = 2 * tail if holds else min(3 * expansion.rough[i], 2 * size)
             own = errors[i] if found.rounding is None else errors[i] - roundings[i]
-            firm.append(_firm(values[i], np.maximum(own, 0.0), float(rough), is_log))
+            slack = _SLACK * expansion.moved[i] * (values[i] if is_log else 1.0)
+            missed = max(float(rough) - _SLACK * float(expansion.moved[i].max()) * is_log, 0.0)
+            firm.append(_firm(values[i], np.maximum(own - slack, 0.0), missed, is_log))
             forms.append(int(expansion.forms[i]))
             # a series that does not decay is no interpolant to trust between its nodes
             doubt = _LEBESGUE * noise + (2 * tail if holds else min(3 * expansion.rough[i], 2 * size))
@@ -292,6 +298,7 @@ class _Expansion:
     peak: Array
     best: Array  # the noise of the best node
     rough: Array  # the upper half of the series
+    moved: Array  # by how much one unit in the last place of the argument changes each node's value
 
 
 def _firm(values: Array, errors: Array, rough: float, is_log: bool) -> tuple[float, float]:
@@ -315,7 +322,10 @@ def _missed(expansion: _Expansion, i: int) -> float:
 def _expand(values: Array, errors: Array, shifts: Array, least: float) -> _Expansion:
     values = np.where(np.isfinite(values), values, 0.0)
     peak = values.max(axis=1)
-    positive = np.asarray((values > least).all(axis=1))
+    with np.errstate(all="ignore"):
+        known = (errors <= _KNOWN * values).all(axis=1)
+    # a logarithm of noise would swing without bounds between the nodes
+    positive = np.asarray((values > least).all(axis=1) & known)
     zero = np.asarray((peak <= _FADED * least) & ~positive)
     # a power that fades out below the smallest numbers is followed by halving, not by a polynomial
     fading = ~positive & ((values > 0) & (values < 1e-20 * peak[:, None])).any(axis=1) & ~zero
@@ -331,12 +341,13 @@ def _expand(values: Array, errors: Array, shifts: Array, least: float) -> _Expan
     tail = np.where(fading, np.inf, np.abs(series[:, -4:]).sum(axis=1))
     depth = np.abs(logs).max(axis=1, keepdims=True)
     own = own + np.where(positive[:, None], 2.3e-16 * np.maximum(depth, 4.0), 1e-15 * peak[:, None])
-    own = own + np.abs(np.gradient(terms, _NODES, axis=1)) * shifts
+    moved = np.abs(np.gradient(terms, _NODES, axis=1)) * shifts
+    own = own + moved
     size = np.where(positive, 1.0, peak)
     noise, best = own.max(axis=1), own.min(axis=1)
     tail, noise = np.where(zero, 0.0, tail), np.where(zero, 0.0, noise)
     rough = np.where(zero, 0.0, np.abs(series[:, SIZE // 2 :]).sum(axis=1))
-    return _Expansion(series, forms.astype(np.int64), tail, noise, size, peak, best, rough)
+    return _Expansion(series, forms.astype(np.int64), tail, noise, size, peak, best, rough, moved)
 
 
 def _halves(panel: Panel) -> list[Panel]:

@@ -83,12 +83,12 @@ def integrate(
     `function` takes flat arrays of points and their owners and returns values of shape (points,) or
     (components, points). `lower`, `upper`, `owner` have one entry a panel; all limits are finite.
     A panel is accepted when its error is below relative * |integral| / 40 of its owner (for every component)
-    or below absolute / 40; only the first `control` components (default: all) are so controlled. What is not
-    accepted after `rounds` bisections or `most_panels` panels keeps its error, so the error stated is always
-    the sum over all panels; it never vanishes from the account. The same holds for the panels of an owner
-    that has had its `share` of them, and for panels whose error both halves inherit over several bisections:
-    that is rounding noise. Where component `noise` integrates a bound on the rounding of the others, a panel
-    whose error is below it is accepted too.
+    or below absolute / 40, or below relative / 4 of its own size; only the first `control` components
+    (default: all) are so controlled. What is not accepted after `rounds` bisections or `most_panels` panels
+    keeps its error, so the error stated is always the sum over all panels; it never vanishes from the
+    account. The same holds for the panels of an owner that has had its `share` of them, and for panels whose
+    error both halves inherit over several bisections: that is rounding noise. Where component `noise`
+    integrates a bound on the rounding of the others, a panel whose error is below it is accepted too.
     """
     most_panels = 40_000 + 2_000 * owners if most_panels is None else most_panels
     shares = np.zeros(owners, np.int64)
@@ -109,7 +109,8 @@ def integrate(
         total = np.abs(value + _sum_by(owner, kronrod, owners))
         allowed = np.maximum(relative * total, absolute)[:, owner] / 40
         # A difference at the level of rounding of the panel's own sum cannot be lowered by bisection.
-        done = (difference <= np.maximum(allowed, 4e-16 * size))[:control].all(axis=0)
+        own = np.maximum(4e-16, 0.25 * relative) * size  # what all panels may be off by adds up to a share
+        done = (difference <= np.maximum(allowed, own))[:control].all(axis=0)
         if noise is not None:
             done |= (difference[:control] <= 0.1 * np.abs(kronrod[noise])).all(axis=0)
         shares += np.bincount(owner, minlength=owners)

@@ -54,6 +54,8 @@ class Splitter:
 
     def split(self, name: str, expression: Node) -> Part:
         """The formula with every sub-formula of two or more inputs of its own replaced by a part."""
+        if len(self.entering(expression)) <= 2:
+            return Part(name, expression)
         total = self._count(expression)
         parts: list[Part] = []
         reduced = self._visit(expression, total, parts, root=True)

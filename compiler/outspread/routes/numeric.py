@@ -110,18 +110,36 @@ def tabulate(
     planes = [piece for piece in result.pieces if isinstance(piece.measure, PlaneMeasure)]
     if planes or not density:
         low, high = result.law.support()
-        marks = {value for piece in planes for value in _landmarks(piece) if low < value < high}
+        marks = {value for piece in result.pieces for value in _landmarks(piece) if low < value < high}
         inherited = sum(laws[name].relative_error for name in laws)
         least = max(least, *(min(10 * laws[name].floor, 1e-35) for name in laws))
         result.law.tabulate(sorted(marks) if len(marks) <= 2 * MOST else (), density, inherited, least)
 
 
 def _landmarks(piece: Piece) -> tuple[float, ...]:
-    assert isinstance(piece.measure, PlaneMeasure)
+    if isinstance(piece.measure, LineMeasure):
+        return tuple(_end_values(piece))
+    if piece.measure is None:
+        return ()
     axes = piece.measure.axes
     grids = {name: axis.grid for name, axis in axes.items()}
     marks = {name: np.array(axis.breaks, float) for name, axis in axes.items()}
     return landmarks(piece.problem.expression, piece.problem.laws, grids, marks, piece.combos)
+
+
+def _end_values(piece: Piece) -> list[float]:
+    """Values at the ends and breaks of the continuous input, for the combinations that are most likely."""
+    assert isinstance(piece.measure, LineMeasure)
+    name = piece.measure.name
+    law = piece.problem.laws[name]
+    points = np.array([p for p in (*law.support(), *law.breaks()) if np.isfinite(p)])
+    likely = np.argsort(-piece.combos.weights, kind="stable")[: MOST // max(points.size, 1)]
+    arguments = names(piece.problem.expression)
+    columns = {key: np.repeat(value[likely], points.size) for key, value in piece.combos.values.items()}
+    columns[name] = np.tile(points, likely.size)
+    with np.errstate(all="ignore"):
+        values = compile_numpy(piece.problem.expression, arguments)(*(columns[key] for key in arguments))
+    return [float(value) for value in np.ravel(np.asarray(values, float)) if np.isfinite(value)]
 
 
 def _turning_values(piece: Piece) -> list[float]:

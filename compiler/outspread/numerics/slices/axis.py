@@ -43,8 +43,9 @@ class Axis:
         low, high = law.support()
         self.support = (low, high)
         lower, upper, middle, spread = _quantiles(law)
-        kept = np.array(_TAILS) >= least
-        lower, upper = lower[kept], upper[kept]
+        tails = np.array(_TAILS)
+        first = max(int(np.searchsorted(tails, least, side="right")) - 1, 0)
+        lower, upper = lower[first:], upper[first:]
         self.start = low if np.isfinite(low) else float(lower[0])
         self.end = high if np.isfinite(high) else float(upper[0])
         points = np.concatenate(
@@ -66,7 +67,8 @@ class Axis:
         if not (wide or self.by_logarithm):
             self.grid = np.unique(np.concatenate([self.grid, steps]))
         #: probability beyond the ends of the grid, too small to matter or where the density underflows
-        self.outside = float(np.array(_TAILS)[kept][0]) * (np.isinf(low) + np.isinf(high)) if least else 0.0
+        cut = np.isinf(low) + np.isinf(high) + self.by_logarithm
+        self.outside = float(tails[first]) * cut if first else 0.0
         if self.by_logarithm or self.by_sinh:
             self._limit()
         self.frame = Frame(name, self.grid)

@@ -28,7 +28,7 @@ _MANY = 300  # problems from which on the quick way is taken
 _AUDIT = 48
 _SMALLEST = 4e-15
 _DEPTH = 64
-_MOST_BOXES = 1_000_000  # undecided at once: beyond this the formula has no end of boundaries
+_MOST_BOXES = 200_000  # undecided at once: beyond this the formula has no end of boundaries
 
 
 class TooManyBoundaries(DerivationError):

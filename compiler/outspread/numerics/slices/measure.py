@@ -69,8 +69,8 @@ class PlaneMeasure:
         self._slopes = {name: compiled(derivative(problem.expression, name)) for name in (outer, inner)}
         self._relative_error = laws[outer].relative_error + laws[inner].relative_error + 1e-14
         self._floor = laws[outer].floor + laws[inner].floor
-        # the law of an earlier step has lost some last places of its own
-        self._rounding = ROUNDING * (1 + sum(laws[name].floor > 0 for name in (outer, inner)))
+        # the law of an earlier step has lost some last places of its argument
+        self._rounding = ROUNDING * (1 + 8 * sum(laws[name].floor > 0 for name in (outer, inner)))
 
     def exact(self, event: Node) -> bool:
         return self._solver(event, self.inner).exact
@@ -180,7 +180,7 @@ class PlaneMeasure:
         probability, which bounds what they add, is nothing beside the rest."""
         options: dict[str, Any] = {
             "components": 2, "relative": self.relative, "absolute": max(1e-300, self._least * 1e-3),
-            "control": 1, "noise": 1, "share": 200 if self._least else 2_500,
+            "control": 1, "noise": 1, "share": 200 if self._least or self._floor else 2_500,
         }  # fmt: skip
         mass = self._mass(lower, upper)
         light = mass < _LIGHT
