@@ -41,11 +41,9 @@ def test_there_are_six() -> None:
 
 
 #: The winch samples, for minutes.
-LONG = [pytest.mark.slow, pytest.mark.long]
-SLOW = [pytest.param(name, marks=LONG if "winch" in name else []) for name in NAMES]
 
 
-@pytest.mark.parametrize("name", SLOW)
+@pytest.mark.parametrize("name", NAMES)
 def test_results_follow_from_the_model(name: str, tmp_path: Path) -> None:
     """Deriving the model again gives the committed results, byte for byte, and the expected exit status."""
     shutil.copy(MODELS / f"{name}.yaml", tmp_path)
