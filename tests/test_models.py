@@ -40,9 +40,6 @@ def test_there_are_six() -> None:
     assert {path.name for path in MODELS.glob("*.results.json")} == {f"{name}.results.json" for name in NAMES}
 
 
-#: The winch samples, for minutes.
-
-
 @pytest.mark.parametrize("name", NAMES)
 def test_results_follow_from_the_model(name: str, tmp_path: Path) -> None:
     """Deriving the model again gives the committed results, byte for byte, and the expected exit status."""

@@ -107,6 +107,7 @@ class Tabulated:
             shares, sizes = function.firm.T
             body = float(np.max(shares[function.peaks > 1e-3], initial=0.0))
             poor = (shares > _POORER * body) | (function.peaks < self._fading)
+            poor &= function.peaks > 0  # where all is 0, what lies nearer to the middle bounds it
             relative = max(relative, float(np.max(shares[~poor], initial=0.0)))
             absolute = max(absolute, float(np.max(sizes[poor], initial=0.0)))
         return relative + self._inherited, absolute + self._fading

@@ -22,6 +22,7 @@ ROUTES = {
     "region_integral": "integral over a region",
     "jacobian": "inverse map and Jacobian",
     "enumeration": "enumeration of the points",
+    "conditioning": "integration over an input that is given",
     "sampling": "randomised quasi-Monte Carlo sampling",
 }
 _COUNTS = ("no", "one", "two", "three", "four", "five", "six", "seven", "eight", "nine", "ten")

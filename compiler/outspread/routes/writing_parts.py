@@ -55,8 +55,9 @@ def by_parts(
         return finished(output, named, statements)
     last = replace(output, expression=step.expression or output.expression)
     assert found.last is not None
-    more_statements, _ = numeric(last, step, found.laws, named, found.last)
-    return (*finished(output, named, statements), *more_statements)
+    (again, *rest), _ = numeric(last, step, found.laws, named, found.last)
+    again = replace(again, text="In the parts whose laws are now known the result reads:")
+    return (*finished(output, named, statements), again, *rest)
 
 
 def _steps_below(step: PlanStep) -> list[PlanStep]:

@@ -51,7 +51,9 @@ class LineMeasure:
             shift = ROUNDING * (np.abs(environment[PARAMETER])[edge.problem] * edge.rate + np.abs(edge.x))
             density = self.inner.pdf(edge.x, None)
             slip = np.where(density == 0, 0.0, density * shift)
-            slip = np.where(np.isfinite(slip), slip, np.sqrt(ROUNDING))
+            # with no probability on one side there is none to be moved
+            unknown = np.where(value[edge.problem] > 0, np.sqrt(ROUNDING), 0.0)
+            slip = np.where(np.isfinite(slip), slip, unknown)
         lost = np.bincount(edge.problem, slip, value.size)
         error = self._relative * value + lost + self.problem.laws[self.name].floor
         return Estimates(value.reshape(shape), error.reshape(shape))

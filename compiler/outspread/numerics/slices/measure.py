@@ -33,6 +33,7 @@ from outspread.numerics.slices.problem import Problem, combinations
 from outspread.numerics.slices.solve import PARAMETER, Solver
 
 Index = npt.NDArray[np.int64]
+_STEPPED = 1e-10  # relative; the density of a part is a slope with tiny steps between its panels
 _THINNED = 4
 _LIGHT = 1e-14  # probability of a panel of the outer input that may turn out not to matter
 _PASSED = 1e-15  # share of the result up to which it does not
@@ -267,8 +268,9 @@ class PlaneMeasure:
             return np.stack(sums) * axis.weight(x)
 
         result = integrate(
-            integrand, lower, upper, owner, count, components=2, control=1, relative=self.relative,
-            absolute=1e-300, noise=1,
+            integrand, lower, upper, owner, count, components=2, control=1, absolute=1e-300, noise=1,
+            relative=max(self.relative, _STEPPED) if self._floor else self.relative,
+            share=100 if self._floor else 2_500,
         )  # fmt: skip
         self.effort.evaluations += result.evaluations
         return Estimates(result.value[0], result.error[0] + result.value[1])
