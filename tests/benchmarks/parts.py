@@ -16,6 +16,7 @@ from scipy import integrate, stats
 
 from outspread.formula.parser import parse
 from outspread.laws.build import build_law
+from outspread.laws.derived import DerivedLaw
 from outspread.laws.law import Law
 from outspread.planning.tree import TreePlanner
 from outspread.reading.model import Distribution
@@ -92,7 +93,8 @@ def main() -> None:
         step = TreePlanner(case.laws, None, lambda *_: None).plan("y", parse(case.formula))
         assert step is not None
         found = TreeDeriver(case.laws, None, recognise_with_scores).derive(step).law
-        estimate = found.estimate("cdf", np.array([case.at]))  # type: ignore[attr-defined]
+        assert isinstance(found, DerivedLaw)
+        estimate = found.estimate("cdf", np.array([case.at]))
         row(case, "parts", estimate.value[0], estimate.error[0], start)
         start = time.perf_counter()
         share = float((case.draw(np.random.default_rng(7)) <= case.at).mean())
