@@ -16,6 +16,7 @@ from outspread.laws.law import Array, Estimates
 from outspread.numerics.panels import LEAST, PanelFunction, expand, panels_over
 
 _POORER = 10.0  # than in the body
+_AFAR = 1e-40  # tail probability beyond which values are asked of the route, one by one
 FADING = 1e-100  # probabilities below this are kept, but not promised to be exact relative to themselves
 
 Evaluate = Callable[[str, Array], Estimates]
@@ -45,12 +46,16 @@ class Tabulated:
         # the middle is no knot: no panel may be graded towards it
         below = panels_over([k for k in knots if k < centre], low, centre, centre, scale, (True, False))
         above = panels_over([k for k in knots if k > centre], centre, high, centre, scale, (False, True))
-        self._below = expand(lambda y: self._own("cdf", y), below, relative, None, least)
-        self._above = expand(lambda y: self._own("ccdf", y), above, relative, None, least)
-        start = [*self._below.panels, *self._above.panels]
+        afar = _AFAR if density else 0.0  # a next step asks for more values there than panels cost
+        self._below = expand(lambda y: self._own("cdf", y), below, relative, None, least, afar)
+        self._above = expand(lambda y: self._own("ccdf", y), above, relative, None, least, afar)
         self._density: PanelFunction | None = None
         if density:
-            self._density = expand(lambda y: self._own("pdf", y), start, relative, self._room, least)
+            (low_start, low_out), (high_start, high_out) = self._below.parted(), self._above.parted()
+            self._density = expand(
+                lambda y: self._own("pdf", y), [*low_start, *high_start], relative, self._room, least,
+                left_out=[*low_out, *high_out],
+            )  # fmt: skip
 
     def _own(self, kind: str, y: Array) -> Estimates:
         """Values with the error of their own computation alone: what is inherited is no noise."""
@@ -79,17 +84,30 @@ class Tabulated:
 
     def _kept(self, kind: str, y: Array) -> Estimates:
         if kind == "pdf":
-            return self._slope(y) if self._density is None else self._at_knots(self._density(y), y)
+            if self._density is None:
+                return self._slope(y)
+            return self._asked("pdf", y, self._density.afar(y), self._at_knots(self._density(y), y))
         own, other = (self._below, self._above) if kind == "cdf" else (self._above, self._below)
         near = y <= self._centre if kind == "cdf" else y >= self._centre
         value, error = np.empty(y.size), np.empty(y.size)
         for part, function in ((near, own), (~near, other)):
             if part.any():
                 found = function(y[part])
+                which = kind if function is own else "ccdf" if kind == "cdf" else "cdf"
+                found = self._asked(which, y[part], function.afar(y[part]), found)
                 value[part], error[part] = found.value, found.error
         value[~near] = self._mass - value[~near]
         error[~near] += 2.3e-16 * self._mass
         return Estimates(value, error)
+
+    def _asked(
+        self, kind: str, y: Array, where: npt.NDArray[np.bool_], found: Estimates
+    ) -> Estimates:
+        """The values found, with those at `where` from the route itself."""
+        if where.any():
+            exact = self._own(kind, y[where])
+            found.value[where], found.error[where] = exact.value, exact.error
+        return found
 
     def _at_knots(self, found: Estimates, y: Array) -> Estimates:
         """A density may jump or have a pole at a knot, which a series beside it cannot say."""

@@ -29,7 +29,7 @@ SIZE = 20  # nodes, and coefficients, of a panel
 LEAST = 1e-290  # below this a value is taken for 0, and stated to be off by as much
 _FADED = 1e5  # a panel that ends below the least and stays below so many times that counts as 0 throughout
 _LEBESGUE = 2.9  # of 20 Chebyshev points: 2/pi log(20) + 0.97
-_FLAT, _LOG, _ZERO = 0, 1, 2
+_FLAT, _LOG, _ZERO, _AFAR = 0, 1, 2, 3
 _DIFFERENTIATED = 620.0  # a quarter of the sum of k^2 below SIZE: the tail sums four coefficients
 _KNOWN = 0.3  # relative error of values whose logarithm says something
 _SLACK = 30.0  # units in the last place by which rounding may have moved the argument of a firm value
@@ -170,9 +170,22 @@ class PanelFunction:
         form = self.forms[index]
         with np.errstate(over="ignore"):
             value = np.where(form == _LOG, np.exp(np.where(form == _LOG, value, 0.0)), value)
-        value = np.where((form == _ZERO) | ~inside, 0.0, np.maximum(value, 0.0))
+        value = np.where((form >= _ZERO) | ~inside, 0.0, np.maximum(value, 0.0))
         error = np.where(inside, self.absolute[index] + self.relative[index] * value, 0.0)
         return Estimates(value, error)
+
+    def afar(self, y: Array) -> npt.NDArray[np.bool_]:
+        """Whether y lies in a panel that was left out as too far from all that matters."""
+        if not self.lower.size:
+            return np.zeros(y.size, bool)
+        index = self._panel(y)
+        inside = (y >= self.lower[index]) & (y <= self.upper[index])
+        return np.asarray(inside & (self.forms[index] == _AFAR), bool)
+
+    def parted(self) -> tuple[list[Panel], list[Panel]]:
+        """The panels that were expanded, and those left out."""
+        kept = [panel for panel, form in zip(self.panels, self.forms, strict=True) if form != _AFAR]
+        return kept, [panel for panel, form in zip(self.panels, self.forms, strict=True) if form == _AFAR]
 
     def slope(self, y: Array) -> Estimates:
         """The derivative, from that of the series. Its error is judged by the noise that the series' own last
@@ -187,7 +200,7 @@ class PanelFunction:
             rate, stretch = self._series_at(y, index, self._slopes), self._stretch(y, index)
             size = np.where(form == _LOG, value, 1.0) * np.abs(stretch)
             slope = np.where(form == _LOG, value * rate, rate) * stretch
-        live = inside & (form != _ZERO) & np.isfinite(slope)
+        live = inside & (form < _ZERO) & np.isfinite(slope)
         error = np.where(live, _DIFFERENTIATED * self.tails[index] * size, 0.0)
         return Estimates(np.where(live, slope, 0.0), np.where(np.isfinite(error), error, np.inf))
 
@@ -223,13 +236,16 @@ def expand(
     relative: float = 1e-13,
     enough: Callable[[Array], Array] | None = None,
     least: float = LEAST,
+    afar: float = 0.0,
+    left_out: Sequence[Panel] = (),
 ) -> PanelFunction:
     """The function on panels that start as given and are halved until each series holds.
 
     `evaluate` takes flat points and answers with values >= 0 and bounds on their errors. A series holds where
     its tail falls below `relative` of the function or below the function's own error; where `enough` is
     given, also where its tail times the width falls below `enough(middle)`. What never holds keeps its error.
-    Values below `least` are taken for 0.
+    Values below `least` are taken for 0. Panels on which no value reaches `afar`, and those `left_out`, are
+    not expanded: `PanelFunction.afar` tells where values must come from elsewhere.
     """
     pending = list(panels)
     done: list[Panel] = []
@@ -255,10 +271,11 @@ def expand(
             holds = bool(tail <= relative * size + noise)
             # the error of the worst node is stated for the whole panel: it may not differ much between them
             even = noise <= 10 * max(expansion.best[i], relative * size) or expansion.best[i] > 0.1 * size
+            remote = float(values[i].max()) < afar
             closed = holds and (even or float(values[i].max()) < _NARROW * float(values[i].min()))
             if not holds:
                 closed = _missed(expansion, i) * (panel.upper - panel.lower) <= room[i]
-            parts = [] if closed or full else _halves(panel)
+            parts = [] if closed or full or remote else _halves(panel)
             if parts:
                 following += parts
                 continue
@@ -272,16 +289,18 @@ def expand(
             slack = _SLACK * expansion.moved[i] * (values[i] if is_log else 1.0)
             missed = max(float(rough) - _SLACK * float(expansion.moved[i].max()) * is_log, 0.0)
             firm.append(_firm(values[i], np.maximum(own - slack, 0.0), missed, is_log))
-            forms.append(int(expansion.forms[i]))
+            forms.append(_AFAR if remote else int(expansion.forms[i]))
             # a series that does not decay is no interpolant to trust between its nodes
             doubt = _LEBESGUE * noise + (2 * tail if holds else min(3 * expansion.rough[i], 2 * size))
             relatives.append(float(doubt) + 1e-15 if is_log else 1e-15)
             absolutes.append(least if is_log else float(doubt) + _FADED * least)
         pending = following
+    more = len(left_out)
     return PanelFunction(
-        done, np.array(series).reshape(-1, SIZE), np.array(forms, np.int64), np.array(relatives),
-        np.array(absolutes), np.array(tails), np.array(peaks),
-        np.array(firm).reshape(-1, 2),
+        [*done, *left_out], np.array(series + [np.zeros(SIZE)] * more).reshape(-1, SIZE),
+        np.array(forms + [_AFAR] * more, np.int64),
+        *(np.array(column + [0.0] * more) for column in (relatives, absolutes, tails, peaks)),
+        np.array(firm + [(0.0, 0.0)] * more).reshape(-1, 2),
     )  # fmt: skip
 
 
