@@ -11,7 +11,19 @@ from itertools import combinations
 
 from outspread.formula.folding import depends, fold
 from outspread.formula.linear import postorder
-from outspread.formula.tree import COMPARISONS, Apply, Name, Node, Number, add, multiply, subtract
+from outspread.formula.tree import (
+    COMPARISONS,
+    Apply,
+    Name,
+    Node,
+    Number,
+    add,
+    multiply,
+    names,
+    occurrences,
+    subtract,
+    walk,
+)
 
 _ZERO, _ONE, _TWO = Number(0.0), Number(1.0), Number(2.0)
 _PI = Number(math.pi, "pi")
@@ -206,6 +218,41 @@ def nonsmooth(node: Node, name: str) -> tuple[Node, ...]:
                 if depends(simple, name):
                     found.setdefault(simple)
     return tuple(found)
+
+
+def one_piece(node: Node) -> bool:
+    """Whether the formula is surely one analytic function all over its domain: it cannot be constant in an
+    input on one part and vary on another. False where that is not plain to see."""
+    for part in walk(node):
+        if not isinstance(part, Apply):
+            continue
+        operator, arguments = part.operator, part.arguments
+        if operator in _ENTIRE:
+            continue
+        if operator == "power":
+            exponent = fold(arguments[1])
+            if isinstance(exponent, Number) and exponent.value == int(exponent.value):
+                continue
+        elif operator not in ("sqrt", "log", "log10", "decibel"):
+            return False
+        # the domain ends where the operand vanishes, unless that is a square of something
+        if not _multilinear(arguments[0]):
+            return False
+    return True
+
+
+def _multilinear(node: Node) -> bool:
+    """Whether the operand is of the first degree in each of its names."""
+    plain = all(
+        not isinstance(part, Apply) or part.operator in ("add", "multiply", "divide", "negate")
+        for part in walk(node)
+    )
+    return plain and all(occurrences(node, name) == 1 for name in names(node))
+
+
+_ENTIRE = frozenset(
+    {"add", "multiply", "divide", "negate", "exp", "sin", "cos", "tan", "sinh", "cosh", "tanh", "atan"}
+)
 
 
 def _suspects(node: Apply) -> Sequence[Node]:

@@ -12,6 +12,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.tree import Name, Node, names
@@ -29,6 +30,7 @@ from outspread.numerics.tail_index import TailIndex, tail_index
 REPLICATES = 16
 POINTS = 4096  # a replicate
 CONFIDENCE = 1 - 1e-6
+_BLOCK = 40_000  # points whose quantiles are computed at a time: they stay in the cache of the processor
 
 
 @dataclass(frozen=True)
@@ -284,11 +286,9 @@ def design(
         normal.append(independent)
         if np.count_nonzero(row) > 1:
             score = sum((row[j] * normal[j] for j in range(i + 1) if row[j] != 0), np.zeros(u.size))
-            values[name] = np.where(
-                score < 0, law.icdf(ndtr(np.minimum(score, 0))), law.iccdf(ndtr(-np.maximum(score, 0)))
-            )
+            values[name] = _quantiles(law, score < 0, ndtr(-np.abs(score)))
         else:
-            values[name] = np.where(u <= 0.5, law.icdf(np.minimum(u, 0.5)), law.iccdf(np.minimum(1 - u, 0.5)))
+            values[name] = _quantiles(law, u <= 0.5, np.minimum(u, 1 - u))
     if not inner:
         return Design(values, None, None, replicates, points)
     last = factor[-1]
@@ -298,6 +298,17 @@ def design(
         (last[j] * normal[j] for j in range(len(outer)) if last[j] != 0), np.zeros(replicates * points)
     )
     return Design(values, given, ConditionalInner(laws[inner], float(last[-1])), replicates, points)
+
+
+def _quantiles(law: Law, lower: npt.NDArray[np.bool_], tail: Array) -> Array:
+    """Quantiles of tail probabilities, counted from below where `lower`, from above elsewhere."""
+    value = np.empty(tail.size)
+    for start in range(0, tail.size, _BLOCK):
+        part = slice(start, start + _BLOCK)
+        below, level = lower[part], tail[part]
+        value[part][below] = law.icdf(level[below])
+        value[part][~below] = law.iccdf(level[~below])
+    return value
 
 
 def _uniforms(dimensions: int, seed: int, replicates: int, points: int) -> Array:

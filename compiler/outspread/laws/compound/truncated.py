@@ -103,11 +103,11 @@ class TruncatedLaw(ComputedMoments):
         after = self.base.ccdf(self.upper)
         left, right = before + below * self.mass, after + above * self.mass
         with np.errstate(all="ignore"):
-            x = np.where(
-                left < right,
-                self.base.icdf(np.clip(left, 0.0, 1.0)),
-                self.base.iccdf(np.clip(right, 0.0, 1.0)),
-            )
+            x = np.full(p.shape, NAN)
+            near = left < right
+            x[near] = self.base.icdf(np.clip(left[near], 0.0, 1.0))
+            far = right <= left
+            x[far] = self.base.iccdf(np.clip(right[far], 0.0, 1.0))
             x = np.clip(x, self.lower, self.upper)
             if self._smooth:
                 x = self._polish(x, p, upper)
@@ -117,22 +117,23 @@ class TruncatedLaw(ComputedMoments):
 
     def _polish(self, x: Array, p: Array, upper: bool) -> Array:
         """Newton's method: near a cut the base's own quantile has lost the distance to the cut."""
+        small = p <= 0.5
+        tail = np.where(small, p, 1 - p)
+        pending = np.flatnonzero(~np.isnan(x))
         for _ in range(4):
-            small = p <= 0.5
-            error = np.where(
-                small == upper,
-                np.where(small, p, 1 - p) - self.ccdf(x),
-                self.cdf(x) - np.where(small, p, 1 - p),
-            )
-            step = error / self.pdf(x)
-            tail = np.where(small, p, 1 - p)
+            at, goal = x[pending], tail[pending]
+            error = np.empty(pending.size)
+            from_above = small[pending] == upper
+            error[from_above] = goal[from_above] - self.ccdf(at[from_above])
+            error[~from_above] = self.cdf(at[~from_above]) - goal[~from_above]
+            new = at - error / self.pdf(at)
             # only where the tail is far from its goal, and the step stays inside
-            new = x - step
             use = np.isfinite(new) & (new >= self.lower) & (new <= self.upper)
-            use &= np.abs(error) > 2 * self.relative_error * tail
+            use &= np.abs(error) > 2 * self.relative_error * goal
             if not np.any(use):
                 break
-            x = np.where(use, new, x)
+            pending = pending[use]
+            x[pending] = new[use]
         return x
 
     def between(self, lower: npt.ArrayLike, upper: npt.ArrayLike) -> Array:

@@ -28,8 +28,12 @@ def normal_cdf(z: Array) -> Array:
     """P(Z <= z), relative to itself for every z (scaled complementary error function in the left tail)."""
     from scipy import special
 
-    left = 0.5 * exp_minus_half_square(z) * special.erfcx(np.maximum(-z, 0.0) / ROOT_TWO)
-    return np.asarray(np.where(z < 0, left, special.ndtr(z)))
+    z = np.asarray(z, float)
+    value = np.asarray(special.ndtr(z))
+    left = z < 0
+    below = z[left]
+    value[left] = 0.5 * exp_minus_half_square(below) * special.erfcx(-below / ROOT_TWO)
+    return value
 
 
 def normal_ccdf(z: Array) -> Array:

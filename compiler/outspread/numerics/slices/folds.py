@@ -8,6 +8,7 @@ regions of a level set can be small.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
+from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
@@ -18,30 +19,47 @@ from outspread.formula.tree import Node, names
 from outspread.numerics.sets import Array, Sets
 
 Index = npt.NDArray[np.int64]
-_BISECTIONS = 22
+_BISECTIONS = 50
+_NEAR = 10.0  # lengths of a panel: a root further away looks smooth from there
 _STARTS = 13
 _NEWTON = 30
 _MOST = 24
 _MOST_KINKS = 8
 
 
+@dataclass(frozen=True)
+class CutPanels:
+    """Panels of the outer coordinate; `origins` as `numerics.quadrature.integrate` takes them."""
+
+    lower: Array
+    upper: Array
+    owner: Index
+    origins: Array
+
+    def part(self, which: npt.NDArray[np.bool_]) -> CutPanels:
+        return CutPanels(self.lower[which], self.upper[which], self.owner[which], self.origins[which])
+
+
 def structure_cuts(
     slices: Callable[[Array, Index], Sets], low: float, high: float, panels: tuple[Array, Array, Index]
-) -> tuple[Array, Array, Index]:
+) -> CutPanels:
     """The panels, cut around every change in the number of intervals that a slice has within [low, high].
 
     `slices(t, owner)` gives the slice at outer coordinates t. Each change found between the ends and the
-    middle of a panel is bracketed to a millionth of the panel; the bracket is a panel of its own.
+    middle of a panel is bracketed to the last places of the panel's length; the bracket is a panel of its
+    own. Panels near a change have it for an origin: at a fold a slice shrinks like a square root.
     """
     lower, upper, owner = panels
     if not lower.size:
-        return panels
+        return CutPanels(lower, upper, owner, lower)
     inside = 1e-9 * (upper - lower)
     points = np.stack([lower + inside, 0.5 * (lower + upper), upper - inside])
     kinds = signature(slices(points.ravel(), np.tile(owner, 3)), low, high).reshape(3, -1)
-    left: list[Array] = []
-    right: list[Array] = []
-    who: list[Index] = []
+    # the structure may change just between two panels, too
+    differs = (owner[1:] == owner[:-1]) & (upper[:-1] == lower[1:]) & (kinds[2, :-1] != kinds[0, 1:])
+    after, before = np.append(False, differs), np.append(differs, False)
+    starts, who = [lower], [np.arange(lower.size)]
+    opens, closes = [np.append(False, differs)], [np.append(differs, False)]
     for first, second in ((0, 1), (1, 2)):
         changed = np.flatnonzero(kinds[first] != kinds[second])
         if changed.size:
@@ -49,22 +67,41 @@ def structure_cuts(
                 slices, low, high, points[first, changed], points[second, changed], owner[changed],
                 kinds[first, changed],
             )  # fmt: skip
-            left.append(a)
-            right.append(b)
-            who.append(changed)
-    if not left:
-        return panels
-    cuts = np.concatenate([*left, *right])
-    panel = np.concatenate([*who, *who])
-    starts, ends = np.concatenate([lower, cuts]), np.concatenate([upper, cuts])
-    every = np.concatenate([np.arange(lower.size), panel])
-    order = np.lexsort((starts, every))
-    starts, every = starts[order], every[order]
-    following = np.append(starts[1:], np.inf)
-    same = np.append(every[1:] == every[:-1], False)
-    ends = np.where(same, following, upper[every])
-    keep = ends > starts
-    return starts[keep], ends[keep], owner[every[keep]]
+            starts += [a, b]
+            who += [changed, changed]
+            opens += [np.zeros(changed.size, bool), np.ones(changed.size, bool)]
+            closes += [np.zeros(changed.size, bool)] * 2
+    start, panel = np.concatenate(starts), np.concatenate(who)
+    opened, closing = np.concatenate(opens), np.concatenate(closes)
+    order = np.lexsort((opened, start, panel))
+    start, panel, opened = start[order], panel[order], opened[order]
+    last = np.append(panel[1:] != panel[:-1], True)
+    end = np.where(last, upper[panel], np.append(start[1:], np.inf))
+    # the bracket's own panel lies between one that closes before it and one that opens behind it
+    cut = np.append(opened[1:] & ~last[:-1], False)
+    closed = np.where(last, closing[panel], np.append(cut[1:], False) & ~cut)
+    found = CutPanels(start, end, owner[panel], _nearest(start, end, owner[panel], opened & ~cut, closed))
+    return found.part(found.upper > found.lower)
+
+
+def _nearest(
+    lower: Array,
+    upper: Array,
+    owner: Index,
+    opened: npt.NDArray[np.bool_],
+    closed: npt.NDArray[np.bool_],
+) -> Array:
+    """For each of the ordered panels the nearest change of structure of its owner, NaN where that is far."""
+    rows = np.arange(lower.size)
+    before = np.maximum.accumulate(np.where(opened, rows, -1))
+    after = np.minimum.accumulate(np.where(closed, rows, lower.size)[::-1])[::-1]
+    known = [(before >= 0), (after < lower.size)]
+    before, after = np.maximum(before, 0), np.minimum(after, lower.size - 1)
+    known = [known[0] & (owner[before] == owner), known[1] & (owner[after] == owner)]
+    below = np.where(known[0], lower - lower[before], np.inf)
+    above = np.where(known[1], upper[after] - upper, np.inf)
+    origin = np.where(below <= above, lower[before], upper[after])
+    return np.where(np.minimum(below, above) <= _NEAR * (upper - lower), origin, np.nan)
 
 
 def signature(where: Sets, low: float, high: float) -> Index:

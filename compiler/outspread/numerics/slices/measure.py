@@ -13,7 +13,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from outspread.formula.calculus import derivative, nonsmooth
+from outspread.formula.calculus import derivative, nonsmooth, one_piece
 from outspread.formula.tree import Apply, Name, Node, names, walk
 from outspread.laws.law import Array, Estimates
 from outspread.numerics.quadrature import NODES, Integrals, integrate, panels_between
@@ -21,8 +21,9 @@ from outspread.numerics.sets import Sets
 from outspread.numerics.slices import cases
 from outspread.numerics.slices.axis import Axis
 from outspread.numerics.slices.common import ROUNDING, Effort, compiled, environment_of, over_blocks
-from outspread.numerics.slices.folds import corners, critical_points, structure_cuts
+from outspread.numerics.slices.folds import CutPanels, corners, critical_points, structure_cuts
 from outspread.numerics.slices.inner import (
+    Boundary,
     ConditionalInner,
     IndependentInner,
     Inner,
@@ -33,6 +34,7 @@ from outspread.numerics.slices.problem import Problem, combinations
 from outspread.numerics.slices.solve import PARAMETER, Solver
 
 Index = npt.NDArray[np.int64]
+_SETTLED = 3e-12  # relative error of a density by one integral up to which the other way is not gone
 _STEPPED = 1e-10  # relative; the density of a part is a slope with tiny steps between its panels
 _THINNED = 4
 _LIGHT = 1e-14  # probability of a panel of the outer input that may turn out not to matter
@@ -68,6 +70,10 @@ class PlaneMeasure:
         self._coarse = {name: self.axes[name].coarse() for name in (outer, inner)}
         self._solvers: dict[tuple[Node, str], Solver] = {}
         self._slopes = {name: compiled(derivative(problem.expression, name)) for name in (outer, inner)}
+        self._bends: dict[str, Callable[[Mapping[str, Array], int], Array]] = {}
+        # whether densities are tried by one integral: a level curve with parts along which the inner input
+        # alone varies is not seen by it
+        self._alone = one_piece(problem.expression)
         self._relative_error = laws[outer].relative_error + laws[inner].relative_error + 1e-14
         self._floor = laws[outer].floor + laws[inner].floor
         # the law of an earlier step has lost some last places of its argument
@@ -125,7 +131,7 @@ class PlaneMeasure:
         environment = environment_of(y, self.combos)
         axis, inner, name = self.axes[self.outer], self.laws[self.inner], self.inner
         solver = self._solver(event, name)
-        lower, upper, owner = self._panels(event, environment, count, self.outer, self.inner)
+        panels = self._panels(event, environment, count, self.outer, self.inner)
 
         def integrand(t: Array, who: Index) -> Array:
             x = axis.to_x(t)
@@ -137,7 +143,7 @@ class PlaneMeasure:
             slip = self._thinned_slip if self._least else self._slip
             return np.stack([probability(where, inner, given), slip(where, local, given)]) * weight
 
-        result = self._integrated(integrand, lower, upper, owner, count)
+        result = self._integrated(integrand, panels, count)
         self.effort.evaluations += result.evaluations
         shape = (y.size, self.combos.count)
         lost = np.abs(result.value[1])
@@ -175,7 +181,7 @@ class PlaneMeasure:
         return np.asarray(few.reshape(nodes.shape)[:, nearest].ravel(), float)
 
     def _integrated(
-        self, integrand: Callable[[Array, Index], Array], lower: Array, upper: Array, owner: Index, count: int
+        self, integrand: Callable[[Array, Index], Array], panels: CutPanels, count: int
     ) -> Integrals:
         """The integral over the panels. Panels in the tails of the outer input are passed over where their
         probability, which bounds what they add, is nothing beside the rest."""
@@ -183,19 +189,26 @@ class PlaneMeasure:
             "components": 2, "relative": self.relative, "absolute": max(1e-300, self._least * 1e-3),
             "control": 1, "noise": 1, "share": 200 if self._least or self._floor else 2_500,
         }  # fmt: skip
-        mass = self._mass(lower, upper)
+
+        def integral(part: CutPanels) -> Integrals:
+            return integrate(
+                integrand, part.lower, part.upper, part.owner, count, origins=part.origins, **options
+            )
+
+        mass = self._mass(panels.lower, panels.upper)
         light = mass < _LIGHT
-        heavy = integrate(integrand, lower[~light], upper[~light], owner[~light], count, **options)
-        passed = np.bincount(owner[light], mass[light], count)
+        heavy = integral(panels.part(~light))
+        passed = np.bincount(panels.owner[light], mass[light], count)
         needed = passed > _PASSED * heavy.value[0]
-        more = light & needed[owner]
-        rest = integrate(integrand, lower[more], upper[more], owner[more], count, **options)
+        rest = integral(panels.part(light & needed[panels.owner]))
         value, error = heavy.value + rest.value, heavy.error + rest.error
         error[0] += np.where(needed, 0.0, passed)
         return Integrals(value, error, heavy.evaluations + rest.evaluations)
 
     def _mass(self, lower: Array, upper: Array) -> Array:
         """Probability of the outer input's panels; each end is looked up once."""
+        if self.axes[self.outer].by_probability:  # the two ends of the law meet at t = 0
+            return np.asarray(upper - lower, float)
         ends, place = np.unique(np.concatenate([lower, upper]), return_inverse=True)
         axis = self.axes[self.outer]
         law, x = self.problem.laws[self.outer], axis.to_x(ends)
@@ -216,27 +229,48 @@ class PlaneMeasure:
     def rate(self, event: Node, y: Array) -> Estimates:
         """d/dy P(event), as two integrals along the level curve: over one input where the curve is steep in
         the other, and the other way round, joined by a smooth partition of unity. Neither has the poles at
-        turning points and ends that a single integral has."""
+        turning points and ends that a single integral has, which is tried first: it is often smooth."""
         return over_blocks(self._rate, event, y, max(1, 1_000 // self.combos.count))
 
     def _rate(self, event: Node, y: Array) -> Estimates:
-        one = self._chart(event, y, self.outer, self.inner)
-        two = self._chart(event, y, self.inner, self.outer)
-        value, error = one.value + two.value, one.error + two.error
         weights = self.combos.weights
+        value, error = self._density(event, y)
+        error += self._relative_error * value
         shape = (y.size, self.combos.count)
-        return Estimates(
-            value.reshape(shape) @ weights, (error + self._relative_error * value).reshape(shape) @ weights
-        )
+        return Estimates(value.reshape(shape) @ weights, error.reshape(shape) @ weights)
 
-    def _chart(self, event: Node, y: Array, outer: str, inner: str) -> Estimates:
-        count = y.size * self.combos.count
-        environment = environment_of(y, self.combos)
-        axis, other, law = self.axes[outer], self.axes[inner], self.laws[inner]
-        solver = self._solver(event, inner)
-        slope, along = self._slopes[outer], self._slopes[inner]
-        ends = self.problem.laws[inner].support()
-        lower, upper, owner = self._panels(event, environment, count, outer, inner)
+    def _density(self, event: Node, y: Array) -> tuple[Array, Array]:
+        """d/dy P(event | combination): by one integral where that settles it, else by the two."""
+        environment, count = environment_of(y, self.combos), y.size * self.combos.count
+        value, error = np.zeros(count), np.full(count, np.inf)
+        if self._alone:
+            one = self._chart(event, environment, count, self.outer, self.inner, True)
+            value, error = one.value, one.error
+        open_ = np.flatnonzero(~(error <= _SETTLED * value))
+        self._alone &= open_.size <= 0.5 * count
+        if open_.size:
+            part = {key: column[open_] for key, column in environment.items()}
+            charts = [
+                self._chart(event, part, open_.size, *pair, False)
+                for pair in ((self.outer, self.inner), (self.inner, self.outer))
+            ]
+            value[open_] = charts[0].value + charts[1].value
+            error[open_] = charts[0].error + charts[1].error
+        return value, error
+
+    def _chart(
+        self,
+        event: Node,
+        environment: Mapping[str, Array],
+        count: int,
+        outer: str,
+        inner: str,
+        alone: bool,
+    ) -> Estimates:
+        """The integral of the density along the level curve over one input; unless `alone`, of the share of
+        it that falls to this input."""
+        axis, law, solver = self.axes[outer], self.laws[inner], self._solver(event, inner)
+        panels = self._panels(event, environment, count, outer, inner)
 
         def integrand(t: Array, who: Index) -> Array:
             x = axis.to_x(t)
@@ -247,37 +281,61 @@ class PlaneMeasure:
             local[inner] = edge.x
             given = self.correlation * axis.scores(local[outer]) if self.correlation else None
             with np.errstate(all="ignore"):
-                across = slope(local, edge.x.size)
-                # the two slopes lose the same digits at one point: their ratio, unlike slope times rate,
-                # is the same from both charts, so that the shares add up to 1
-                ratio = across / along(local, edge.x.size)
-                told = np.isfinite(ratio)
-                ratio = np.where(told, ratio, across * edge.rate)
-                share = (ratio * axis.length(local[outer]) / other.length(edge.x)) ** 2
                 whole = law.pdf(edge.x, given) * edge.rate
-                density = whole / (1 + share)
-                # close to an end of the law, rounding moves the point by a share of its distance to it
-                shift = ROUNDING * (np.abs(local[PARAMETER]) * edge.rate + np.abs(edge.x))
-                near = np.minimum(np.abs(edge.x - ends[0]), np.abs(edge.x - ends[1]))
-                blurred = density * np.minimum(4 * shift / near, 1.0)
-            density = np.where(np.isfinite(density), density, 0.0)
-            # where the slopes cannot be told apart any more, all of the density is in doubt
-            lost = np.where(~told & np.isfinite(whole), whole, 0.0)
+                if alone:
+                    density, lost = whole, self._bent(whole, local, edge, inner)
+                else:
+                    density, lost = self._shared(whole, local, edge, outer, inner)
+                blurred = self._blurred(density, local, edge, inner)
             lost += np.where(np.isfinite(blurred), blurred, 0.0)
+            density = np.where(np.isfinite(density), density, 0.0)
             sums = [np.bincount(edge.problem, part, x.size) for part in (density, lost)]
             return np.stack(sums) * axis.weight(x)
 
+        share = 100 if alone or self._floor else 2_500
         result = integrate(
-            integrand, lower, upper, owner, count, components=2, control=1, absolute=1e-300, noise=1,
+            integrand, panels.lower, panels.upper, panels.owner, count, origins=panels.origins, components=2,
+            control=1, absolute=1e-300, noise=1, share=share, rounds=6 if alone else 130,
             relative=max(self.relative, _STEPPED) if self._floor else self.relative,
-            share=100 if self._floor else 2_500,
         )  # fmt: skip
         self.effort.evaluations += result.evaluations
         return Estimates(result.value[0], result.error[0] + result.value[1])
 
+    def _shared(
+        self, whole: Array, local: Mapping[str, Array], edge: Boundary, outer: str, inner: str
+    ) -> tuple[Array, Array]:
+        """The part of the density that falls to this chart, and what is in doubt."""
+        across = self._slopes[outer](local, edge.x.size)
+        # the two slopes lose the same digits at one point: their ratio, unlike slope times rate,
+        # is the same from both charts, so that the shares add up to 1
+        ratio = across / self._slopes[inner](local, edge.x.size)
+        told = np.isfinite(ratio)
+        ratio = np.where(told, ratio, across * edge.rate)
+        share = (ratio * self.axes[outer].length(local[outer]) / self.axes[inner].length(edge.x)) ** 2
+        # where the slopes cannot be told apart any more, all of the density is in doubt
+        return whole / (1 + share), np.where(~told & np.isfinite(whole), whole, 0.0)
+
+    def _bent(self, whole: Array, local: Mapping[str, Array], edge: Boundary, inner: str) -> Array:
+        """What rounding does to the density by moving the point along a curve that bends: near a turning
+        point its rate is not known."""
+        if inner not in self._bends:
+            twice = derivative(derivative(self.problem.expression, inner), inner)
+            self._bends[inner] = compiled(twice)
+        shift = self._rounding * (np.abs(local[PARAMETER]) * edge.rate + np.abs(edge.x))
+        unsure = np.abs(self._bends[inner](local, edge.x.size)) * edge.rate * shift
+        lost = whole * np.where(np.isnan(unsure), 1.0, np.minimum(unsure, 1.0))
+        return np.where(np.isfinite(lost), lost, np.where(np.isfinite(whole), whole, 1e300))
+
+    def _blurred(self, density: Array, local: Mapping[str, Array], edge: Boundary, inner: str) -> Array:
+        """Close to an end of the law, rounding moves the point by a share of its distance to it."""
+        low, high = self.problem.laws[inner].support()
+        shift = ROUNDING * (np.abs(local[PARAMETER]) * edge.rate + np.abs(edge.x))
+        near = np.minimum(np.abs(edge.x - low), np.abs(edge.x - high))
+        return np.asarray(density * np.minimum(4 * shift / near, 1.0), float)
+
     def _panels(
         self, event: Node, environment: Mapping[str, Array], count: int, outer: str, inner: str
-    ) -> tuple[Array, Array, Index]:
+    ) -> CutPanels:
         """Panels of the outer coordinate: its own graded grid, and where the level curve crosses that of
         the inner one, so that no narrow feature of either law falls between nodes."""
         axis, values = self.axes[outer], self._coarse[inner]
