@@ -127,6 +127,17 @@ class Law(ABC):
         both = np.where(above < 0.5, 1 - below - above, left)
         return np.where(upper > lower, np.maximum(np.where(below < 0.5, both, right), 0.0), 0.0)
 
+    def continuous_between(self, lower: Array, upper: Array) -> Estimates:
+        """P(lower < X <= upper) of the continuous part, arrays of one shape. The error is what comes on top of
+        `relative_error` and `floor`, which hold for every probability that a tail tells alone."""
+        mass = self.between(lower, upper)
+        atoms = self.atoms()
+        if atoms.values.size:
+            before = np.concatenate([[0.0], np.cumsum(atoms.masses)])
+            first, last = (np.searchsorted(atoms.values, end, side="right") for end in (lower, upper))
+            mass = np.maximum(mass - (before[last] - before[first]), 0.0)
+        return Estimates(mass, np.zeros_like(mass))
+
     def surely_meets(self, lower: float, upper: float) -> bool:
         """Whether an elementary bound shows that P(lower < X < upper) is above 0.1, without working it out.
 

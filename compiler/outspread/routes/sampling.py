@@ -149,7 +149,7 @@ class _Sampler:
         environment = {**self.design.values, PARAMETER: np.full(count, y)}
         where = self.solvers[key](environment, count)
         if not density:
-            return probability(where, self.design.inner, self.design.given)
+            return probability(where, self.design.inner, self.design.given).value
         edge = boundary(where)
         given = None if self.design.given is None else self.design.given[edge.problem]
         with np.errstate(all="ignore"):

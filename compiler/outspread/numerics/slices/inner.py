@@ -13,14 +13,16 @@ from typing import Protocol
 import numpy as np
 
 from outspread.laws.functions.normal import normal_between
-from outspread.laws.law import Array, Law
+from outspread.laws.law import Array, Estimates, Law
 from outspread.numerics.sets import Sets
 
 
 class Inner(Protocol):
     """What `probability` and `density` ask of the variable; `given` holds the conditional means (or None)."""
 
-    def between(self, lower: Array, upper: Array, given: Array | None) -> Array: ...
+    def between(self, lower: Array, upper: Array, given: Array | None) -> Estimates:
+        """Probabilities of (lower, upper], with the error on top of the law's own relative error and floor."""
+        ...
 
     def pdf(self, x: Array, given: Array | None) -> Array: ...
 
@@ -31,14 +33,8 @@ class IndependentInner:
 
     law: Law
 
-    def between(self, lower: Array, upper: Array, given: Array | None) -> Array:
-        mass = self.law.between(lower, upper)
-        atoms = self.law.atoms()
-        if atoms.values.size:
-            before = np.concatenate([[0.0], np.cumsum(atoms.masses)])
-            first, last = (np.searchsorted(atoms.values, end, side="right") for end in (lower, upper))
-            mass = np.maximum(mass - (before[last] - before[first]), 0.0)
-        return mass
+    def between(self, lower: Array, upper: Array, given: Array | None) -> Estimates:
+        return self.law.continuous_between(lower, upper)
 
     def pdf(self, x: Array, given: Array | None) -> Array:
         return self.law.pdf(x)
@@ -51,7 +47,7 @@ class ConditionalInner:
     law: Law
     spread: float
 
-    def between(self, lower: Array, upper: Array, given: Array | None) -> Array:
+    def between(self, lower: Array, upper: Array, given: Array | None) -> Estimates:
         assert given is not None
         low, high = np.broadcast_arrays(np.asarray(lower, float), np.asarray(upper, float))
         with np.errstate(invalid="ignore"):  # infinite scores beyond the ends of both
@@ -62,7 +58,8 @@ class ConditionalInner:
             # the ends' own difference keeps the digits that their scores round away
             with np.errstate(invalid="ignore"):
                 width = (high - low) / (float(self.law.parameters["sd"]) * self.spread)
-        return normal_between(a, b, width)
+        mass = normal_between(a, b, width)
+        return Estimates(mass, np.zeros_like(mass))
 
     def pdf(self, x: Array, given: Array | None) -> Array:
         assert given is not None
@@ -84,15 +81,16 @@ def normal_score(law: Law, x: Array) -> Array:
     return np.asarray(np.where(below < above, ndtri(below), -ndtri(above)), float)
 
 
-def probability(where: Sets, inner: Inner, given: Array | None = None) -> Array:
-    """P(X in set) for each problem: shape (N,)."""
+def probability(where: Sets, inner: Inner, given: Array | None = None) -> Estimates:
+    """P(X in set) for each problem: shape (N,); the error as in `Inner.between`."""
     full = where.lower < where.upper
     if where.lower.shape[0] == 1 and full.all():
         return inner.between(where.lower[0], where.upper[0], given)
     row, problem = np.nonzero(full)
     part = None if given is None else given[problem]
-    mass = inner.between(where.lower[row, problem], where.upper[row, problem], part)
-    return np.asarray(np.bincount(problem, mass, where.count), float)
+    found = inner.between(where.lower[row, problem], where.upper[row, problem], part)
+    value, error = (np.bincount(problem, column, where.count) for column in (found.value, found.error))
+    return Estimates(np.asarray(value, float), np.asarray(error, float))
 
 
 @dataclass(frozen=True)

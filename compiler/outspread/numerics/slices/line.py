@@ -45,7 +45,8 @@ class LineMeasure:
         """P(event and combination j) / weight j for each y and combination: shape (len(y), combinations)."""
         shape = (y.size, self.combos.count)
         sets_, environment = self._sets(event, y)
-        value = probability(sets_, self.inner)
+        found = probability(sets_, self.inner)
+        value = found.value
         edge = boundary(sets_)
         with np.errstate(all="ignore"):
             shift = ROUNDING * (np.abs(environment[PARAMETER])[edge.problem] * edge.rate + np.abs(edge.x))
@@ -55,7 +56,7 @@ class LineMeasure:
             unknown = np.where(value[edge.problem] > 0, np.sqrt(ROUNDING), 0.0)
             slip = np.where(np.isfinite(slip), slip, unknown)
         lost = np.bincount(edge.problem, slip, value.size)
-        error = self._relative * value + lost + self.problem.laws[self.name].floor
+        error = self._relative * value + lost + found.error + self.problem.laws[self.name].floor
         return Estimates(value.reshape(shape), error.reshape(shape))
 
     def _sets(self, event: Node, y: Array) -> tuple[Sets, Mapping[str, Array]]:

@@ -34,7 +34,7 @@ from outspread.numerics.slices.problem import Problem, combinations
 from outspread.numerics.slices.solve import PARAMETER, Solver
 
 Index = npt.NDArray[np.int64]
-_SETTLED = 3e-12  # relative error of a density by one integral up to which the other way is not gone
+_SETTLED = 3e-13  # relative error of a density by one integral up to which the other way is not gone
 _STEPPED = 1e-10  # relative; the density of a part is a slope with tiny steps between its panels
 _THINNED = 4
 _LIGHT = 1e-14  # probability of a panel of the outer input that may turn out not to matter
@@ -141,13 +141,14 @@ class PlaneMeasure:
             given = self.correlation * axis.scores(x) if self.correlation else None
             weight = axis.weight(x)
             slip = self._thinned_slip if self._least else self._slip
-            return np.stack([probability(where, inner, given), slip(where, local, given)]) * weight
+            found, lost = probability(where, inner, given), slip(where, local, given)
+            return np.stack([found.value, lost + found.error, lost]) * weight
 
         result = self._integrated(integrand, panels, count)
         self.effort.evaluations += result.evaluations
         shape = (y.size, self.combos.count)
-        lost = np.abs(result.value[1])
-        error = result.error[0] + lost + self._relative_error * result.value[0]
+        doubt, lost = np.abs(result.value[1:])
+        error = result.error[0] + doubt + self._relative_error * result.value[0]
         error += axis.outside + self._floor
         return Estimates(result.value[0].reshape(shape), error.reshape(shape), lost.reshape(shape))
 
@@ -186,7 +187,7 @@ class PlaneMeasure:
         """The integral over the panels. Panels in the tails of the outer input are passed over where their
         probability, which bounds what they add, is nothing beside the rest."""
         options: dict[str, Any] = {
-            "components": 2, "relative": self.relative, "absolute": max(1e-300, self._least * 1e-3),
+            "components": 3, "relative": self.relative, "absolute": max(1e-300, self._least * 1e-3),
             "control": 1, "noise": 1, "share": 200 if self._least or self._floor else 2_500,
         }  # fmt: skip
 
