@@ -180,12 +180,12 @@ class DerivedLaw(Law):
         whole = upper > lower
         open_low, open_high = lower <= low, upper >= high
         value, error = np.where(whole & open_low & open_high, mass, 0.0), np.zeros(lower.shape)
-        for rows, kind, at in (
+        for tail, kind, at in (
             (whole & open_low & ~open_high, "cdf", upper),
             (whole & open_high & ~open_low, "ccdf", lower),
         ):
-            if rows.any():
-                value[rows] = self.continuous(kind, at[rows]).value
+            if tail.any():
+                value[tail] = self.continuous(kind, at[tail]).value
         rows = np.flatnonzero(whole & ~open_low & ~open_high)
         if rows.size:
             value[rows], error[rows] = self._cut_out(lower[rows], upper[rows])
@@ -196,14 +196,14 @@ class DerivedLaw(Law):
         left, right = self.continuous("cdf", lower).value, self.continuous("ccdf", upper).value
         value = self._continuous_mass - left - right
         sizes = left + right
-        for rows, kind, first, last in (
+        for side, kind, first, last in (
             (left > 0.5 * self._continuous_mass, "ccdf", lower, right),
             (right > 0.5 * self._continuous_mass, "cdf", upper, left),
         ):
-            if rows.any():
-                first_tail = self.continuous(kind, first[rows]).value
-                value[rows] = first_tail - last[rows]
-                sizes[rows] = first_tail + last[rows]
+            if side.any():
+                first_tail = self.continuous(kind, first[side]).value
+                value[side] = first_tail - last[side]
+                sizes[side] = first_tail + last[side]
         value = np.maximum(value, 0.0)
         error = (self.relative_error + 4e-16) * sizes
         narrow = np.flatnonzero(error > _CANCELLED * self.relative_error * value)

@@ -128,8 +128,8 @@ class Law(ABC):
         return np.where(upper > lower, np.maximum(np.where(below < 0.5, both, right), 0.0), 0.0)
 
     def continuous_between(self, lower: Array, upper: Array) -> Estimates:
-        """P(lower < X <= upper) of the continuous part, arrays of one shape. The error is what comes on top of
-        `relative_error` and `floor`, which hold for every probability that a tail tells alone."""
+        """P(lower < X <= upper) of the continuous part, arrays of one shape. The error is what comes on
+        top of `relative_error` and `floor`, which hold for every probability that a tail tells alone."""
         mass = self.between(lower, upper)
         atoms = self.atoms()
         if atoms.values.size:

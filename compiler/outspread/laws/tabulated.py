@@ -100,9 +100,7 @@ class Tabulated:
         error[~near] += 2.3e-16 * self._mass
         return Estimates(value, error)
 
-    def _asked(
-        self, kind: str, y: Array, where: npt.NDArray[np.bool_], found: Estimates
-    ) -> Estimates:
+    def _asked(self, kind: str, y: Array, where: npt.NDArray[np.bool_], found: Estimates) -> Estimates:
         """The values found, with those at `where` from the route itself."""
         if where.any():
             exact = self._own(kind, y[where])

@@ -34,12 +34,11 @@ _DIFFERENTIATED = 620.0  # a quarter of the sum of k^2 below SIZE: the tail sums
 _KNOWN = 0.3  # relative error of values whose logarithm says something
 _SLACK = 30.0  # units in the last place by which rounding may have moved the argument of a firm value
 _NARROW = 12.0  # ratio of the values of a panel up to which its nodes may differ in noise
+_NEGLIGIBLE = 1e-17  # where values that small need no digits each, one error may stand for a panel
 _MOST = 2_500  # panels
 _LINEAR_ATTEMPTS = 2  # bisections at a knot before the logarithm of the distance is taken
 _NODES: Array = np.cos(np.pi * (np.arange(SIZE) + 0.5) / SIZE)[::-1]
-_TRANSFORM: Array = (2 / SIZE) * np.cos(
-    np.arange(SIZE)[:, None] * np.arccos(np.clip(_NODES, -1, 1))[None, :]
-)
+_TRANSFORM: Array = (2 / SIZE) * np.cos(np.arange(SIZE)[:, None] * np.arccos(np.clip(_NODES, -1, 1))[None, :])
 _TRANSFORM[0] /= 2
 
 
@@ -184,8 +183,8 @@ class PanelFunction:
 
     def parted(self) -> tuple[list[Panel], list[Panel]]:
         """The panels that were expanded, and those left out."""
-        kept = [panel for panel, form in zip(self.panels, self.forms, strict=True) if form != _AFAR]
-        return kept, [panel for panel, form in zip(self.panels, self.forms, strict=True) if form == _AFAR]
+        marked = list(zip(self.panels, self.forms == _AFAR, strict=True))
+        return [panel for panel, out in marked if not out], [panel for panel, out in marked if out]
 
     def slope(self, y: Array) -> Estimates:
         """The derivative, from that of the series. Its error is judged by the noise that the series' own last
@@ -271,6 +270,7 @@ def expand(
             holds = bool(tail <= relative * size + noise)
             # the error of the worst node is stated for the whole panel: it may not differ much between them
             even = noise <= 10 * max(expansion.best[i], relative * size) or expansion.best[i] > 0.1 * size
+            even |= afar > 0 and expansion.peak[i] < _NEGLIGIBLE
             remote = float(values[i].max()) < afar
             closed = holds and (even or float(values[i].max()) < _NARROW * float(values[i].min()))
             if not holds:
@@ -295,12 +295,13 @@ def expand(
             relatives.append(float(doubt) + 1e-15 if is_log else 1e-15)
             absolutes.append(least if is_log else float(doubt) + _FADED * least)
         pending = following
-    more = len(left_out)
+    for column in (relatives, absolutes, tails, peaks):
+        column += [0.0] * len(left_out)
+    more = np.zeros((len(left_out), SIZE))
     return PanelFunction(
-        [*done, *left_out], np.array(series + [np.zeros(SIZE)] * more).reshape(-1, SIZE),
-        np.array(forms + [_AFAR] * more, np.int64),
-        *(np.array(column + [0.0] * more) for column in (relatives, absolutes, tails, peaks)),
-        np.array(firm + [(0.0, 0.0)] * more).reshape(-1, 2),
+        [*done, *left_out], np.concatenate([np.array(series).reshape(-1, SIZE), more]),
+        np.array(forms + [_AFAR] * len(left_out), np.int64), np.array(relatives), np.array(absolutes),
+        np.array(tails), np.array(peaks), np.concatenate([np.array(firm).reshape(-1, 2), more[:, :2]]),
     )  # fmt: skip
 
 

@@ -72,7 +72,7 @@ def integrate(
     components: int = 1,
     control: int | None = None,
     relative: float = 1e-12,
-    absolute: float = 0.0,
+    absolute: float | Array = 0.0,
     rounds: int = 130,
     most_panels: int | None = None,
     noise: int | None = None,
@@ -83,13 +83,14 @@ def integrate(
 
     `function` takes flat arrays of points and their owners and returns values of shape (points,) or
     (components, points). `lower`, `upper`, `owner` have one entry a panel; all limits are finite.
-    A panel is accepted when its error is below relative * |integral| / 40 of its owner (for every component)
-    or below absolute / 40, or below relative / 4 of its own size; only the first `control` components
-    (default: all) are so controlled. What is not accepted after `rounds` bisections or `most_panels` panels
-    keeps its error, so the error stated is always the sum over all panels; it never vanishes from the
-    account. The same holds for the panels of an owner that has had its `share` of them, and for panels whose
-    error both halves inherit over several bisections: that is rounding noise. Where component `noise`
-    integrates a bound on the rounding of the others, a panel whose error is below it is accepted too.
+    A panel is accepted when its error is below relative * |integral| / 40 of its owner (for every
+    component) or below absolute / 40 (a number, or one for each owner), or below relative / 4 of its own
+    size; only the first `control` components (default: all) are so controlled. What is not accepted after
+    `rounds` bisections or `most_panels` panels keeps its error, so the error stated is always the sum
+    over all panels; it never vanishes from the account. The same holds for the panels of an owner that
+    has had its `share` of them, and for panels whose error both halves inherit over several bisections:
+    that is rounding noise. Where component `noise` integrates a bound on the rounding of the others, a
+    panel whose error is below it is accepted too.
     `origins`: a point at or beyond an end of a panel from which on the integrand may go like a square root,
     NaN where there is none; such a panel is integrated in the root of the distance, where that is smooth.
     """

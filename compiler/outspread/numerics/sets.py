@@ -97,19 +97,57 @@ def intersect(left: Sets, right: Sets) -> Sets:
         np.where(later, left.lower_rate[one], right.lower_rate[two]),
         np.where(sooner, left.upper_rate[one], right.upper_rate[two]),
     )
-    return compact(result)
+    return _packed(result) if a > 1 and b > 1 else compact(result)
+
+
+def _packed(sets: Sets) -> Sets:
+    """The same with the intervals of each problem in its first rows, and no more rows than needed."""
+    held = _held(sets)
+    most = int(held.sum(axis=0).max(initial=0))
+    if most == 0:
+        return nothing(sets.count)
+    if most == held.shape[0]:
+        return sets
+    row, problem = np.nonzero(held)
+    place = (np.cumsum(held, axis=0) - 1)[row, problem]
+    packed = []
+    for column, filler in (
+        (sets.lower, np.inf), (sets.upper, -np.inf), (sets.lower_rate, 0.0), (sets.upper_rate, 0.0)
+    ):  # fmt: skip
+        into = np.full((most, sets.count), filler)
+        into[place, problem] = column[row, problem]
+        packed.append(into)
+    return Sets(*packed)
+
+
+def _held(sets: Sets) -> npt.NDArray[np.bool_]:
+    """Which intervals hold anything: a single point counts, a point at infinity does not."""
+    point = (sets.lower == sets.upper) & np.isfinite(sets.lower)
+    return np.asarray((sets.lower < sets.upper) | point, bool)
+
+
+def _ordered(key: Array, *columns: Array) -> list[Array]:
+    """Columns with each problem's rows in the order of the key, which comes first."""
+    if key.shape[0] == 1:
+        return [key, *columns]
+    if key.shape[0] == 2:
+        swap = key[0] > key[1]
+        return [
+            np.stack([np.where(swap, column[1], column[0]), np.where(swap, column[0], column[1])])
+            for column in (key, *columns)
+        ]
+    order = np.argsort(key, axis=0, kind="stable")
+    return [np.take_along_axis(column, order, 0) for column in (key, *columns)]
 
 
 def union(left: Sets, right: Sets) -> Sets:
     """Union, with overlapping intervals merged."""
     both = stack([left, right])
     empty = ~(both.lower < both.upper)
-    lower = np.where(empty, np.inf, both.lower)
-    order = np.argsort(lower, axis=0, kind="stable")
-    lower = np.take_along_axis(lower, order, 0)
-    upper = np.take_along_axis(np.where(empty, -np.inf, both.upper), order, 0)
-    lower_rate = np.take_along_axis(both.lower_rate, order, 0)
-    upper_rate = np.take_along_axis(both.upper_rate, order, 0)
+    lower, upper, lower_rate, upper_rate = _ordered(
+        np.where(empty, np.inf, both.lower), np.where(empty, -np.inf, both.upper), both.lower_rate,
+        both.upper_rate,
+    )  # fmt: skip
     result_lower, result_lower_rate = lower.copy(), lower_rate.copy()
     reach, reach_rate = upper[0].copy(), upper_rate[0].copy()
     for row in range(1, lower.shape[0]):
@@ -129,20 +167,17 @@ def symmetric_difference(left: Sets, right: Sets) -> Sets:
     empty = ~(both.lower < both.upper)
     ends = np.concatenate([np.where(empty, np.inf, both.lower), np.where(empty, np.inf, both.upper)])
     rates = np.concatenate([both.lower_rate, both.upper_rate])
-    order = np.argsort(ends, axis=0, kind="stable")
-    ends, rates = np.take_along_axis(ends, order, 0), np.take_along_axis(rates, order, 0)
+    ends, rates = _ordered(ends, rates)
     return compact(Sets(ends[0::2], ends[1::2], rates[0::2], rates[1::2]))
 
 
 def complement(sets: Sets) -> Sets:
     """What is not in the sets."""
     empty = ~(sets.lower < sets.upper)
-    lower = np.where(empty, np.inf, sets.lower)
-    order = np.argsort(lower, axis=0, kind="stable")
-    lower = np.take_along_axis(lower, order, 0)
-    upper = np.take_along_axis(np.where(empty, np.inf, sets.upper), order, 0)
-    lower_rate = np.take_along_axis(np.where(empty, 0.0, sets.lower_rate), order, 0)
-    upper_rate = np.take_along_axis(np.where(empty, 0.0, sets.upper_rate), order, 0)
+    lower, upper, lower_rate, upper_rate = _ordered(
+        np.where(empty, np.inf, sets.lower), np.where(empty, np.inf, sets.upper),
+        np.where(empty, 0.0, sets.lower_rate), np.where(empty, 0.0, sets.upper_rate),
+    )  # fmt: skip
     end = np.full((1, sets.count), np.inf)
     zero = np.zeros_like(end)
     return compact(
@@ -159,7 +194,7 @@ def compact(sets: Sets) -> Sets:
     """Drop the rows that are empty for every problem; single points stay, a flat operation may widen them."""
     if sets.lower.shape[0] <= 1:
         return sets
-    full = (sets.lower <= sets.upper).any(axis=1)
+    full = _held(sets).any(axis=1)
     if full.all():
         return sets
     if not full.any():

@@ -102,9 +102,7 @@ def derive(
     return result
 
 
-def tabulate(
-    result: NumericLaw, laws: Mapping[str, Law], density: bool = True, least: float = LEAST
-) -> None:
+def tabulate(result: NumericLaw, laws: Mapping[str, Law], density: bool = True, least: float = LEAST) -> None:
     """Keep the law on panels (`laws.tabulated`) where its values are integrals, each of them dear, or where,
     without `density`, it is to be an input of a next step."""
     planes = [piece for piece in result.pieces if isinstance(piece.measure, PlaneMeasure)]
@@ -123,8 +121,9 @@ def _landmarks(piece: Piece) -> tuple[float, ...]:
         return ()
     axes = piece.measure.axes
     grids = {name: axis.grid for name, axis in axes.items()}
-    marks = {name: np.array(axis.breaks, float) for name, axis in axes.items()}
-    return landmarks(piece.problem.expression, piece.problem.laws, grids, marks, piece.combos)
+    marks = {name: np.array(values, float) for name, values in piece.measure.grading.marks.items()}
+    spots = piece.measure.grading.spot_values
+    return landmarks(piece.problem.expression, piece.problem.laws, grids, marks, piece.combos, spots)
 
 
 def _end_values(piece: Piece) -> list[float]:

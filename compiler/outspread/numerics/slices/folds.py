@@ -15,11 +15,14 @@ import numpy.typing as npt
 
 from outspread.formula.calculus import derivative, nonsmooth
 from outspread.formula.evaluate import compile_numpy
-from outspread.formula.tree import Node, names
+from outspread.formula.folding import fold
+from outspread.formula.tree import Node, multiply, names, subtract
 from outspread.numerics.sets import Array, Sets
 
 Index = npt.NDArray[np.int64]
-_BISECTIONS = 50
+_BITS = 50  # of the length of a panel up to which a change of structure is bracketed
+_SECTIONS = 16
+_FEW = 1_000
 _NEAR = 10.0  # lengths of a panel: a root further away looks smooth from there
 _STARTS = 13
 _NEWTON = 30
@@ -41,11 +44,12 @@ class CutPanels:
 
 
 def structure_cuts(
-    slices: Callable[[Array, Index], Sets], low: float, high: float, panels: tuple[Array, Array, Index]
+    structure: Callable[[Array, Index], Index], panels: tuple[Array, Array, Index]
 ) -> CutPanels:
-    """The panels, cut around every change in the number of intervals that a slice has within [low, high].
+    """The panels, cut around every change of `structure(t, owner)`: a number that tells the kind of slice at
+    outer coordinates t (`signature`, and `sides` of its ends).
 
-    `slices(t, owner)` gives the slice at outer coordinates t. Each change found between the ends and the
+    Each change found between the ends and the
     middle of a panel is bracketed to the last places of the panel's length; the bracket is a panel of its
     own. Panels near a change have it for an origin: at a fold a slice shrinks like a square root.
     """
@@ -54,17 +58,16 @@ def structure_cuts(
         return CutPanels(lower, upper, owner, lower)
     inside = 1e-9 * (upper - lower)
     points = np.stack([lower + inside, 0.5 * (lower + upper), upper - inside])
-    kinds = signature(slices(points.ravel(), np.tile(owner, 3)), low, high).reshape(3, -1)
+    kinds = structure(points.ravel(), np.tile(owner, 3)).reshape(3, -1)
     # the structure may change just between two panels, too
     differs = (owner[1:] == owner[:-1]) & (upper[:-1] == lower[1:]) & (kinds[2, :-1] != kinds[0, 1:])
-    after, before = np.append(False, differs), np.append(differs, False)
     starts, who = [lower], [np.arange(lower.size)]
     opens, closes = [np.append(False, differs)], [np.append(differs, False)]
     for first, second in ((0, 1), (1, 2)):
         changed = np.flatnonzero(kinds[first] != kinds[second])
         if changed.size:
             a, b = _bracketed(
-                slices, low, high, points[first, changed], points[second, changed], owner[changed],
+                structure, points[first, changed], points[second, changed], owner[changed],
                 kinds[first, changed],
             )  # fmt: skip
             starts += [a, b]
@@ -114,26 +117,39 @@ def signature(where: Sets, low: float, high: float) -> Index:
     return np.asarray(4 * count + 2 * at_low + at_high, np.int64)
 
 
+def sides(where: Sets, kinks: Array) -> Index:
+    """A number for each problem that tells on which sides of the formula's kinks the ends of its slice lie.
+
+    `kinks` has shape (kinks, 2 * rows, problems): what vanishes at each kink, at the lower and at the upper
+    ends of `where`; only the signs matter, and those of ends of empty intervals do not.
+    """
+    full = where.lower < where.upper
+    known = np.concatenate([full & np.isfinite(where.lower), full & np.isfinite(where.upper)])
+    signs = np.where(known, np.where(kinks > 0, 1, 2), 0).reshape(-1, where.count)
+    weights = np.random.Generator(np.random.PCG64(7)).integers(1, 2**40, signs.shape[0])
+    return np.asarray(weights @ signs, np.int64)
+
+
 def _bracketed(
-    slices: Callable[[Array, Index], Sets],
-    low: float,
-    high: float,
-    a: Array,
-    b: Array,
-    owner: Index,
-    kind: Index,
+    structure: Callable[[Array, Index], Index], a: Array, b: Array, owner: Index, kind: Index
 ) -> tuple[Array, Array]:
-    for _ in range(_BISECTIONS):
-        middle = 0.5 * (a + b)
-        same = signature(slices(middle, owner), low, high) == kind
-        a, b = np.where(same, middle, a), np.where(same, b, middle)
+    """Many sections at a time for few panels, where a call costs more than its points."""
+    sections = _SECTIONS if a.size < _FEW else 2
+    shares = np.arange(1, sections) / sections
+    for _ in range(int(np.ceil(_BITS / np.log2(sections)))):
+        points = a + (b - a) * shares[:, None]
+        same = structure(points.ravel(), np.tile(owner, sections - 1)).reshape(points.shape) == kind
+        first = np.where(same.all(axis=0), sections - 1, np.argmin(same, axis=0))
+        ends = np.vstack([a, points, b])
+        columns = np.arange(a.size)
+        a, b = ends[first, columns], ends[first + 1, columns]
     return a, b
 
 
 def critical_points(
     expression: Node, pair: tuple[str, str], grids: tuple[Array, Array], others: Mapping[str, Array]
 ) -> tuple[Array, Array]:
-    """Coordinates at which the gradient in both inputs vanishes, by Newton's method from a grid of starts.
+    """Points at which the gradient in both inputs vanishes, by Newton's method from a grid of starts.
 
     `others` holds single values of discrete inputs; only a few combinations need to be looked at, since the
     result grades panels and states nothing.
@@ -145,7 +161,8 @@ def critical_points(
 def corners(
     expression: Node, pair: tuple[str, str], grids: tuple[Array, Array], others: Mapping[str, Array]
 ) -> tuple[Array, Array]:
-    """Coordinates at which two kinks of the formula cross: the corners of its pieces."""
+    """Points at which two kinks of the formula cross, the corners of its pieces, and at which the formula
+    turns along a kink."""
     kinks = [
         node
         for node in dict.fromkeys([*nonsmooth(expression, pair[0]), *nonsmooth(expression, pair[1])])
@@ -157,9 +174,15 @@ def corners(
         for two in kinks[:i]
         if set(pair) <= {*names(one), *names(two)}
     ]
+    slopes = [derivative(expression, name) for name in pair]
+    for kink in kinks:
+        if set(pair) <= {*names(kink)}:
+            across = [derivative(kink, name) for name in pair]
+            along = subtract(multiply(slopes[0], across[1]), multiply(slopes[1], across[0]))
+            found.append(_common_zeros(kink, fold(along), pair, grids, others))
     if not found:
         return np.zeros(0), np.zeros(0)
-    return _distinct(np.concatenate([f[0] for f in found])), _distinct(np.concatenate([f[1] for f in found]))
+    return _distinct(np.concatenate([f[0] for f in found]), np.concatenate([f[1] for f in found]))
 
 
 def _common_zeros(
@@ -188,13 +211,14 @@ def _common_zeros(
         exact = (np.abs(dx) <= 1e-12 * np.ptp(grids[0])) & (np.abs(dz) <= 1e-12 * np.ptp(grids[1]))
     good = (small | exact) & np.isfinite(x) & np.isfinite(z)
     good &= (x > grids[0][0]) & (x < grids[0][-1]) & (z > grids[1][0]) & (z < grids[1][-1])
-    return _distinct(x[good]), _distinct(z[good])
+    return _distinct(x[good], z[good])
 
 
-def _distinct(values: Array) -> Array:
-    ordered = np.unique(values)
-    if ordered.size < 2:
-        return ordered
-    scale = max(float(np.abs(ordered).max()), 1e-300)
-    keep = np.append(True, np.diff(ordered) > 1e-8 * scale)
-    return np.asarray(ordered[keep][:_MOST], float)
+def _distinct(x: Array, z: Array) -> tuple[Array, Array]:
+    """Points that differ by more than rounding, at most `_MOST` of them."""
+    if x.size < 2:
+        return x, z
+    steps = [1e-8 * max(float(np.abs(column).max()), 1e-300) for column in (x, z)]
+    cells = np.stack([np.round(column / step) for column, step in zip((x, z), steps, strict=True)])
+    first = np.sort(np.unique(cells, axis=1, return_index=True)[1])[:_MOST]
+    return x[first], z[first]

@@ -21,7 +21,7 @@ class Inner(Protocol):
     """What `probability` and `density` ask of the variable; `given` holds the conditional means (or None)."""
 
     def between(self, lower: Array, upper: Array, given: Array | None) -> Estimates:
-        """Probabilities of (lower, upper], with the error on top of the law's own relative error and floor."""
+        """Probabilities of (lower, upper], the error on top of the law's own relative error and floor."""
         ...
 
     def pdf(self, x: Array, given: Array | None) -> Array: ...

@@ -227,7 +227,9 @@ class Isolator:
             if not low.size:
                 break
             if low.size > _MOST_BOXES:
-                raise TooManyBoundaries
+                if count == 1:
+                    raise TooManyBoundaries
+                return self._in_halves(environment, count)
             box = {key: Interval(value[owner], value[owner]) for key, value in environment.items()}
             box[self.name] = Interval(low, high)
             span = enclose(self.difference, box)
@@ -273,6 +275,22 @@ class Isolator:
             np.concatenate([part[0] for part in found]),
             np.concatenate([part[1] for part in found]),
             np.concatenate([part[2] for part in found]),
+        )
+
+    def _in_halves(
+        self, environment: Mapping[str, Array], count: int
+    ) -> tuple[Array, Index, npt.NDArray[np.bool_]]:
+        """`boundaries` of the problems in two portions, for those that need many boxes together."""
+        parts = []
+        for start, stop in ((0, count // 2), (count // 2, count)):
+            part = {key: value[start:stop] for key, value in environment.items()}
+            roots, owners, moving = self.boundaries(part, stop - start)
+            parts.append((roots, owners + start, moving))
+        one, two = parts
+        return (
+            np.concatenate([one[0], two[0]]),
+            np.concatenate([one[1], two[1]]),
+            np.concatenate([one[2], two[2]]),
         )
 
     def _brackets(

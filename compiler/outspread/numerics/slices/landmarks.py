@@ -3,7 +3,7 @@ poles and critical points. They grade panels and state nothing, so that one too 
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 
@@ -22,12 +22,16 @@ _SAME = 1e-12
 
 
 def landmarks(
-    expression: Node, laws: Mapping[str, Law], grids: Mapping[str, Array], marks: Mapping[str, Array],
+    expression: Node,
+    laws: Mapping[str, Law],
+    grids: Mapping[str, Array],
+    marks: Mapping[str, Array],
     combos: Combinations,
+    spots: Sequence[float] = (),
 ) -> tuple[float, ...]:
     """Values at all pairs of marks of the two inputs, ends of their supports included, and at the turning
     points along each mark; none where they are too many to be of use."""  # fmt: skip
-    found: list[float] = []
+    found = list(spots)
     if combos.count > _MOST_COMBINATIONS:
         return ()
     first, second = grids

@@ -14,14 +14,13 @@ import numpy as np
 import numpy.typing as npt
 
 from outspread.formula.calculus import derivative, nonsmooth, one_piece
-from outspread.formula.tree import Apply, Name, Node, names, walk
+from outspread.formula.tree import Node
 from outspread.laws.law import Array, Estimates
 from outspread.numerics.quadrature import NODES, Integrals, integrate, panels_between
 from outspread.numerics.sets import Sets
-from outspread.numerics.slices import cases
-from outspread.numerics.slices.axis import Axis
 from outspread.numerics.slices.common import ROUNDING, Effort, compiled, environment_of, over_blocks
-from outspread.numerics.slices.folds import CutPanels, corners, critical_points, structure_cuts
+from outspread.numerics.slices.folds import CutPanels, sides, signature, structure_cuts
+from outspread.numerics.slices.grading import grade
 from outspread.numerics.slices.inner import (
     Boundary,
     ConditionalInner,
@@ -37,6 +36,7 @@ Index = npt.NDArray[np.int64]
 _SETTLED = 3e-13  # relative error of a density by one integral up to which the other way is not gone
 _STEPPED = 1e-10  # relative; the density of a part is a slope with tiny steps between its panels
 _THINNED = 4
+_MOST_KINKS = 24
 _LIGHT = 1e-14  # probability of a panel of the outer input that may turn out not to matter
 _PASSED = 1e-15  # share of the result up to which it does not
 
@@ -48,9 +48,7 @@ class PlaneMeasure:
     law is the input of a next step, which takes that into its own account.
     """
 
-    def __init__(
-        self, problem: Problem, outer: str, inner: str, relative: float = 1e-12, least: float = 0.0
-    ):
+    def __init__(self, problem: Problem, outer: str, inner: str, relative: float = 1e-12, least: float = 0.0):
         self.problem = problem
         self._least = least
         self.combos = combinations(problem)
@@ -59,7 +57,8 @@ class PlaneMeasure:
         laws = problem.laws
         correlation = 0.0 if problem.scores is None else problem.scores.between(outer, inner)
         self.correlation = correlation
-        self.axes = self._graded(outer, inner)
+        self.grading = grade(problem, self.combos, outer, inner, least)
+        self.axes = self.grading.axes
         self.outer, self.inner = outer, inner
         self.laws: dict[str, Inner] = {}
         for name in (outer, inner):
@@ -70,6 +69,8 @@ class PlaneMeasure:
         self._coarse = {name: self.axes[name].coarse() for name in (outer, inner)}
         self._solvers: dict[tuple[Node, str], Solver] = {}
         self._slopes = {name: compiled(derivative(problem.expression, name)) for name in (outer, inner)}
+        kinks = dict.fromkeys(node for name in (outer, inner) for node in nonsmooth(problem.expression, name))
+        self._kinks = [compiled(node) for node in list(kinks)[:_MOST_KINKS]]
         self._bends: dict[str, Callable[[Mapping[str, Array], int], Array]] = {}
         # whether densities are tried by one integral: a level curve with parts along which the inner input
         # alone varies is not seen by it
@@ -81,44 +82,6 @@ class PlaneMeasure:
 
     def exact(self, event: Node) -> bool:
         return self._solver(event, self.inner).exact
-
-    def _graded(self, outer: str, inner: str) -> dict[str, Axis]:
-        """The two axes, with points where the formula changes its nature or turns."""
-        laws = self.problem.laws
-        breaks = {name: self._breaks(name) for name in (outer, inner)}
-        grids = (Axis(outer, laws[outer], breaks[outer]).grid, Axis(inner, laws[inner], breaks[inner]).grid)
-        picks = np.unique(np.linspace(0, self.combos.count - 1, 3).astype(int))
-        for pick in picks.tolist():
-            others = {name: value[pick] for name, value in self.combos.values.items()}
-            for search in (critical_points, corners):
-                turns = search(self.problem.expression, (outer, inner), grids, others)
-                for name, found in zip((outer, inner), turns, strict=True):
-                    breaks[name] = (*breaks[name], *found.tolist())
-        return {
-            name: Axis(
-                name, laws[name], breaks[name], _is_factor(self.problem.expression, name), 1e-5 * self._least
-            )
-            for name in (outer, inner)
-        }
-
-    def _breaks(self, name: str) -> tuple[float, ...]:
-        """Where the formula changes its nature in one input alone, whatever the other: kinks, poles, and
-        zeros of factors, where the other input loses its influence."""
-        axis = Axis(name, self.problem.laws[name])
-        found: list[float] = []
-        expression = self.problem.expression
-        factors = [
-            argument
-            for part in walk(expression)
-            if isinstance(part, Apply) and part.operator in ("multiply", "divide", "atan2", "power", "hypot")
-            for argument in part.arguments
-        ]
-        for node in dict.fromkeys([*nonsmooth(expression, name), *factors]):
-            if set(names(node)) == {name} and node != Name(name):
-                where = Solver(cases.comparison("less_equal", node, cases.ZERO), axis.frame)({}, 1)
-                full = where.lower < where.upper
-                found += [float(v) for v in np.concatenate([where.lower[full], where.upper[full]])]
-        return tuple(value for value in found if np.isfinite(value))
 
     def _solver(self, event: Node, name: str) -> Solver:
         if (event, name) not in self._solvers:
@@ -187,21 +150,24 @@ class PlaneMeasure:
         """The integral over the panels. Panels in the tails of the outer input are passed over where their
         probability, which bounds what they add, is nothing beside the rest."""
         options: dict[str, Any] = {
-            "components": 3, "relative": self.relative, "absolute": max(1e-300, self._least * 1e-3),
-            "control": 1, "noise": 1, "share": 200 if self._least or self._floor else 2_500,
+            "components": 3, "relative": self.relative, "control": 1, "noise": 1,
+            "share": 200 if self._least or self._floor else 2_500,
         }  # fmt: skip
 
-        def integral(part: CutPanels) -> Integrals:
+        def integral(part: CutPanels, absolute: Array) -> Integrals:
             return integrate(
-                integrand, part.lower, part.upper, part.owner, count, origins=part.origins, **options
-            )
+                integrand, part.lower, part.upper, part.owner, count, origins=part.origins,
+                absolute=absolute, **options,
+            )  # fmt: skip
 
         mass = self._mass(panels.lower, panels.upper)
         light = mass < _LIGHT
-        heavy = integral(panels.part(~light))
+        least = np.full(count, max(1e-300, self._least * 1e-3))
+        heavy = integral(panels.part(~light), least)
         passed = np.bincount(panels.owner[light], mass[light], count)
         needed = passed > _PASSED * heavy.value[0]
-        rest = integral(panels.part(light & needed[panels.owner]))
+        enough = np.maximum(least, self.relative * np.abs(heavy.value[0]))
+        rest = integral(panels.part(light & needed[panels.owner]), enough)
         value, error = heavy.value + rest.value, heavy.error + rest.error
         error[0] += np.where(needed, 0.0, passed)
         return Integrals(value, error, heavy.evaluations + rest.evaluations)
@@ -350,22 +316,23 @@ class PlaneMeasure:
         fixed = np.broadcast_to(axis.fixed_points(), (count, axis.fixed_points().size))
         panels = panels_between(np.concatenate([fixed, crossings], axis=1))
         solver = self._solver(event, inner)
+        low, high = self.axes[inner].start, self.axes[inner].end
 
-        def slices(t: Array, who: Index) -> Sets:
+        def structure(t: Array, who: Index) -> Index:
             local = {key: value[who] for key, value in environment.items()}
             local[outer] = axis.to_x(t)
-            return solver(local, t.size)
+            where = solver(local, t.size)
+            kind = signature(where, low, high)
+            return kind + 64 * sides(where, self._kinks_at(where, local, inner)) if self._kinks else kind
 
-        return structure_cuts(slices, self.axes[inner].start, self.axes[inner].end, panels)
+        return structure_cuts(structure, panels)
 
-
-def _is_factor(expression: Node, name: str) -> bool:
-    """Whether the input, or a power of it, stands in a product or a quotient."""
-    for part in walk(expression):
-        if isinstance(part, Apply) and part.operator in ("multiply", "divide"):
-            for argument in part.arguments:
-                if isinstance(argument, Apply) and argument.operator in ("power", "sqrt"):
-                    argument = argument.arguments[0]
-                if argument == Name(name):
-                    return True
-    return False
+    def _kinks_at(self, where: Sets, local: Mapping[str, Array], inner: str) -> Array:
+        """What vanishes at the kinks of the formula, at the ends of the slices (see `folds.sides`)."""
+        ends = np.concatenate([where.lower, where.upper])
+        finite = np.where(np.isfinite(ends), ends, 0.0)
+        columns = {key: np.broadcast_to(value, ends.shape).ravel() for key, value in local.items()}
+        columns[inner] = finite.ravel()
+        with np.errstate(all="ignore"):
+            found = [kink(columns, finite.size).reshape(ends.shape) for kink in self._kinks]
+        return np.stack(found)

@@ -48,10 +48,13 @@ class Solver:
         self.frame = frame
         self.structure_only = structure_only
         self.exact = True
+        self._known: dict[Node, Program] = {}
+        self._solved_once: dict[int, Sets] = {}
         self._program = self._compile(cases.split(event, frame.name))
 
     def __call__(self, environment: Environment, count: int) -> Sets:
         """The sets on which the event holds; environment arrays have shape (count,)."""
+        self._solved_once.clear()
         with np.errstate(all="ignore"):
             return self._program(environment, count)
 
@@ -63,6 +66,22 @@ class Solver:
             return lambda environment, count: sets.nothing(count)
         if event.operator in ("and", "or"):
             return self._connective(event)
+        if event not in self._known:
+            self._known[event] = self._single(event)
+        return self._known[event]
+
+    def _single(self, event: Apply) -> Program:
+        """One comparison; in one call it is solved once, wherever it occurs in the event."""
+        program, place = self._unconnected(event), len(self._known)
+
+        def once(environment: Environment, count: int) -> Sets:
+            if place not in self._solved_once:
+                self._solved_once[place] = program(environment, count)
+            return self._solved_once[place]
+
+        return once
+
+    def _unconnected(self, event: Apply) -> Program:
         if self.frame.name not in names(event):
             condition = _function(event)
 
