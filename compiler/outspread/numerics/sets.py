@@ -126,7 +126,7 @@ def _held(sets: Sets) -> npt.NDArray[np.bool_]:
     return np.asarray((sets.lower < sets.upper) | point, bool)
 
 
-def _ordered(key: Array, *columns: Array) -> list[Array]:
+def ordered(key: Array, *columns: Array) -> list[Array]:
     """Columns with each problem's rows in the order of the key, which comes first."""
     if key.shape[0] == 1:
         return [key, *columns]
@@ -144,7 +144,7 @@ def union(left: Sets, right: Sets) -> Sets:
     """Union, with overlapping intervals merged."""
     both = stack([left, right])
     empty = ~(both.lower < both.upper)
-    lower, upper, lower_rate, upper_rate = _ordered(
+    lower, upper, lower_rate, upper_rate = ordered(
         np.where(empty, np.inf, both.lower), np.where(empty, -np.inf, both.upper), both.lower_rate,
         both.upper_rate,
     )  # fmt: skip
@@ -167,14 +167,14 @@ def symmetric_difference(left: Sets, right: Sets) -> Sets:
     empty = ~(both.lower < both.upper)
     ends = np.concatenate([np.where(empty, np.inf, both.lower), np.where(empty, np.inf, both.upper)])
     rates = np.concatenate([both.lower_rate, both.upper_rate])
-    ends, rates = _ordered(ends, rates)
+    ends, rates = ordered(ends, rates)
     return compact(Sets(ends[0::2], ends[1::2], rates[0::2], rates[1::2]))
 
 
 def complement(sets: Sets) -> Sets:
     """What is not in the sets."""
     empty = ~(sets.lower < sets.upper)
-    lower, upper, lower_rate, upper_rate = _ordered(
+    lower, upper, lower_rate, upper_rate = ordered(
         np.where(empty, np.inf, sets.lower), np.where(empty, np.inf, sets.upper),
         np.where(empty, 0.0, sets.lower_rate), np.where(empty, 0.0, sets.upper_rate),
     )  # fmt: skip

@@ -140,9 +140,9 @@ class Axis:
         where the density is unbounded."""
         length = np.hypot(self.scale, x - self.middle)
         for end, singular in zip(self.support, self.singular, strict=True):
-            if singular:
+            if singular:  # smaller than either; a plain minimum would put a kink into what is integrated
                 distance = np.abs(x - end)
-                length = np.minimum(length, distance)
+                length = length * distance / np.hypot(length, distance)
         return length
 
     def scores(self, x: Array) -> Array:

@@ -17,12 +17,14 @@ from outspread.formula.calculus import derivative, nonsmooth
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.folding import fold
 from outspread.formula.tree import Node, multiply, names, subtract
+from outspread.numerics import sets
 from outspread.numerics.sets import Array, Sets
 
 Index = npt.NDArray[np.int64]
 _BITS = 50  # of the length of a panel up to which a change of structure is bracketed
 _SECTIONS = 16
 _FEW = 1_000
+_TOUCHING = 1e-14  # relative gap between intervals that rounding may leave
 _NEAR = 10.0  # lengths of a panel: a root further away looks smooth from there
 _STARTS = 13
 _NEWTON = 30
@@ -108,10 +110,17 @@ def _nearest(
 
 
 def signature(where: Sets, low: float, high: float) -> Index:
-    """Number of intervals within [low, high] for each problem, told apart by whether they reach its ends."""
+    """Number of intervals within [low, high] for each problem, told apart by whether they reach its ends.
+    Intervals that touch count as one: a gap may open between them."""
     lower, upper = np.maximum(where.lower, low), np.minimum(where.upper, high)
     full = lower < upper
     count = full.sum(axis=0)
+    if full.shape[0] > 1:
+        starts, ends = sets.ordered(np.where(full, lower, np.inf), np.where(full, upper, -np.inf))
+        reach = np.maximum.accumulate(ends, axis=0)[:-1]
+        with np.errstate(invalid="ignore"):
+            apart = starts[1:] - reach > _TOUCHING * (np.abs(starts[1:]) + np.abs(reach))
+        count = full.any(axis=0) + (apart & np.isfinite(starts[1:])).sum(axis=0)
     at_low = (full & (lower <= low)).any(axis=0)
     at_high = (full & (upper >= high)).any(axis=0)
     return np.asarray(4 * count + 2 * at_low + at_high, np.int64)

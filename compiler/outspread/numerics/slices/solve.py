@@ -23,6 +23,7 @@ from outspread.numerics.slices import cases, pullback
 from outspread.numerics.slices.isolate import root_finder
 from outspread.numerics.slices.polynomial import quadratic_program, rational
 
+_LARGEST = float(np.finfo(float).max)
 PART = "outspread:part"  # a sub-formula that stands for the variable wherever it occurs
 BOUND = "outspread:bound"  # an end of a target, for formulas solved as a whole
 PARAMETER = "outspread:y"  # the value y in {g <= y}; cannot clash with an input's name
@@ -192,7 +193,12 @@ class Solver:
         if combined is None or binary is None:
             return None
         other = _function(combined(rest))
-        return lambda target, environment: binary(target, other(environment, target.count))
+
+        def pulled(target: Sets, environment: Environment) -> Sets:
+            # an operand that overflows still has a side on which the result lies: inf - inf has none
+            return binary(target, np.clip(other(environment, target.count), -_LARGEST, _LARGEST))
+
+        return pulled
 
     def _periodic(self, node: Apply) -> Callable[[Sets, Environment], Sets]:
         argument = node.arguments[0]
