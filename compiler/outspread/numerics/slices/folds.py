@@ -127,16 +127,20 @@ def signature(where: Sets, low: float, high: float) -> Index:
 
 
 def sides(where: Sets, kinks: Array) -> Index:
-    """A number for each problem that tells on which sides of the formula's kinks the ends of its slice lie.
+    """A number for each problem that tells on which sides of the formula's kinks the ends of its slice lie,
+    and which of them move with the value of the formula: one that stands still lies on a kink.
 
     `kinks` has shape (kinks, 2 * rows, problems): what vanishes at each kink, at the lower and at the upper
-    ends of `where`; only the signs matter, and those of ends of empty intervals do not.
+    ends of `where`; only the signs matter. The number does not depend on the rows in which intervals stand.
     """
     full = where.lower < where.upper
-    known = np.concatenate([full & np.isfinite(where.lower), full & np.isfinite(where.upper)])
-    signs = np.where(known, np.where(kinks > 0, 1, 2), 0).reshape(-1, where.count)
-    weights = np.random.Generator(np.random.PCG64(7)).integers(1, 2**40, signs.shape[0])
-    return np.asarray(weights @ signs, np.int64)
+    ends = np.concatenate([where.lower, where.upper])
+    still = np.concatenate([where.lower_rate, where.upper_rate]) == 0
+    signs = np.where(np.isfinite(ends), np.where(kinks > 0, 1, 2) + 2 * still, 0)
+    weights = np.random.Generator(np.random.PCG64(7)).integers(1, 2**20, (2, kinks.shape[0]))
+    rows = full.shape[0]
+    codes = np.tensordot(weights[0], signs[:, :rows], 1) + np.tensordot(weights[1], signs[:, rows:], 1)
+    return np.asarray(np.where(full, codes * codes % 2_147_483_647, 0).sum(axis=0), np.int64)
 
 
 def _bracketed(
