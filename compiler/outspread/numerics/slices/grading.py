@@ -16,6 +16,9 @@ from outspread.numerics.slices.folds import corners, critical_points
 from outspread.numerics.slices.problem import Combinations, Problem
 from outspread.numerics.slices.solve import Solver
 
+_PERIODIC = frozenset({"sin", "cos", "tan"})
+_FOLLOWED = 1e-40  # tail probability to which inputs are followed through periods, each of them a piece
+
 
 @dataclass(frozen=True)
 class Grading:
@@ -46,8 +49,10 @@ def grade(problem: Problem, combos: Combinations, outer: str, inner: str, least:
                 with np.errstate(all="ignore"):
                     values = compiled(expression)(columns | {outer: turns[0], inner: turns[1]}, count)
                 found_values += values[np.isfinite(values)].tolist()
+    periodic = any(isinstance(part, Apply) and part.operator in _PERIODIC for part in walk(expression))
+    followed = max(1e-5 * least, _FOLLOWED if periodic else 0.0)
     axes = {
-        name: Axis(name, laws[name], (*marks[name], *spots[name]), _is_factor(expression, name), 1e-5 * least)
+        name: Axis(name, laws[name], (*marks[name], *spots[name]), _is_factor(expression, name), followed)
         for name in (outer, inner)
     }
     return Grading(axes, marks, tuple(found_values))

@@ -112,7 +112,7 @@ class PlaneMeasure:
         shape = (y.size, self.combos.count)
         doubt, lost = np.abs(result.value[1:])
         error = result.error[0] + doubt + self._relative_error * result.value[0]
-        error += axis.outside + self._floor
+        error += axis.outside + self.axes[name].outside + self._floor
         return Estimates(result.value[0].reshape(shape), error.reshape(shape), lost.reshape(shape))
 
     def _slip(self, where: Sets, local: Mapping[str, Array], given: Array | None) -> Array:
