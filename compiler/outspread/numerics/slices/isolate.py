@@ -16,7 +16,7 @@ from outspread.errors import DerivationError
 from outspread.formula.calculus import derivative, nonsmooth
 from outspread.formula.evaluate import compile_numpy
 from outspread.formula.interval import Interval, enclose
-from outspread.formula.tree import Node, Number, names, subtract
+from outspread.formula.tree import COMPARISONS, Apply, Node, Number, names, subtract, walk
 from outspread.numerics import sets
 from outspread.numerics.roots import bracketed_root
 from outspread.numerics.sets import Array, Sets
@@ -28,6 +28,7 @@ _MANY = 300  # problems from which on the quick way is taken
 _AUDIT = 48
 _SMALLEST = 4e-15
 _DEPTH = 64
+_JUMPS = COMPARISONS | {"and", "or", "not", "if", "sign", "floor", "ceil", "atan2"}
 _MOST_BOXES = 200_000  # undecided at once: beyond this the formula has no end of boundaries
 
 
@@ -132,6 +133,9 @@ class Isolator:
         self.slope_value = compile_numpy(self.slope, self.arguments)
         self.moving = parameter in self.arguments
         self._calls = 0
+        self._continuous = not any(
+            isinstance(part, Apply) and part.operator in _JUMPS for part in walk(self.difference)
+        )
         self.rate_value = compile_numpy(derivative(self.difference, parameter), self.arguments)
 
     def solve(self, environment: Mapping[str, Array], count: int) -> Sets:
@@ -247,8 +251,10 @@ class Isolator:
             steady = np.broadcast_to((rise.lower > 0) | (rise.upper < 0), low.shape) & bounded
             if steady.any():
                 found.append(self._brackets(environment, low[steady], high[steady], owner[steady]))
-            low, high, owner = low[~steady], high[~steady], owner[~steady]
-            first, last = first[~steady], last[~steady]
+            open_ = ~steady
+            if self._continuous:
+                open_ &= ~self._without_zero(environment, low, high, owner, rise, bounded)
+            low, high, owner, first, last = (column[open_] for column in (low, high, owner, first, last))
             # halve by grid points, which are graded by probability, then within a cell
             graded = last - first > 1
             half = (first + last) // 2
@@ -276,6 +282,27 @@ class Isolator:
             np.concatenate([part[1] for part in found]),
             np.concatenate([part[2] for part in found]),
         )
+
+    def _without_zero(
+        self,
+        environment: Mapping[str, Array],
+        low: Array,
+        high: Array,
+        owner: Index,
+        rise: Interval,
+        bounded: npt.NDArray[np.bool_],
+    ) -> npt.NDArray[np.bool_]:
+        """Boxes that the mean value theorem clears: the value in the middle is more than the slope can undo.
+        It narrows with the square of the box, where the enclosure of the values narrows with the box."""
+        middle = 0.5 * (low + high)
+        box = {key: Interval(value[owner], value[owner]) for key, value in environment.items()}
+        box[self.name] = Interval(middle, middle)
+        value = enclose(self.difference, box)
+        steepest = np.maximum(np.abs(rise.lower), np.abs(rise.upper))
+        with np.errstate(invalid="ignore"):
+            reach = steepest * (0.5 + 1e-12) * (high - low)
+            cleared = (value.lower > reach) | (value.upper < -reach)
+        return np.asarray(cleared & bounded, bool)
 
     def _in_halves(
         self, environment: Mapping[str, Array], count: int
