@@ -36,7 +36,7 @@ STEPS = [
 REPEATED = [
     "x^2 - c*x + 1", "(x + c)/(x - 1)", "x/(1 + x^2)", "x - c/x", "exp(x)^2 - 3*exp(x)", "x + sin(2*x)",
     "x*exp(-x^2)", "x^3 - c*x", "abs(x) + x/2", "if(x > c, x^2, 3 - x)", "max(x, -2*x) + min(x, c)",
-    "1/(x^2 - 1) + x", "x*tan(x/5)", "x^2/(x^2 + c^2)",
+    "1/(x^2 - 1) + x", "x*tan(x/5)", "x^2/(x^2 + c^2)", "x/hypot(x, c)", "x*(c - 1)/sqrt(x^2 + c^2)",
 ]  # fmt: skip
 
 

@@ -32,7 +32,7 @@ WAITING_CHECKS = {
 #: Cases that take more than about twenty seconds, by the number that opens their name: run with `-m slow`.
 SLOW = frozenset(
     {
-        "o03", "o08", "o11", "o13", "o14", "o15", "o19", "o20", "o28", "o33", "o34", "o38", "o41",
+        "o03", "o08", "o11", "o13", "o14", "o15", "o20", "o28", "o33", "o34", "o38", "o41",
     }
 )  # fmt: skip
 

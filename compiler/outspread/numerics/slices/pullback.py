@@ -216,6 +216,22 @@ def hypotenuse(target: Sets, other: Array) -> Sets:
     )
 
 
+def direction(target: Sets, other: Array) -> Sets:
+    """v / hypot(v, other) in target: the cosine of the angle to v's axis."""
+    leg = np.abs(other)
+
+    def inverse(t: Array) -> Array:
+        return leg * t / np.sqrt((1 - t) * (1 + t))
+
+    def slope(t: Array) -> Array:
+        return np.asarray(leg / ((1 - t) * (1 + t)) ** 1.5, float)
+
+    slanted = monotone(target, inverse, slope, True, -1.0, 1.0)
+    if not (leg == 0).any():
+        return slanted
+    return sets.stack([sets.where(leg > 0, slanted), sets.where(leg == 0, sign(target))])
+
+
 def _periods(low: Array, high: Array, period: float) -> range:
     first, last = np.nanmin(low), np.nanmax(high)
     if not (np.isfinite(first) and np.isfinite(last)) or (last - first) / period > MOST_BRANCHES:

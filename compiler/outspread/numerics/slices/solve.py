@@ -16,7 +16,7 @@ import numpy.typing as npt
 from outspread.formula.calculus import derivative
 from outspread.formula.evaluate import compile_numpy, fold
 from outspread.formula.interval import Interval, enclose
-from outspread.formula.tree import Apply, Name, Node, Number, names, occurrences, rebuild, subtract, walk
+from outspread.formula.tree import Apply, Name, Node, Number, add, names, occurrences, rebuild, subtract, walk
 from outspread.numerics import sets
 from outspread.numerics.sets import Array, Sets
 from outspread.numerics.slices import cases, pullback
@@ -133,6 +133,15 @@ class Solver:
 
     def _core(self, node: Node) -> Callable[[Sets, Environment], Sets]:
         """The inverse image under a formula in which the variable stands in several operands."""
+        cosine = _cosine(node, self.frame.name)
+        if cosine is not None:
+            factor, leg = (_function(part) for part in cosine)
+
+            def turned(target: Sets, environment: Environment) -> Sets:
+                scaled = pullback.scale(target, factor(environment, target.count))
+                return pullback.direction(scaled, leg(environment, target.count))
+
+            return turned
         part = _repeated_part(node, self.frame.name)
         if part is not None:
             whole = rebuild(node, lambda piece: Name(PART) if piece == part else None)
@@ -223,6 +232,32 @@ def _repeated_part(node: Node, name: str) -> Node | None:
         if isinstance(piece, Apply) and occurrences(piece, name) == 1:
             counts[piece] = counts.get(piece, 0) + 1
     return next((piece for piece, count in counts.items() if count == total), None)
+
+
+def _cosine(node: Node, name: str) -> tuple[Node, Node] | None:
+    """Factor and leg of a formula `factor * name / hypot(name, leg)`, both free of the name; else None."""
+    if not isinstance(node, Apply) or node.operator != "divide":
+        return None
+    top, bottom = node.arguments
+    factors = top.arguments if isinstance(top, Apply) and top.operator == "multiply" else (top,)
+    rest = [factor for factor in factors if name not in names(factor)]
+    if len(rest) != len(factors) - 1 or Name(name) not in factors or not isinstance(bottom, Apply):
+        return None
+    legs: list[Node] = []
+    if bottom.operator == "hypot":
+        own = Name(name)
+        legs = [leg for leg in bottom.arguments if leg != own]
+    elif bottom.operator == "sqrt" and isinstance(bottom.arguments[0], Apply):
+        root = bottom.arguments[0]
+        own_square = Apply("power", (Name(name), Number(2.0)))
+        squares = [term for term in root.arguments if term != own_square]
+        if root.operator == "add" and len(squares) == len(root.arguments) - 1:
+            legs = [Apply("sqrt", (add(*squares),))]
+    several = bottom.operator == "hypot" and len(legs) != len(bottom.arguments) - 1
+    if not legs or several or any(name in names(leg) for leg in legs):
+        return None
+    factor = rest[0] if len(rest) == 1 else Apply("multiply", tuple(rest)) if rest else Number(1.0)
+    return factor, legs[0] if len(legs) == 1 else Apply("hypot", tuple(legs))
 
 
 def _slowed(part: Sets, rate: Array, infinite: npt.NDArray[np.bool_], full: npt.NDArray[np.bool_]) -> Sets:
