@@ -330,3 +330,16 @@ def test_a_figure_without_a_bound_is_not_printed_as_exact():
 )
 def test_ticks_are_told_apart_and_their_power_is_named_once(places, labels, power):
     assert tick_labels(places) == (labels, power)
+
+
+def test_a_cut_input_states_the_parameters_of_the_whole_law():
+    """The canonical parameters are those of the law before it is cut, and the cut stands beside them."""
+    from outspread.laws.build import build_law
+    from outspread.reading.model import Distribution, Input
+    from outspread.reporting.setup import input_row
+
+    stated = Distribution("normal", {"mean": 60.009, "sd": 0.003}, lower=60.0, upper=60.018)
+    row = input_row(Input(name="bore", distribution=stated, unit="mm"), build_law(stated))
+    text = str(row.canonical)
+    assert "60.009" in text and "0.003" in text
+    assert text.endswith("; cut to 60 … 60.018")

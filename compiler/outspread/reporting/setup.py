@@ -9,6 +9,7 @@ from typing import Any
 from markupsafe import Markup
 
 from outspread.formula.latex import symbol_for, to_latex
+from outspread.laws.compound.truncated import TruncatedLaw
 from outspread.laws.law import Law
 from outspread.laws.registry import FAMILIES
 from outspread.reading.model import Constant, Dependence, Distribution, Input, Model, Output, Step
@@ -114,7 +115,8 @@ def _canonical(stated: Distribution | None, law: Law | None) -> Markup:
     if stated is None:
         return Markup("")
     title = words.family_title(stated.family)
-    letters = _letters(law) if law is not None and law.family == stated.family else []
+    whole = law.base if isinstance(law, TruncatedLaw) else law
+    letters = _letters(whole) if whole is not None and whole.family == stated.family else []
     if not letters:
         return sentence(title)
     values = Markup("; ").join(inline(_equation(letter, value)) for letter, value in letters)
