@@ -37,7 +37,7 @@ SLOW = frozenset(
 )  # fmt: skip
 
 #: Cases of them that take so long, evidence included, that they are marked `long` as well and run by hand.
-LONG = SLOW - {"o11", "o20", "o28", "o34"}
+LONG = SLOW - {"o08", "o11", "o15", "o20", "o28", "o34"}
 
 _PARAMETERS: dict[str, dict[str, str]] = {
     "normal": {"mean": "mean", "sd": "sd"},
