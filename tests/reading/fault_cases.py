@@ -215,6 +215,13 @@ CASES: list[tuple[str, list[Edit], str]] = [
         "m.yaml:4:3: the input `bore` lacks a `distribution`; add one, such as `normal: {mean: 5, sd: 0.1}`"
     ),
     (
+        "formula cut by a comma",
+        [
+            ("    clearance:\n      formula: gap\n      unit: mm", "    clearance: {formula: max(gap, 0), unit: mm}"),
+        ],
+        "m.yaml:14:35: unknown key `0)` in `clearance`; a formula with commas needs quotes where it stands between { and }"
+    ),
+    (
         "misspelt parameter",
         [
             ("{normal: {mean: 42.02, sd: 0.004}}", "{normal: {mean: 42.02, std: 0.004}}"),

@@ -141,6 +141,12 @@ def _unknown_key(document: Document, path: Path, error: Any) -> Said:
                 place,
                 f"unknown key {quoted(key)} at the top of the model; {suggestion(key, known, 'its keys')}",
             )
+        elif key.count("(") != key.count(")"):  # the rest of a formula that a comma has cut
+            yield (
+                place,
+                f"unknown key {quoted(key)} in {_called(path)}; a formula with commas needs quotes where it "
+                "stands between { and }",
+            )
         else:
             yield place, f"unknown key {quoted(key)} in {_called(path)}; {suggestion(key, known, 'its keys')}"
 
