@@ -205,7 +205,7 @@ class DerivedLaw(Law):
                 value[side] = first_tail - last[side]
                 sizes[side] = first_tail + last[side]
         value = np.maximum(value, 0.0)
-        error = (self.relative_error + 4e-16) * sizes
+        error = (self.relative_error + 4e-16) * sizes + self.floor
         narrow = np.flatnonzero(error > _CANCELLED * self.relative_error * value)
         for start in range(0, narrow.size, _SPELL):
             rows = narrow[start : start + _SPELL]

@@ -51,9 +51,9 @@ def structure_cuts(
     """The panels, cut around every change of `structure(t, owner)`: a number that tells the kind of slice at
     outer coordinates t (`signature`, and `sides` of its ends).
 
-    Each change found between the ends and the
-    middle of a panel is bracketed to the last places of the panel's length; the bracket is a panel of its
-    own. Panels near a change have it for an origin: at a fold a slice shrinks like a square root.
+    Each change found between the ends and the middle of a panel is bracketed to the last places of the
+    panel's length; the bracket is a panel of its own. Panels near a change have it for an origin: at a
+    fold a slice shrinks like a square root.
     """
     lower, upper, owner = panels
     if not lower.size:
